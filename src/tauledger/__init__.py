@@ -1,0 +1,1 @@
+"""Corners of transistor amplifiers, with reasons, from their SPICE netlists."""

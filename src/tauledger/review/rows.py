@@ -1,0 +1,138 @@
+"""The rows every report is made from: plain frozen values, nothing to compute.
+
+Field names carry the unit. A figure that does not exist (no high corner, say) is None, and a
+note says why.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+from tauledger.problems import Problem
+
+
+@dataclass(frozen=True, slots=True)
+class NamedValue:
+    """A figure with its symbol and unit, such as gm = 38.2 mS."""
+
+    symbol: str
+    value: float
+    unit: str
+
+
+@dataclass(frozen=True, slots=True)
+class NodeRow:
+    node: str
+    voltage_v: float
+
+
+@dataclass(frozen=True, slots=True)
+class TransistorRow:
+    name: str
+    type: str
+    """``NPN``, ``PNP``, ``N-JFET``, ``P-JFET``, ``N-MOSFET``, ``P-MOSFET``."""
+    model: str
+    configuration: str
+    """``common emitter``, ``emitter follower``, ``current mirror`` …"""
+    region: str
+    current_a: float
+    """Collector or drain current, with the sign of the current into the terminal."""
+    voltage_v: float
+    """Collector-emitter or drain-source voltage."""
+    values: tuple[NamedValue, ...]
+    """gm, rπ, ro, β, Cπ, Cμ, or their FET equivalents, in that order."""
+
+
+@dataclass(frozen=True, slots=True)
+class StageRow:
+    number: int
+    transistors: tuple[str, ...]
+    configuration: str
+    input_node: str
+    output_node: str
+    gain: float | None
+    """Loaded voltage gain from input_node to output_node at midband, signed, V/V."""
+    input_resistance_ohm: float | None
+    output_resistance_ohm: float | None
+
+
+@dataclass(frozen=True, slots=True)
+class TimeConstantRow:
+    """One capacitor or inductor at one end of the band."""
+
+    name: str
+    nodes: tuple[str, str]
+    value: float
+    unit: str
+    """``F`` or ``H``."""
+    role: str
+    end: str
+    """``low``, ``high``, ``in-band`` or ``no effect``."""
+    resistance_ohm: float | None
+    """Seen with the others of its end shorted (low) or open (high)."""
+    tau_s: float | None
+    corner_hz: float | None
+    share: float | None
+    """Part of the sum at its end, 0…1; None when not counted."""
+    zero_hz: float | None
+    """The zero it makes on its own, where that is finite and not zero."""
+    dc_voltage_v: float | None
+    """From nodes[0] to nodes[1]; None for device capacitances and inductors."""
+    reason: str
+    """Why it stands at this end, with the figures compared."""
+    expression: str = ""
+    expression_deviation: float | None = None
+
+
+@dataclass(frozen=True, slots=True)
+class CornerRow:
+    end: str
+    """``low`` or ``high``."""
+    estimate_hz: float | None
+    """By the sum of time constants."""
+    exact_hz: float | None
+    """−3 dB frequency of the whole linear network."""
+    estimate_error: float | None
+    """estimate/exact − 1."""
+    set_by: tuple[str, ...]
+    """The capacitor that sets it; several when they tie."""
+    poles_hz: tuple[complex, ...]
+    """Poles of this end, in Hz, slowest first; negative real part is stable."""
+    zeros_hz: tuple[complex, ...]
+    notes: tuple[str, ...]
+
+
+@dataclass(frozen=True, slots=True)
+class PathRow:
+    """One signal path: input source to output node."""
+
+    input: str
+    output: str
+    midband_hz: float | None
+    gain: float | None
+    """Signed midband gain, output over input, V/V (or Ω when the input is a current)."""
+    gain_unit: str
+    gain_db: float | None
+    input_resistance_ohm: float | None
+    output_resistance_ohm: float | None
+    stages: tuple[StageRow, ...]
+    time_constants: tuple[TimeConstantRow, ...]
+    low: CornerRow | None
+    high: CornerRow | None
+    notes: tuple[str, ...]
+
+
+@dataclass(frozen=True, slots=True)
+class Review:
+    """Everything a report shows."""
+
+    title: str
+    netlist: str
+    """Path of the netlist as given."""
+    version: str
+    temperature_c: float
+    nodes: tuple[NodeRow, ...]
+    transistors: tuple[TransistorRow, ...]
+    paths: tuple[PathRow, ...]
+    problems: tuple[Problem, ...]
+    supply_power_w: float | None

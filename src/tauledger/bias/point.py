@@ -41,6 +41,8 @@ class OperatingPoint:
     devices: Mapping[str, DevicePoint]
     method: str
     """How it converged: ``newton``, ``gmin stepping``, ``source stepping`` …"""
+    failed_boards: int = 0
+    """Boards whose bias was not found; their rows hold NaN."""
 
     def voltage(self, node: str) -> float:
         """Voltage of a node on the first board, in V; 0 for ground."""

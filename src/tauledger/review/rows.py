@@ -103,6 +103,31 @@ class CornerRow:
 
 
 @dataclass(frozen=True, slots=True)
+class ComparisonRow:
+    """One figure three ways: by hand analysis, by our linear network, by a simulator."""
+
+    figure: str
+    """``midband gain``, ``low corner``, ``high corner`` or ``gm``."""
+    part: str
+    """The transistor whose figure it is; empty for one of the path."""
+    unit: str
+    estimate: float | None
+    exact: float | None
+    simulated: float | None
+    difference: float | None
+    """simulated/exact − 1."""
+
+
+@dataclass(frozen=True, slots=True)
+class SimulatedRow:
+    """What a circuit simulator made of the same path."""
+
+    simulator: str
+    """Name and version."""
+    figures: tuple[ComparisonRow, ...]
+
+
+@dataclass(frozen=True, slots=True)
 class PathRow:
     """One signal path: input source to output node."""
 
@@ -110,7 +135,8 @@ class PathRow:
     output: str
     midband_hz: float | None
     gain: float | None
-    """Signed midband gain, output over input, V/V (or Ω when the input is a current)."""
+    """Exact gain at midband_hz, output over input, V/V (or Ω when the input is a current); the
+    sign is that of its real part."""
     gain_unit: str
     gain_db: float | None
     input_resistance_ohm: float | None
@@ -120,6 +146,10 @@ class PathRow:
     low: CornerRow | None
     high: CornerRow | None
     notes: tuple[str, ...]
+    gain_by_inspection: float | None = None
+    """Signed gain with low-end parts short and high-end parts open, as a hand analysis has it."""
+    simulated: SimulatedRow | None = None
+    """Filled when the user asked for a simulator beside."""
 
 
 @dataclass(frozen=True, slots=True)

@@ -1,0 +1,150 @@
+"""The library's two verbs: read a netlist, analyse it."""
+
+from __future__ import annotations
+
+import os
+from dataclasses import dataclass
+from pathlib import Path
+
+from tauledger import __version__
+from tauledger.bias import BiasSolution, OperatingPoint, solve_bias
+from tauledger.circuit import flatten
+from tauledger.circuit.completion import add_models, complete
+from tauledger.circuit.elements import (
+    BehaviouralSource,
+    Circuit,
+    ControlledSource,
+    IndependentSource,
+    VoltageSource,
+)
+from tauledger.circuit.generic import generic_models
+from tauledger.circuit.graph import find_floating_nodes
+from tauledger.circuit.islands import restrict
+from tauledger.configuration import PathSettings
+from tauledger.corners import Corners, find_corners
+from tauledger.netlist import Netlist
+from tauledger.netlist import read as read_netlist
+from tauledger.problems import ProblemError
+from tauledger.review.assemble import path_row, review_of
+from tauledger.review.rows import Review
+from tauledger.smallsignal import (
+    LinearNetwork,
+    device_admittances,
+    drive_vector,
+    linear_network,
+    response,
+    sense_vector,
+)
+from tauledger.topology import Topology, choose_path, recognise
+
+
+@dataclass(frozen=True, slots=True)
+class Analysis:
+    """One netlist, analysed for one signal path; every stage of the data flow is kept."""
+
+    netlist: Netlist
+    circuit: Circuit
+    solution: BiasSolution
+    network: LinearNetwork
+    topology: Topology
+    corners: Corners
+    review: Review
+
+    @property
+    def point(self) -> OperatingPoint:
+        """The operating point."""
+        return self.solution.point
+
+
+def read(path: str | os.PathLike[str]) -> Netlist:
+    """Read a netlist file.
+
+    Raises
+    ------
+    ProblemError
+        When the file cannot be read as a netlist.
+    """
+    return read_netlist(Path(path))
+
+
+def analyze(
+    netlist: Netlist,
+    input: str | None = None,
+    output: str | None = None,
+    settings: PathSettings | None = None,
+) -> Analysis:
+    """Bias point, stages and corners of the path from ``input`` to ``output``.
+
+    Parameters
+    ----------
+    netlist
+        What :func:`read` gave.
+    input
+        Name of the source that drives the path; left out, the source with an AC value.
+    output
+        Output node, or ``a,b`` for the voltage between two; left out, what the netlist prints,
+        a node named as an output, or the one load behind a coupling capacitor.
+    settings
+        What the configuration adds to the netlist, as ``find_settings`` of
+        :mod:`tauledger.configuration.choice` gives it; ``input`` and ``output`` count before it.
+
+    Raises
+    ------
+    ProblemError
+        With every problem that stops the analysis, each with its place and what to do.
+    """
+    settings = settings or PathSettings()
+    circuit, input, output = _completed(netlist, settings, input, output)
+    if floating := find_floating_nodes(circuit):
+        raise ProblemError(*floating)
+    path = choose_path(circuit, input, output)
+    solution = solve_bias(circuit)
+    network = linear_network(solution)
+    topology = recognise(circuit, solution.point, path)
+    source = next(e for e in circuit.elements if e.name == path.source)
+    assert isinstance(source, IndependentSource)
+    corners = find_corners(
+        response(
+            network,
+            drive_vector(network, source),
+            sense_vector(network, path.output_node, path.output_reference),
+        ),
+        network.parts,
+        _held_pairs(circuit, network),
+        _supply_pairs(circuit, network, path.source),
+    )
+    row = path_row(
+        circuit, solution.point, network, device_admittances(solution), topology, corners
+    )
+    review = review_of(circuit, solution.point, topology, (row,), __version__)
+    return Analysis(netlist, circuit, solution, network, topology, corners, review)
+
+
+def _completed(
+    netlist: Netlist, settings: PathSettings, input: str | None, output: str | None
+) -> tuple[Circuit, str | None, str | None]:
+    """The one circuit with the path, whole, and what is known of the path's ends."""
+    substitute = generic_models(settings.generic.kinds) if settings.generic else None
+    flat = flatten(add_models(netlist, settings), substitute)
+    circuit, source, sink = complete(flat, settings)
+    return restrict(circuit, input or source), input or source, output or sink
+
+
+def _held_pairs(circuit: Circuit, network: LinearNetwork) -> list[tuple[int, int]]:
+    """Node pairs whose voltage a source dictates."""
+    return [
+        (network.index(e.nodes[0]), network.index(e.nodes[1]))
+        for e in circuit.elements
+        if isinstance(e, VoltageSource)
+        or (isinstance(e, ControlledSource) and e.letter in "EH")
+        or (isinstance(e, BehaviouralSource) and e.output == "voltage")
+    ]
+
+
+def _supply_pairs(circuit: Circuit, network: LinearNetwork, driven: str) -> list[tuple[int, int]]:
+    """Node pairs that an independent voltage source other than the driven one holds together."""
+    return [
+        (network.index(e.nodes[0]), network.index(e.nodes[1]))
+        for e in circuit.elements
+        if isinstance(e, VoltageSource) and e.name != driven
+    ]

@@ -1,0 +1,276 @@
+"""Newton's method on the nodal equations, batched over boards.
+
+Each iteration linearises every device at limited branch voltages ``u`` and solves
+``(G + J) x = s − (i(u) − J u)``. A board is finished when neither its unknowns nor its branch
+voltages move any more; it is then frozen, so that slower boards cannot disturb it.
+"""
+
+from __future__ import annotations
+
+import dataclasses
+from collections.abc import Sequence
+from dataclasses import dataclass
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from tauledger.bias.equations import DeviceGroup, Equations
+from tauledger.circuit.elements import BehaviouralSource
+from tauledger.circuit.evaluate import evaluate_with_derivatives, leaves_of
+from tauledger.devices.interface import BoolArray, FloatArray
+from tauledger.netlist.expression import Expression, NodeVoltage
+
+IntArray = NDArray[np.intp]
+
+RELATIVE_TOLERANCE = 1e-9
+VOLTAGE_TOLERANCE_V = 1e-9
+CURRENT_TOLERANCE_A = 1e-12
+MAXIMUM_ITERATIONS = 150
+
+
+@dataclass(frozen=True, slots=True)
+class State:
+    """Where Newton stands."""
+
+    unknowns: FloatArray
+    """(boards, size)."""
+    branch_voltages: tuple[FloatArray, ...]
+    """One a device group, (boards, n, U)."""
+    converged: BoolArray
+    """(boards,)."""
+    movement: FloatArray
+    """(boards, size): how far each unknown moved in the last iteration."""
+
+
+@dataclass(frozen=True, slots=True)
+class Helps:
+    """What is added to the equations to make them easier, and is zero at the end."""
+
+    node_conductance_s: float = 0.0
+    """From every node to ground."""
+    source_scale: float = 1.0
+    """Independent sources are multiplied by this."""
+    pull_conductance_s: float = 0.0
+    pull_targets: FloatArray | None = None
+    """(boards, nodes): nodes are tied to these voltages through the pull conductance; NaN where
+    a node is left alone."""
+
+
+def starting_state(equations: Equations) -> State:
+    """Zero node voltages and each device's own first guess."""
+    boards = equations.boards
+    guesses = tuple(
+        np.array(
+            np.broadcast_to(
+                initial := group.device.initial(group.parameters), (boards, *initial.shape[1:])
+            )
+        )
+        for group in equations.groups
+    )
+    zeros = np.zeros((boards, equations.size))
+    return State(zeros, guesses, np.zeros(boards, dtype=bool), zeros.copy())
+
+
+def solve_newton(
+    equations: Equations,
+    start: State,
+    helps: Helps | None = None,
+    maximum_iterations: int = MAXIMUM_ITERATIONS,
+) -> State:
+    """Iterate from ``start``; boards that do not converge are marked, nothing is raised.
+
+    A board whose matrix turns singular stops there, unconverged.
+    """
+    helps = helps or Helps()
+    unknowns = start.unknowns.copy()
+    voltages = [array.copy() for array in start.branch_voltages]
+    movement = np.full_like(unknowns, np.inf)
+    converged = np.zeros(equations.boards, dtype=bool)
+    # A board stops one iteration after it stands still: convergence is quadratic, so that last
+    # step brings Kirchhoff's laws from the tolerance down to rounding.
+    ready = np.zeros(equations.boards, dtype=bool)
+    active = np.arange(equations.boards)
+    work = equations
+    for _ in range(maximum_iterations):
+        old = unknowns[active]
+        new, new_voltages, settled = _iterate(
+            work, old, [array[active] for array in voltages], _take_helps(helps, active)
+        )
+        movement[active] = np.abs(new - old)
+        unknowns[active] = new
+        for array, fresh in zip(voltages, new_voltages, strict=True):
+            array[active] = fresh
+        rests = settled & _still(new, old, len(equations.nodes))
+        done = rests & ready[active]
+        ready[active] = rests
+        broken = ~np.isfinite(new).all(axis=1)
+        converged[active[done]] = True
+        stay = ~(done | broken)
+        if not stay.any():
+            break
+        if not stay.all():
+            active = active[stay]
+            work = take_boards(equations, active)
+    return State(unknowns, tuple(voltages), converged, movement)
+
+
+def take_boards(equations: Equations, boards: IntArray) -> Equations:
+    """The equations of some boards only."""
+
+    def take(array: FloatArray) -> FloatArray:
+        return array if array.shape[0] == 1 else array[boards]
+
+    groups = tuple(
+        dataclasses.replace(group, parameters=_take_parameters(group.parameters, boards))
+        for group in equations.groups
+    )
+    return dataclasses.replace(
+        equations,
+        boards=boards.size,
+        conductance=take(equations.conductance),
+        reactance=take(equations.reactance),
+        sources=take(equations.sources),
+        values={name: take(value) for name, value in equations.values.items()},
+        groups=groups,
+    )
+
+
+def _take_parameters(parameters: Any, boards: IntArray) -> Any:
+    changes: dict[str, Any] = {}
+    for entry in dataclasses.fields(parameters):
+        value = getattr(parameters, entry.name)
+        if isinstance(value, np.ndarray) and value.ndim >= 2 and value.shape[0] > 1:
+            changes[entry.name] = value[boards]
+        elif dataclasses.is_dataclass(value) and not isinstance(value, type):
+            changes[entry.name] = _take_parameters(value, boards)
+    return dataclasses.replace(parameters, **changes) if changes else parameters
+
+
+def _take_helps(helps: Helps, boards: IntArray) -> Helps:
+    if helps.pull_targets is None or helps.pull_targets.shape[0] == 1:
+        return helps
+    return dataclasses.replace(helps, pull_targets=helps.pull_targets[boards])
+
+
+def branch_voltages(group: DeviceGroup, unknowns: FloatArray) -> FloatArray:
+    """(boards, n, U) from the unknowns."""
+    padded = np.concatenate([unknowns, np.zeros((unknowns.shape[0], 1))], axis=1)
+    return np.asarray(padded[:, group.plus] - padded[:, group.minus])
+
+
+def linearise(
+    equations: Equations, unknowns: FloatArray, voltages: Sequence[FloatArray]
+) -> tuple[FloatArray, FloatArray]:
+    """Jacobian (boards, size + 1, size + 1) and right-hand side (boards, size + 1) at a point.
+
+    The right-hand side already holds ``s − (i(u) − J u)``, with sources at full scale.
+    """
+    boards, order = equations.boards, equations.size + 1
+    matrix = np.array(np.broadcast_to(equations.conductance, (boards, order, order)))
+    right = np.array(np.broadcast_to(equations.sources, (boards, order)))
+    for group, u in zip(equations.groups, voltages, strict=True):
+        evaluation = group.device.evaluate(group.parameters, u, equations.circuit.gmin)
+        stamp = evaluation.jacobian @ group.incidence
+        equivalent = np.einsum("bntu,bnu->bnt", evaluation.jacobian, u) - evaluation.current
+        group.matrix_scatter.add(matrix.reshape(boards, -1), stamp.reshape(boards, -1))
+        group.vector_scatter.add(right, equivalent.reshape(boards, -1))
+    for source in equations.behavioural:
+        _stamp_behavioural(equations, source, unknowns, matrix, right)
+    return matrix, right
+
+
+def _iterate(
+    equations: Equations, old: FloatArray, voltages: Sequence[FloatArray], helps: Helps
+) -> tuple[FloatArray, list[FloatArray], BoolArray]:
+    matrix, right = linearise(equations, old, voltages)
+    if helps.source_scale != 1.0:
+        right -= (1.0 - helps.source_scale) * equations.sources
+    _add_helps(equations, helps, matrix, right)
+    size = equations.size
+    new = solve_boards(matrix[:, :size, :size], right[:, :size])
+    limited = []
+    settled = np.ones(equations.boards, dtype=bool)
+    for group, previous in zip(equations.groups, voltages, strict=True):
+        proposed = branch_voltages(group, np.where(np.isfinite(new), new, 0.0))
+        allowed = group.device.limit(group.parameters, proposed, previous)
+        limited.append(allowed)
+        gap = np.abs(allowed - proposed) <= VOLTAGE_TOLERANCE_V + RELATIVE_TOLERANCE * np.abs(
+            proposed
+        )
+        settled &= gap.all(axis=(1, 2))
+    return new, limited, settled
+
+
+def _add_helps(equations: Equations, helps: Helps, matrix: FloatArray, right: FloatArray) -> None:
+    nodes = len(equations.nodes)
+    diagonal = np.arange(nodes)
+    if helps.node_conductance_s:
+        matrix[:, diagonal, diagonal] += helps.node_conductance_s
+    if helps.pull_targets is not None:
+        pulled = ~np.isnan(helps.pull_targets)
+        matrix[:, diagonal, diagonal] += np.where(pulled, helps.pull_conductance_s, 0.0)
+        right[:, :nodes] += np.where(pulled, helps.pull_conductance_s * helps.pull_targets, 0.0)
+
+
+def solve_boards(matrix: FloatArray, right: FloatArray) -> FloatArray:
+    """Solve every board; NaN where a matrix is singular."""
+    try:
+        return np.asarray(np.linalg.solve(matrix, right[:, :, None])[:, :, 0])
+    except np.linalg.LinAlgError:
+        if matrix.shape[0] == 1:
+            return np.full_like(right, np.nan)
+    return np.concatenate(
+        [solve_boards(matrix[i : i + 1], right[i : i + 1]) for i in range(matrix.shape[0])]
+    )
+
+
+def _still(new: FloatArray, old: FloatArray, nodes: int) -> BoolArray:
+    absolute = np.full(new.shape[1], CURRENT_TOLERANCE_A)
+    absolute[:nodes] = VOLTAGE_TOLERANCE_V
+    with np.errstate(invalid="ignore"):
+        near = np.abs(new - old) <= absolute + RELATIVE_TOLERANCE * np.abs(new)
+    return np.asarray(near.all(axis=1))
+
+
+def _stamp_behavioural(
+    equations: Equations,
+    source: BehaviouralSource,
+    unknowns: FloatArray,
+    matrix: FloatArray,
+    right: FloatArray,
+) -> None:
+    """Linearise an expression: value + Σ derivative·(x − x₀).
+
+    A voltage source's own branch terms are already in the linear part.
+    """
+    leaves = {leaf: _leaf_columns(equations, leaf) for leaf in leaves_of(source.expression)}
+    padded = np.concatenate([unknowns, np.zeros((unknowns.shape[0], 1))], axis=1)
+    points = {
+        leaf: sum((sign * padded[:, column] for column, sign in columns), np.zeros(len(padded)))
+        for leaf, columns in leaves.items()
+    }
+    value, derivatives = evaluate_with_derivatives(source.expression, points)
+    offset = np.broadcast_to(value, (len(padded),)).copy()
+    a, b = equations.node_index[source.nodes[0]], equations.node_index[source.nodes[1]]
+    rows = (
+        [(a, 1.0), (b, -1.0)]
+        if source.output == "current"
+        else [(equations.branch_index[source.name.lower()], -1.0)]
+    )
+    for leaf, derivative in derivatives.items():
+        offset -= derivative * points[leaf]
+        for column, column_sign in leaves[leaf]:
+            for row, row_sign in rows:
+                matrix[:, row, column] += row_sign * column_sign * derivative
+    for row, row_sign in rows:
+        right[:, row] -= row_sign * offset
+
+
+def _leaf_columns(equations: Equations, leaf: Expression) -> list[tuple[int, float]]:
+    if isinstance(leaf, NodeVoltage):
+        return [
+            (equations.node_index[leaf.positive], 1.0),
+            (equations.node_index[leaf.negative], -1.0),
+        ]
+    return [(equations.branch_index[leaf.source.lower()], 1.0)]  # type: ignore[attr-defined]

@@ -1,0 +1,135 @@
+"""What a ``tauledger.toml`` says, as plain values with the place where each stands."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass, field
+from pathlib import Path
+
+from tauledger.problems import SourceSpan
+
+
+@dataclass(frozen=True, slots=True)
+class Quantity:
+    """A value in the SI base unit; ``text`` is how it was written."""
+
+    value: float
+    unit: str
+    """``Hz``, ``V``, ``A``, ``Ω``, ``F``, ``dB``, ``%``, ``°C`` or ``V/V``."""
+    text: str
+    span: SourceSpan
+
+
+@dataclass(frozen=True, slots=True)
+class Supply:
+    """An ideal source to attach from a net to ground."""
+
+    node: str
+    voltage_v: float
+    span: SourceSpan
+
+
+@dataclass(frozen=True, slots=True)
+class Input:
+    """Where the signal enters: a source of the netlist by name, or nets to attach one to."""
+
+    source: str
+    """Name of a source in the netlist; empty when one is attached to ``nodes``."""
+    nodes: tuple[str, ...]
+    """One net (against ground) or two; empty when ``source`` is given."""
+    resistance_ohm: float
+    """In series with the attached source; 0 for none."""
+    span: SourceSpan
+
+
+@dataclass(frozen=True, slots=True)
+class Output:
+    """Where the signal leaves, one net or two, and the load to attach there."""
+
+    nodes: tuple[str, ...]
+    load_resistance_ohm: float | None
+    load_capacitance_f: float | None
+    span: SourceSpan
+
+
+@dataclass(frozen=True, slots=True)
+class ModelFile:
+    """A file of model cards and subcircuits, found inside the configuration's folder."""
+
+    path: Path
+    root: Path
+    """The folder of the configuration, which the file's own includes may not leave."""
+    span: SourceSpan
+
+
+@dataclass(frozen=True, slots=True)
+class CapacitorClass:
+    """Tolerance and rating of the capacitors whose designators match."""
+
+    name: str
+    match: tuple[str, ...]
+    """Patterns of designators, letter case ignored."""
+    tolerance: tuple[float, float] | None
+    """Lowest and highest relative deviation, such as (−0.2, 0.8)."""
+    rated_voltage_v: float | None
+    span: SourceSpan
+
+
+@dataclass(frozen=True, slots=True)
+class Limit:
+    """A window for one figure; at least one end is given."""
+
+    figure: str
+    """``midband_gain``, ``low_corner``, ``high_corner``, ``input_resistance``,
+    ``output_resistance``, ``node_voltage``, ``current`` or ``capacitor_voltage_margin``."""
+    subject: str
+    """The node or transistor for ``node_voltage`` and ``current``; empty otherwise."""
+    minimum: Quantity | None
+    maximum: Quantity | None
+    span: SourceSpan
+
+
+@dataclass(frozen=True, slots=True)
+class Dominance:
+    """The part that must set a corner."""
+
+    end: str
+    """``low`` or ``high``."""
+    part: str
+    span: SourceSpan
+
+
+@dataclass(frozen=True, slots=True)
+class GenericModels:
+    """Leave to put a generic model where one is missing."""
+
+    kinds: Mapping[str, str] = field(default_factory=dict)
+    """Lower-case name of a missing model → type (``npn``, ``pjf`` …), where names do not tell."""
+
+
+@dataclass(frozen=True, slots=True)
+class PathSettings:
+    """One signal path. Everything but the netlist may be left to the netlist itself."""
+
+    name: str = ""
+    netlist: str = ""
+    """Path or pattern, relative to the configuration's folder."""
+    input: Input | None = None
+    output: Output | None = None
+    supplies: tuple[Supply, ...] = ()
+    models: tuple[ModelFile, ...] = ()
+    temperature: Quantity | None = None
+    generic: GenericModels | None = None
+    capacitors: tuple[CapacitorClass, ...] = ()
+    """The first class that matches counts."""
+    limits: tuple[Limit, ...] = ()
+    dominance: tuple[Dominance, ...] = ()
+    span: SourceSpan | None = None
+
+
+@dataclass(frozen=True, slots=True)
+class Configuration:
+    """A whole ``tauledger.toml``."""
+
+    path: Path
+    paths: tuple[PathSettings, ...]

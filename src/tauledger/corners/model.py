@@ -1,0 +1,66 @@
+"""The corners of one signal path: plain results."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+from tauledger.corners.ports import EndModel, Midband
+from tauledger.smallsignal.network import ReactivePart
+
+
+@dataclass(frozen=True, slots=True)
+class PartAccount:
+    """What one capacitor or inductor does to the band."""
+
+    part: ReactivePart
+    end: str
+    """``low``, ``high``, ``in-band`` or ``no effect``."""
+    resistance_ohm: float | None
+    tau_s: float | None
+    corner_hz: float | None
+    share: float | None
+    """Part of the sum at its end; None when not counted."""
+    zero_hz: float | None
+    """Zero it makes with the others at midband state; None when none, at zero or at infinity."""
+    effect: float | None
+    """Gain with it in its other state over midband gain, minus one, as a magnitude."""
+    reason: str
+
+
+@dataclass(frozen=True, slots=True)
+class Corner:
+    """One edge of the passband; frequencies in Hz."""
+
+    end: str
+    estimate_hz: float | None
+    """By the sum of time constants."""
+    exact_hz: float | None
+    set_by: tuple[str, ...]
+    poles_hz: tuple[complex, ...]
+    zeros_hz: tuple[complex, ...]
+    notes: tuple[str, ...]
+    model: EndModel | None
+    """The parts that count at this end."""
+
+    @property
+    def estimate_error(self) -> float | None:
+        """estimate/exact − 1."""
+        if self.estimate_hz is None or self.exact_hz is None:
+            return None
+        return self.estimate_hz / self.exact_hz - 1.0
+
+
+@dataclass(frozen=True, slots=True)
+class Corners:
+    midband_hz: float
+    flat: bool
+    """False when the response has no stretch of a decade within ±3 dB."""
+    gain: float
+    """Signed midband gain by the engine: low-end parts short, high-end parts open."""
+    exact_gain: float
+    """|H| of the whole network at ``midband_hz``."""
+    midband: Midband | None
+    accounts: tuple[PartAccount, ...]
+    low: Corner
+    high: Corner
+    notes: tuple[str, ...]

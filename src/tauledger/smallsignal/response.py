@@ -1,0 +1,116 @@
+"""The exact response of the linear network on one board, and the network's poles."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Sequence
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from tauledger.circuit.elements import CurrentSource, IndependentSource
+from tauledger.smallsignal.network import FloatArray, LinearNetwork, ReactivePart
+
+ComplexArray = NDArray[np.complex128]
+
+
+@dataclass(frozen=True, slots=True)
+class Response:
+    """``H(s) = senseᵀ (G + sC)⁻¹ drive`` on one board; matrices (N, N), vectors (N,)."""
+
+    conductance: FloatArray
+    reactance: FloatArray
+    drive: FloatArray
+    sense: FloatArray
+
+    def at(self, frequency_hz: FloatArray) -> ComplexArray:
+        """H at each frequency, shape of ``frequency_hz`` (one axis)."""
+        s = 2j * math.pi * np.atleast_1d(frequency_hz)
+        matrices = self.conductance + s[:, None, None] * self.reactance
+        right = np.broadcast_to(self.drive[:, None], (s.size, self.drive.size, 1))
+        solution = np.linalg.solve(matrices, right)[:, :, 0]
+        return np.asarray(solution @ self.sense)
+
+    def magnitude(self, frequency_hz: float) -> float:
+        """|H| at one frequency."""
+        return float(abs(self.at(np.array([frequency_hz]))[0]))
+
+
+def drive_vector(network: LinearNetwork, source: IndependentSource) -> FloatArray:
+    """Right-hand side for a source of 1 V or 1 A, every other source at zero."""
+    drive = np.zeros(len(network.nodes) + len(network.branches))
+    if isinstance(source, CurrentSource):
+        for node, sign in zip(source.nodes, (-1.0, 1.0), strict=False):
+            if (index := network.index(node)) >= 0:
+                drive[index] += sign
+    else:
+        drive[len(network.nodes) + network.branches.index(source.name)] = 1.0
+    return drive
+
+
+def sense_vector(network: LinearNetwork, positive: str, negative: str = "0") -> FloatArray:
+    """Picks v(positive) − v(negative) out of the unknowns."""
+    sense = np.zeros(len(network.nodes) + len(network.branches))
+    for node, sign in ((positive, 1.0), (negative, -1.0)):
+        if (index := network.index(node)) >= 0:
+            sense[index] += sign
+    return sense
+
+
+def response(network: LinearNetwork, drive: FloatArray, sense: FloatArray) -> Response:
+    """The response on the first board."""
+    return Response(network.conductance[0], network.reactance[0], drive, sense)
+
+
+def gain_sensitivity(
+    response: Response, parts: Sequence[ReactivePart], frequency_hz: float
+) -> FloatArray:
+    """(K,): d ln|H| / d ln(value) of each part at one frequency.
+
+    By the adjoint network: dH/dC = −s (senseᵀA⁻¹c)(cᵀA⁻¹drive), c picking the part's voltage;
+    for an inductor +s on its branch unknown.
+    """
+    s = 2j * math.pi * frequency_hz
+    matrix = response.conductance + s * response.reactance
+    forward = np.linalg.solve(matrix, response.drive.astype(complex))
+    adjoint = np.linalg.solve(matrix.T, response.sense.astype(complex))
+    transfer = complex(response.sense @ forward)
+    result = np.empty(len(parts))
+    for k, part in enumerate(parts):
+        if part.is_inductor:
+            change = s * forward[part.branch] * adjoint[part.branch]
+        else:
+            change = -s * _across(forward, part) * _across(adjoint, part)
+        result[k] = (change * part.value[0] / transfer).real
+    return result
+
+
+def _across(unknowns: ComplexArray, part: ReactivePart) -> complex:
+    plus = unknowns[part.positive] if part.positive >= 0 else 0.0
+    minus = unknowns[part.negative] if part.negative >= 0 else 0.0
+    return complex(plus - minus)
+
+
+def natural_frequencies(conductance: FloatArray, reactance: FloatArray) -> ComplexArray:
+    """Finite roots s (rad/s) of det(G + sC) = 0, smallest magnitude first.
+
+    Works on the pencil shifted to a point on the positive real axis, where G + σC is regular
+    even when G alone is not (a node reached only by capacitors is a pole at zero). Two passes:
+    the second shift sits in the middle of the spread that the first one found, which keeps slow
+    and fast roots equally accurate.
+    """
+    shift = 1e5
+    roots = np.zeros(0, dtype=complex)
+    for _ in range(2):
+        inverse_roots = np.linalg.eigvals(
+            np.linalg.solve(conductance + shift * reactance, reactance)
+        )
+        largest = np.abs(inverse_roots).max(initial=0.0)
+        kept = inverse_roots[np.abs(inverse_roots) > 1e-13 * largest]
+        roots = shift - 1.0 / kept if largest > 0 else np.zeros(0, dtype=complex)
+        sizes = np.abs(roots)[np.abs(roots) > 1e-9]
+        if not sizes.size:
+            break
+        shift = float(np.exp(np.log(sizes).mean()))
+    return np.asarray(roots[np.argsort(np.abs(roots))])

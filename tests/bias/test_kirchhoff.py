@@ -1,0 +1,70 @@
+"""Random biased circuits converge and satisfy Kirchhoff's current law at every node."""
+
+from __future__ import annotations
+
+import numpy as np
+from hypothesis import given, settings
+from hypothesis import strategies as st
+
+from tauledger.bias import BiasSolution, solve_bias
+from tauledger.bias.newton import linearise
+from tauledger.circuit import flatten
+from tauledger.netlist import parse
+
+MODELS = """
+.model qn npn is=3e-15 bf=180 br=3 vaf=80 var=12 ikf=0.1 ise=1e-14 ne=1.6 rb=60 rc=2 re=0.4
+.model qp pnp is=2e-15 bf=120 br=3 vaf=50 ikf=0.05 rb=80 rc=3
+.model jn njf vto=-2.5 beta=1m lambda=8m rd=20 rs=20
+.model jp pjf vto=-2.0 beta=0.7m lambda=10m
+.model mn nmos vto=1.1 kp=80u gamma=0.4 phi=0.7 lambda=0.02 rd=5 rs=5
+.model mp pmos vto=-1.0 kp=30u gamma=0.3 phi=0.65 lambda=0.03
+"""
+DEVICES = ("c b e qn", "c b e qp", "c b e jn", "c b e jp", "c b e e mn", "c b e 0 mn", "c b e e mp")
+
+resistance = st.floats(1.0, 7.0).map(lambda exponent: round(10.0**exponent, 3))
+stages = st.lists(
+    st.tuples(st.sampled_from(DEVICES), resistance, resistance, resistance, resistance),
+    min_size=1,
+    max_size=3,
+)
+
+
+def netlist(circuit: list[tuple[str, float, float, float, float]], supply: float) -> str:
+    """Stages with a bias divider each, the base of one tied to the collector before it."""
+    lines = ["random stages", f"VCC vcc 0 {supply}", MODELS]
+    for i, (device, upper, lower, load, degeneration) in enumerate(circuit):
+        letter = {"q": "Q", "j": "J", "m": "M"}[device.split()[-1][0]]
+        nodes = " ".join(word + str(i) if word in "cbe" else word for word in device.split())
+        lines += [
+            f"{letter}{i} {nodes}" + (" W=100u L=2u" if letter == "M" else ""),
+            f"RU{i} vcc b{i} {upper}",
+            f"RL{i} b{i} 0 {lower}",
+            f"RC{i} vcc c{i} {load}",
+            f"RE{i} e{i} 0 {degeneration}",
+        ]
+        if i:
+            lines.append(f"RX{i} c{i - 1} b{i} {upper}")
+    return "\n".join([*lines, ".end"])
+
+
+def residual(solution: BiasSolution) -> float:
+    """Largest sum of currents at a node over the largest current there (or 1 pA, if that is
+    more: a cut-off branch carries nothing but rounding)."""
+    equations, x = solution.equations, solution.point
+    unknowns = np.concatenate([x.voltages, x.currents], axis=1)
+    matrix, right = linearise(equations, unknowns, solution.state.branch_voltages)
+    size, nodes = equations.size, len(equations.nodes)
+    terms = matrix[0, :nodes, :size] * unknowns[0]
+    error = np.abs(terms.sum(axis=1) - right[0, :nodes])
+    scale = np.abs(terms).max(axis=1) + np.abs(right[0, :nodes]) + 1e-12
+    return float((error / scale).max())
+
+
+@settings(max_examples=500, deadline=None)
+@given(stages, st.sampled_from([-15.0, -5.0, 3.3, 9.0, 24.0, 48.0]))
+def test_random_circuits_satisfy_kirchhoff(
+    circuit: list[tuple[str, float, float, float, float]], supply: float
+) -> None:
+    solution = solve_bias(flatten(parse(netlist(circuit, supply))))
+    assert solution.point.failed_boards == 0
+    assert residual(solution) < 1e-9

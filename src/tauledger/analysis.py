@@ -5,11 +5,11 @@ from __future__ import annotations
 import os
 from dataclasses import dataclass
 from pathlib import Path
+from typing import TYPE_CHECKING
 
 from tauledger import __version__
 from tauledger.bias import BiasSolution, OperatingPoint, solve_bias
 from tauledger.circuit import flatten
-from tauledger.circuit.completion import add_models, complete
 from tauledger.circuit.elements import (
     BehaviouralSource,
     Circuit,
@@ -17,11 +17,9 @@ from tauledger.circuit.elements import (
     IndependentSource,
     VoltageSource,
 )
-from tauledger.circuit.generic import generic_models
 from tauledger.circuit.graph import find_floating_nodes
 from tauledger.circuit.islands import restrict
-from tauledger.configuration import PathSettings
-from tauledger.corners import Corners, find_corners
+from tauledger.corners import Corners, find_corners, hand_expressions, stage_formulas, workbench
 from tauledger.netlist import Netlist
 from tauledger.netlist import read as read_netlist
 from tauledger.problems import ProblemError
@@ -36,6 +34,9 @@ from tauledger.smallsignal import (
     sense_vector,
 )
 from tauledger.topology import Topology, choose_path, recognise
+
+if TYPE_CHECKING:
+    from tauledger.configuration.settings import PathSettings
 
 
 @dataclass(frozen=True, slots=True)
@@ -93,8 +94,17 @@ def analyze(
     ProblemError
         With every problem that stops the analysis, each with its place and what to do.
     """
-    settings = settings or PathSettings()
     circuit, input, output = _completed(netlist, settings, input, output)
+    return analyze_circuit(netlist, circuit, input, output)
+
+
+def analyze_circuit(
+    netlist: Netlist, circuit: Circuit, input: str | None = None, output: str | None = None
+) -> Analysis:
+    """Analyse a flat circuit, which may differ from what its netlist says (one part changed, say).
+
+    Raises ProblemError as :func:`analyze` does.
+    """
     if floating := find_floating_nodes(circuit):
         raise ProblemError(*floating)
     path = choose_path(circuit, input, output)
@@ -103,27 +113,44 @@ def analyze(
     topology = recognise(circuit, solution.point, path)
     source = next(e for e in circuit.elements if e.name == path.source)
     assert isinstance(source, IndependentSource)
+    exact = response(
+        network,
+        drive_vector(network, source),
+        sense_vector(network, path.output_node, path.output_reference),
+    )
+    held = _held_pairs(circuit, network)
     corners = find_corners(
-        response(
-            network,
-            drive_vector(network, source),
-            sense_vector(network, path.output_node, path.output_reference),
-        ),
+        exact,
         network.parts,
-        _held_pairs(circuit, network),
+        held,
         _supply_pairs(circuit, network, path.source),
     )
+    admittances = device_admittances(solution)
+    bench = workbench(circuit, network, solution.point, admittances, held)
     row = path_row(
-        circuit, solution.point, network, device_admittances(solution), topology, corners
+        circuit,
+        solution.point,
+        network,
+        admittances,
+        topology,
+        corners,
+        exact,
+        hand_expressions(bench, corners, exact),
+        stage_formulas(bench, network, topology, corners),
     )
     review = review_of(circuit, solution.point, topology, (row,), __version__)
     return Analysis(netlist, circuit, solution, network, topology, corners, review)
 
 
 def _completed(
-    netlist: Netlist, settings: PathSettings, input: str | None, output: str | None
+    netlist: Netlist, settings: PathSettings | None, input: str | None, output: str | None
 ) -> tuple[Circuit, str | None, str | None]:
     """The one circuit with the path, whole, and what is known of the path's ends."""
+    if settings is None:
+        return restrict(flatten(netlist), input), input, output
+    from tauledger.circuit.completion import add_models, complete
+    from tauledger.circuit.generic import generic_models
+
     substitute = generic_models(settings.generic.kinds) if settings.generic else None
     flat = flatten(add_models(netlist, settings), substitute)
     circuit, source, sink = complete(flat, settings)

@@ -21,10 +21,12 @@ from tauledger.problems import Problem, ProblemError, Severity
 
 if TYPE_CHECKING:
     from tauledger.analysis import Analysis
-    from tauledger.configuration import PathSettings
+    from tauledger.configuration.settings import PathSettings
     from tauledger.review.rows import Review
+    from tauledger.revision import Place
 
 FINE = 0
+FINDING = 1
 UNUSABLE = 2
 INTERNAL = 3
 INTERRUPTED = 130
@@ -61,19 +63,136 @@ def report(arguments: argparse.Namespace) -> int:
     from tauledger.analysis import analyze, read
 
     netlist = read(arguments.netlist)
-    settings = _settings(arguments)
+    settings = _settings(arguments, Path(arguments.netlist))
     analysis = analyze(netlist, arguments.input, arguments.output, settings)
     review = _simulated(analysis) if arguments.simulate else analysis.review
+    if arguments.against:
+        from tauledger.revisions import compare_against
+
+        ends = arguments.input, arguments.output
+        since = compare_against(arguments.against, analysis, *ends, _settings_of(arguments))
+        review = replace(review, comparison=since)
     _explain(review.problems)
     if arguments.format == "json":
         from tauledger.report.json_report import json_report
 
         text = json_report(review)
         _deliver(lambda: sys.stdout.write(text))
+    elif arguments.format == "markdown":
+        from tauledger.checking import markdown_of
+
+        page = markdown_of(analysis.circuit, review, settings)
+        _deliver(lambda: _write_utf8(page))
     else:
         from tauledger.report.terminal import write_text_report
 
         _deliver(lambda: write_text_report(review, sys.stdout))
+    return FINE
+
+
+def compare(arguments: argparse.Namespace) -> int:
+    """Compare two revisions of a netlist and print which edit moved each corner."""
+    from tauledger.revisions import compare_netlists
+
+    ends = arguments.input, arguments.output
+    comparison = compare_netlists(arguments.old, arguments.new, *ends, _settings_of(arguments))
+    if arguments.format == "json":
+        from tauledger.report.json_report import json_report
+
+        text = json_report(comparison)
+        _deliver(lambda: sys.stdout.write(text))
+    elif arguments.format == "markdown":
+        from tauledger.report.markdown_changes import changes_section
+
+        text = changes_section(comparison)
+        _deliver(lambda: sys.stdout.write(text))
+    else:
+        from tauledger.report.changes import comparison_page
+        from tauledger.report.terminal import write_page
+
+        _deliver(lambda: write_page(lambda page: comparison_page(page, comparison), sys.stdout))
+    return FINE
+
+
+def annotate(arguments: argparse.Namespace) -> int:
+    """Write the results beside the parts, into the netlist or onto its drawings."""
+    from tauledger.annotate import check_files, removed, write_files
+
+    sources = arguments.drawing or [arguments.netlist]
+    if arguments.output and len(sources) > 1:
+        _refuse("usage", "--output takes one drawing", "Annotate one drawing at a time.")
+    results = (
+        removed(sources, bool(arguments.drawing)) if arguments.remove else _annotated(arguments)
+    )
+    targets = [arguments.output or source for source in sources]
+    if not arguments.check:
+        write_files(targets, results)
+        return FINE
+    stale = check_files(targets, results)
+    _explain(stale)
+    return FINDING if stale else FINE
+
+
+def _annotated(arguments: argparse.Namespace) -> list[bytes]:
+    from tauledger.analysis import analyze, read
+    from tauledger.annotate import annotate_drawings, annotate_netlist, read_drawings
+    from tauledger.netlist.source import read_bytes
+
+    netlist = Path(arguments.netlist)
+    content = read_bytes(netlist)
+    settings = _settings(arguments, netlist)
+    analysis = analyze(read(netlist), arguments.input, arguments.output_node, settings)
+    review = analysis.review
+    _explain(review.problems)
+    if not arguments.drawing:
+        places = {element.name: element.span for element in analysis.circuit.elements}
+        return [annotate_netlist(content, review, places)]
+    drawings, problems = annotate_drawings(read_drawings(arguments.drawing), review)
+    _explain(problems)
+    return [drawing.content for drawing in drawings]
+
+
+def check(arguments: argparse.Namespace) -> int:
+    """Hold netlists against their limits, and look for what is wrong in themselves."""
+    from tauledger.checking import check_on_all_cores, render
+    from tauledger.fleet import configured_targets, named_targets
+    from tauledger.report.check_text import check_summary
+    from tauledger.review.check import exit_code
+
+    if arguments.netlists:
+        targets = named_targets(arguments.netlists, arguments.config)
+    else:
+        targets = configured_targets(Path.cwd(), arguments.config)
+    checks = check_on_all_cores(targets, sys.stderr)
+    threshold = Severity(arguments.fail_on)
+    text = render(checks, arguments.format, threshold, sys.stdout.encoding)
+    _deliver(lambda: _write_utf8(text) if arguments.format != "text" else sys.stdout.write(text))
+    if arguments.format == "text":
+        sys.stderr.write(check_summary(checks))
+    for one in checks:
+        if one.details:
+            _save_details(one.details, [one.netlist])
+    return exit_code(checks, threshold)
+
+
+def start(arguments: argparse.Namespace) -> int:
+    """Write a configuration to fill in, from what is found in a netlist."""
+    from tauledger.checking import starter_for
+
+    output: Path | None = arguments.output
+    folder = output.parent if output else None
+    netlist = Path(arguments.netlist)
+    text = starter_for(netlist, folder, arguments.input, arguments.output_node, _explain)
+    if output is None:
+        _deliver(lambda: _write_utf8(text))
+        return FINE
+    try:
+        with output.open("x", encoding="utf-8", newline="\n") as file:
+            file.write(text)
+    except FileExistsError:
+        _refuse("output-exists", f"{output} exists and is left as it is", "Name another file.")
+    except OSError as error:
+        _refuse("output-unwritable", f"{output}: {error.strerror}", "Check the folder.")
     return FINE
 
 
@@ -85,15 +204,23 @@ def _simulated(analysis: Analysis) -> Review:
     return beside(analysis.review, simulation)
 
 
-def _settings(arguments: argparse.Namespace) -> PathSettings | None:
+def _settings_of(arguments: argparse.Namespace) -> Callable[[Place], PathSettings | None]:
+    """The same for a netlist of another revision, which has a configuration of its own."""
+    return lambda place: _settings(arguments, place.path, place.roots)
+
+
+def _settings(
+    arguments: argparse.Namespace, netlist: Path, roots: Sequence[Path] | None = None
+) -> PathSettings | None:
     """What the configuration and the options add to the netlist."""
-    from tauledger.configuration import GenericModels, PathSettings
     from tauledger.configuration.choice import find_settings
     from tauledger.netlist.include import default_roots
 
-    netlist = Path(arguments.netlist)
-    settings = find_settings(netlist, default_roots(netlist), arguments.config, arguments.path)
+    roots = roots or default_roots(netlist)
+    settings = find_settings(netlist, roots, arguments.config, arguments.path)
     if arguments.generic_models and (settings is None or settings.generic is None):
+        from tauledger.configuration.settings import GenericModels, PathSettings
+
         settings = replace(settings or PathSettings(), generic=GenericModels())
     return settings
 
@@ -102,20 +229,99 @@ def _report_arguments(parser: argparse.ArgumentParser) -> None:
     # The usage that argparse makes takes lines which the help needs to fit a screen.
     parser.usage = "%(prog)s [OPTIONS] NETLIST"
     parser.add_argument("netlist", metavar="NETLIST", help="SPICE netlist of the amplifier")
-    path = parser.add_argument_group("what the netlist leaves open")
-    path.add_argument("--input", metavar="NAME", help="independent source that drives the path")
-    path.add_argument("--output", metavar="NODE", help="output node, or A,B between two")
-    path.add_argument("--config", metavar="FILE", type=Path, help="in place of the tauledger.toml found")
-    path.add_argument("--path", metavar="NAME", help="signal path of the configuration")
-    path.add_argument(
-        "--generic-models", action="store_true", help="stand-ins for missing models, marked so"
-    )
+    _path_arguments(parser)
     result = parser.add_argument_group("result")
+    result.add_argument("--against", metavar="REV", help="add the changes since a revision in git")
     result.add_argument(
         "--simulate", action="store_true", help="add figures from ngspice, run beside"
     )
     result.add_argument(
-        "--format", choices=("text", "json"), default="text", help="text (default) or json"
+        "--format",
+        choices=("text", "json", "markdown"),
+        default="text",
+        help="text (default), json or markdown",
+    )
+
+
+def _compare_arguments(parser: argparse.ArgumentParser) -> None:
+    parser.usage = "%(prog)s [OPTIONS] OLD NEW"
+    for name in ("old", "new"):
+        parser.add_argument(
+            name, metavar=name.upper(), help="netlist, or REV:path in git, counted from its top"
+        )
+    _path_arguments(parser)
+    parser.add_argument(
+        "--format",
+        choices=("text", "json", "markdown"),
+        default="text",
+        help="text (default), json or markdown",
+    )
+
+
+def _annotate_arguments(parser: argparse.ArgumentParser) -> None:
+    parser.usage = "%(prog)s [OPTIONS] NETLIST"
+    parser.add_argument("netlist", metavar="NETLIST", help="SPICE netlist of the amplifier")
+    parser.add_argument(
+        "--drawing",
+        metavar="SVG",
+        action="append",
+        default=[],
+        help="mark this drawing, not the netlist; once for each sheet",
+    )
+    parser.add_argument("--output", metavar="FILE", help="write there, leave the source alone")
+    what = parser.add_mutually_exclusive_group()
+    what.add_argument("--remove", action="store_true", help="take the annotations out again")
+    what.add_argument("--check", action="store_true", help="write nothing; exit 1 when stale")
+    _path_arguments(parser, "--output-node")
+
+
+def _path_arguments(parser: argparse.ArgumentParser, output: str = "--output") -> None:
+    path = parser.add_argument_group("what the netlist leaves open")
+    path.add_argument("--input", metavar="NAME", help="independent source that drives the path")
+    path.add_argument(output, metavar="NODE", help="output node, or A,B between two")
+    path.add_argument(
+        "--config", metavar="FILE", type=Path, help="in place of the tauledger.toml found"
+    )
+    path.add_argument("--path", metavar="NAME", help="signal path of the configuration")
+    path.add_argument(
+        "--generic-models", action="store_true", help="stand-ins for missing models, marked so"
+    )
+
+
+def _check_arguments(parser: argparse.ArgumentParser) -> None:
+    parser.usage = "%(prog)s [OPTIONS] [NETLIST ...]"
+    parser.add_argument(
+        "netlists",
+        metavar="NETLIST",
+        nargs="*",
+        type=Path,
+        help="netlists to check; left out, all that tauledger.toml is for",
+    )
+    parser.add_argument(
+        "--config", metavar="FILE", type=Path, help="in place of the tauledger.toml found"
+    )
+    parser.add_argument(
+        "--fail-on",
+        choices=("error", "warning"),
+        default="error",
+        help="least severity for exit code 1; error (default) or warning",
+    )
+    formats = ("text", "markdown", "github", "gitlab", "sarif", "junit", "json")
+    parser.add_argument(
+        "--format",
+        choices=formats,
+        default="text",
+        help=f"text (default), {', '.join(formats[1:])}",
+    )
+
+
+def _start_arguments(parser: argparse.ArgumentParser) -> None:
+    parser.usage = "%(prog)s [OPTIONS] NETLIST"
+    parser.add_argument("netlist", metavar="NETLIST", help="SPICE netlist of the amplifier")
+    parser.add_argument("--input", metavar="NAME", help="independent source that drives the path")
+    parser.add_argument("--output-node", metavar="NODE", help="output node, or A,B between two")
+    parser.add_argument(
+        "--output", metavar="FILE", type=Path, help="new file, in place of standard output"
     )
 
 
@@ -135,6 +341,30 @@ COMMANDS = {
         "tauledger report preamp.cir --output out",
         _report_arguments,
         report,
+    ),
+    "compare": Command(
+        "Print what two revisions differ in and which edit moved each corner.",
+        "tauledger compare HEAD~1:boards/preamp.cir boards/preamp.cir",
+        _compare_arguments,
+        compare,
+    ),
+    "annotate": Command(
+        "Write the results beside the parts, as comments or on a drawing.",
+        "tauledger annotate preamp.cir --drawing preamp.svg --output marked.svg",
+        _annotate_arguments,
+        annotate,
+    ),
+    "check": Command(
+        "Hold netlists against their limits and look for what is wrong in them.",
+        "tauledger check boards/*.cir --format github",
+        _check_arguments,
+        check,
+    ),
+    "start": Command(
+        "Write a tauledger.toml to fill in, from what is found in a netlist.",
+        "tauledger start preamp.cir --output tauledger.toml",
+        _start_arguments,
+        start,
     ),
 }
 
@@ -254,6 +484,13 @@ def _deliver(write: Callable[[], object]) -> None:
         _refuse("output-unwritable", message, "Check the disk or send the output elsewhere.")
 
 
+def _write_utf8(text: str) -> None:
+    """For formats that are UTF-8 wherever they are read, whatever the stream's own encoding."""
+    sys.stdout.flush()
+    sys.stdout.buffer.write(text.encode())
+    sys.stdout.buffer.flush()
+
+
 def _silence_stdout() -> None:
     """Keep Python from flushing to the dead stream, and complaining, on its way out."""
     os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
@@ -261,20 +498,27 @@ def _silence_stdout() -> None:
 
 def _report_internal(error: Exception, given: Sequence[str]) -> int:
     """One line for the user, the traceback in a fresh file for whoever mends it."""
+    import traceback
+
     from tauledger.report.inert import clip, inert
 
     what = clip(inert(f"{type(error).__name__}: {error}"), 200)
-    try:
-        where = f"details in {_save_traceback(error, given)}"
-    except OSError as failure:
-        where = f"details could not be saved: {failure.strerror}"
-    print(f"tauledger: internal error ({what}); {where}", file=sys.stderr)
+    print(f"tauledger: internal error ({what})", file=sys.stderr)
+    _save_details("".join(traceback.format_exception(error)), given)
     return INTERNAL
 
 
-def _save_traceback(error: Exception, given: Sequence[str]) -> str:
+def _save_details(traceback: str, given: Sequence[str]) -> None:
+    """Keep a traceback in a fresh file, and say where."""
+    try:
+        where = f"details in {_save(f'arguments: {list(given)!r}', traceback)}"
+    except OSError as failure:
+        where = f"details could not be saved: {failure.strerror}"
+    print(f"tauledger: {where}", file=sys.stderr)
+
+
+def _save(head: str, traceback: str) -> str:
     import tempfile
-    import traceback
 
     with tempfile.NamedTemporaryFile(
         "w",
@@ -284,6 +528,5 @@ def _save_traceback(error: Exception, given: Sequence[str]) -> str:
         encoding="utf-8",
         errors="backslashreplace",
     ) as file:
-        file.write(f"arguments: {list(given)!r}\nPython {sys.version}\n\n")
-        file.writelines(traceback.format_exception(error))
+        file.write(f"{head}\nPython {sys.version}\n\n{traceback}")
     return file.name

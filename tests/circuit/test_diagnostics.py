@@ -181,7 +181,7 @@ def test_all_problems_of_a_file_in_one_run(tmp_path: Path) -> None:
         b".include no.lib\nX1 a sub\nR4 a 0 1M\n",
     )
     found = [(entry.span.line, entry.code) for entry in problems_of(path) if entry.span]
-    assert sorted(found) == [
+    assert found == [
         (2, "line-unreadable"),
         (3, "model-missing"),
         (4, "value-unreadable"),
@@ -189,6 +189,18 @@ def test_all_problems_of_a_file_in_one_run(tmp_path: Path) -> None:
         (7, "subcircuit-missing"),
         (8, "value-milli"),
     ]
+
+
+def test_a_fault_in_a_subcircuit_nothing_calls_does_not_stop_the_rest(tmp_path: Path) -> None:
+    (tmp_path / "vendor.lib").write_text(
+        ".subckt other a\nR1 a 0 {1k\n.ends\n.subckt mine a\nR1 a 0 1k\n.ends\n"
+    )
+    path = _written(tmp_path, b"title\n.include vendor.lib\nX1 a mine\n")
+    (entry,) = problems_of(path)
+    assert (entry.code, entry.severity) == ("line-unreadable", Severity.WARNING)
+    path = _written(tmp_path, b"title\n.include vendor.lib\nX1 a other\n")
+    (entry,) = problems_of(path)
+    assert (entry.code, entry.severity) == ("line-unreadable", Severity.ERROR)
 
 
 @pytest.mark.parametrize(
@@ -203,6 +215,32 @@ def test_all_problems_of_a_file_in_one_run(tmp_path: Path) -> None:
 def test_near_names_are_listed(text: str, near: str, tmp_path: Path) -> None:
     entry = problems_of(_written(tmp_path, ("title\n" + text).encode()))[0]
     assert near in entry.message.lower().split("'")[-1]
+
+
+@pytest.mark.parametrize(
+    ("line", "unused"),
+    [
+        ("R1 a 0 1k 5%", "5%"),
+        ("R1 a 0 1k rser=2", "rser=2"),
+        ("C1 a 0 1u 25V", "25V"),
+        ("L1 a 0 1m rser=2", "rser=2"),
+        ("V1 a 0 1 rser=2", "rser=2"),
+        ("E1 a 0 b 0 10 20", "20"),
+        ("G1 a 0 b 0 10 m=2", "m=2"),
+        ("E1 a 0 value={v(b)} tc=2", "tc=2"),
+        ("D1 a 0 m 1 2", "2"),
+        ("M1 a 0 0 0 n 2", "2"),
+        ("Q1 a b 0 q nosuch=2", "nosuch=2"),
+        ("X1 a s m=2", "m=2"),
+    ],
+)
+def test_nothing_is_passed_over_in_silence(line: str, unused: str, tmp_path: Path) -> None:
+    models = ".model m d\n.model n nmos\n.model q npn\n.subckt s p\nR9 p 0 1\n.ends\nR2 b 0 1\n"
+    found = problems_of(_written(tmp_path, f"title\n{line}\nR3 a 0 1\n{models}".encode()))
+    (entry,) = [entry for entry in found if entry.code == "words-ignored"]
+    assert entry.span is not None
+    start = entry.span.column - 1
+    assert entry.span.text[start : start + entry.span.length] == unused
 
 
 def test_a_fault_in_a_subcircuit_counts_once_however_often_it_is_called(tmp_path: Path) -> None:

@@ -382,6 +382,8 @@ def test_names_inside_subcircuits_are_flat_in_expressions_and_controls() -> None
         "P1 a b CONN_2",
         "U1 a b c LM358",
         "J1 a b Conn_01x02",
+        "TP1 a TestPoint",
+        "H1 MountingHole",
         "J1 a b c Conn_01x03",
         "E1 a 0 LAPLACE {v(b)} {1/(1+s)}",
         "E1 a 0 FREQ {v(b)} = (0,0,0)",
@@ -547,3 +549,80 @@ def test_subcircuit_in_an_included_file_may_be_left_open_across_files(tmp_path: 
         tmp_path, ".subckt s a\n.include body.lib\n.ends\nX1 q s", body_lib="R1 a 0 7\n"
     )
     assert element(circuit, "X1.R1").nodes == ("q", "0")
+
+
+def test_export_with_dollar_nets_upper_case_and_glued_units() -> None:
+    circuit = flat(
+        "* source AMP\nR_R1         $N_0001 $N_0002  10K TC=0,0\n"
+        "V_V1         $N_0001 0 DC 0Vdc AC 1Vac\n"
+        "+SIN 0 10m 1k 0 0 0\nQ_Q1  $N_0003 $N_0002 0 Q2N7 $ a comment\nR_R2 VCC $N_0003 4.7K\n"
+        "V_V2 VCC 0 12Vdc\nC_C1 $N_0003 OUT 10uF IC=0\nR_R3 OUT 0 100K\n.PROBE V(*) I(*)\n"
+        ".AC DEC 101 10Hz 10MegHz\n.model Q2N7 NPN(Is=6.7f Xti=3 Eg=1.11 Vaf=74 Bf=416 Ne=1.26\n"
+        "+\t\tIse=6.7f Ikf=66.78m Cjc=3.638p Mjc=.3085 Vjc=.75 Fc=.5 Tf=301.2p Rb=10)\n.END\n"
+    )
+    assert circuit.problems == ()
+    assert [entry.nodes for entry in circuit.elements[:3]] == [
+        ("$N_0001", "$N_0002"),
+        ("$N_0001", "0"),
+        ("$N_0003", "$N_0002", "0"),
+    ]
+    assert circuit.elements[1].ac == 1  # type: ignore[attr-defined]
+    assert circuit.elements[4].dc == 12  # type: ignore[attr-defined]
+    assert circuit.ac_range_hz == (10.0, 10e6)
+    model = circuit.elements[2].model  # type: ignore[attr-defined]
+    assert (model.parameters["tf"], model.parameters["ikf"]) == (301.2e-12, 66.78e-3)
+
+
+def test_export_with_section_signs_micro_signs_and_part_data() -> None:
+    circuit = flatten(
+        parse(
+            "* C:\\Users\\me\\preamp.asc\nV1 N001 0 9\nV§2 in 0 SINE(0 10m 1k) AC 1\n"
+            'C1 in N002 4.7µ V=16 Irms=0 mfg="ACME" pn="X-1" type="Al electrolytic"\n'
+            "R1 N001 N002 {Rb}\nQ1 N003 N002 N004 0 QN\nRc N001 N003 4k7\nR§e N004 0 1K\n"
+            "L1 N003 out 1m Rser=0.5\nRL out 0 10Meg\n.model NPN NPN\n.model PNP PNP\n"
+            ".model QN NPN(Is=1E-14 Vaf=100 Bf=200 Vceo=45 Icrating=100m mfg=ACME)\n"
+            ".param Rb=470k\n.tran 0 5m\n.step param Rb 100k 1Meg 100k\n;.ac dec 10 1 1k\n"
+            ".meas AC mid MAX V(out)\n.backanno\n.end\n",
+            "preamp.net",
+        )
+    )
+    assert circuit.title == "C:\\Users\\me\\preamp.asc"
+    values = {
+        entry.name: next(
+            getattr(entry, name)
+            for name in ("resistance_ohm", "capacitance_f", "inductance_h", "dc", "parameters")
+            if hasattr(entry, name)
+        )
+        for entry in circuit.elements
+    }
+    assert values == {
+        "V1": 9.0,
+        "V§2": 0.0,
+        "C1": pytest.approx(4.7e-6),
+        "R1": 470e3,
+        "Q1": {},
+        "Rc": 4.7e3,
+        "R§e": 1e3,
+        "L1": 1e-3,
+        "RL": 10e6,
+    }
+    # The choke's series resistance is not part of the analysis, and it says so.
+    assert codes(circuit) == ["value-letter-digit", "words-ignored"]
+    assert circuit.output_hints == (("out",),)
+    assert circuit.ac_range_hz is None
+
+
+def test_independent_circuits_in_one_file_are_all_read() -> None:
+    circuit = flat("V1 a 0 1\nR1 a 0 1\n\nV2 x y 1\nR2 x y 1\nR3 y 0 1")
+    assert len(circuit.elements) == 5
+
+
+def test_a_file_without_sources_or_models_names_what_is_missing() -> None:
+    with pytest.raises(ProblemError) as caught:
+        flat("R1 a b 1k\nQ1 a b c BC847\nJ1 a b c Conn_01x03\nU1 a b c NE5532\nD1 a b BAT54")
+    assert [(entry.code, entry.severity.value) for entry in caught.value.problems] == [
+        ("model-missing", "error"),
+        ("element-left-out", "warning"),
+        ("element-left-out", "warning"),
+        ("model-missing", "error"),
+    ]

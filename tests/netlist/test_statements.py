@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import pytest
 
-from tauledger.netlist import parse
+from tauledger.netlist import parse, statements
 from tauledger.netlist.statements import Assignment, Call, Formula, Group, Statement, Table, Word
 
 
@@ -169,3 +169,12 @@ def test_title(text: str, title: str) -> None:
     netlist = parse(text)
     assert netlist.title == title
     assert [entry.name.text for entry in netlist.statements if entry.name.text[0] == "R"] == ["R1"]
+
+
+def test_plain_lines_are_split_as_the_grammar_would() -> None:
+    line = "Q1,  Net-(Q1-C) /a-(b)/(c)x\t$N_1  e-  2N3904 -(x) 1k"
+    by_hand = statements._WORD.findall(line)
+    by_grammar = statements._parser().parse(line, start="items")
+    assert by_hand[1:] == [word.text for word in by_grammar]
+    assert statements._PLAIN_LINE.fullmatch("R1 Net-(Q1-C) 0 1k")
+    assert not statements._PLAIN_LINE.fullmatch("R1 a 0 (1k)")

@@ -112,7 +112,6 @@ def test_sum_fails_on_the_follower_whose_zero_lies_between_its_poles() -> None:
     assert high.estimate_error == pytest.approx(-0.66, abs=0.01)
 
 
-@pytest.mark.xfail(strict=True, reason="the engine does not tell peaking yet")
 def test_peak_of_the_feedback_pair_is_told_in_db() -> None:
     """U2: 9.6 dB above midband near 2.6 Hz, which a sum of time constants cannot show."""
     pair = next(e for e in EXAMPLES if e.id == "U2")

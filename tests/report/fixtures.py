@@ -99,7 +99,20 @@ ONE_STAGE = Review(
             gain_db=41.47,
             input_resistance_ohm=3.21e3,
             output_resistance_ohm=4.43e3,
-            stages=(StageRow(1, ("Q1",), "common emitter", "base", "col", -126.9, 3.21e3, 4.43e3),),
+            stages=(
+                StageRow(
+                    1,
+                    ("Q1",),
+                    "common emitter",
+                    "base",
+                    "col",
+                    -126.9,
+                    3.21e3,
+                    4.43e3,
+                    "−gm·(RC‖RL‖ro) = −39.6 mS·3.22 kΩ",
+                    -127.5,
+                ),
+            ),
             time_constants=(
                 _time_constant(
                     "C1",
@@ -122,6 +135,7 @@ ONE_STAGE = Review(
                     dc_voltage_v=1.041,
                     expression="RE‖((rπ + RS‖R1‖R2)/(β + 1))",
                     expression_deviation=0.0031,
+                    exact_move=-0.872,
                 ),
                 _time_constant(
                     "C2",
@@ -179,6 +193,12 @@ ONE_STAGE = Review(
                 (-59.4 + 0j, -4.1 + 0j, -3.5 + 0j),
                 (0j, 0j, -1.59 + 0j),
                 ("CE makes a zero at 1.59 Hz, far below its pole: the sum stands.",),
+                improved_hz=60.9,
+                improved_method="second order with zeros",
+                improved_error=0.0099,
+                highest_hz=67.4,
+                changes=("CE × 2: 60.3 Hz → 34.8 Hz",),
+                timing=("settles to 1 % in 209 ms after a small step (slowest pole 3.50 Hz)",),
             ),
             high=CornerRow(
                 "high",
@@ -191,6 +211,8 @@ ONE_STAGE = Review(
                 ("The Miller effect multiplies Cμ: it sees RB times the stage gain.",),
             ),
             notes=(),
+            gain_by_formulas=-119.0,
+            gain_by_inspection=-118.5,
         ),
     ),
     problems=(WARNING, NOTE),

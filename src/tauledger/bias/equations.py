@@ -276,7 +276,7 @@ def _place_terminals(
         table[row, : device.outer] = [node_index[node] for node in outer]
         for k, terminal in enumerate(device.terminals[device.outer :]):
             if merged[row, k]:
-                twin = device.terminals.index(terminal.removesuffix("_internal"))
+                twin = device.terminals.index(terminal.partition("_")[0])
                 table[row, device.outer + k] = table[row, twin]
                 continue
             name = f"{element.name}.{terminal}"

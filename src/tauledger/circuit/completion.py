@@ -17,11 +17,11 @@ from tauledger.circuit.elements import (
     Resistor,
     VoltageSource,
 )
-from tauledger.configuration import Input, ModelFile, Output, PathSettings, Supply
 from tauledger.configuration.codes import near, problem
+from tauledger.configuration.settings import Input, ModelFile, Output, PathSettings, Supply
 from tauledger.netlist import Netlist
 from tauledger.netlist.reader import parse, read_library
-from tauledger.netlist.statements import Statement
+from tauledger.netlist.statements import Statement, Word
 from tauledger.problems import Problem, ProblemError, SourceSpan
 from tauledger.quantity import format_quantity
 
@@ -38,11 +38,20 @@ def add_models(netlist: Netlist, settings: PathSettings) -> Netlist:
     them. Raises ProblemError when a file cannot be read.
     """
     libraries = [_library(file) for file in settings.models]
+    own = {_model_name(statement) for statement in netlist.statements} - {None}
+    own |= {subcircuit.name.text.lower() for subcircuit in netlist.subcircuits}
+    # Of two parameters of one name the last counts, of two models the first.
     statements = [
         statement
         for library in libraries
         for statement in library.statements
-        if statement.keyword in _DEFINITIONS
+        if statement.keyword in _DEFINITIONS and _model_name(statement) not in own
+    ]
+    subcircuits = [
+        subcircuit
+        for library in libraries
+        for subcircuit in library.subcircuits
+        if subcircuit.name.text.lower() not in own
     ]
     last: tuple[Statement, ...] = ()
     if settings.temperature is not None:
@@ -50,10 +59,17 @@ def add_models(netlist: Netlist, settings: PathSettings) -> Netlist:
     return replace(
         netlist,
         statements=(*statements, *netlist.statements, *last),
-        subcircuits=(*(s for library in libraries for s in library.subcircuits),
-                     *netlist.subcircuits),
+        subcircuits=(*netlist.subcircuits, *subcircuits),
         problems=(*(p for library in libraries for p in library.problems), *netlist.problems),
-    )  # fmt: skip
+    )
+
+
+def _model_name(statement: Statement) -> str | None:
+    """The lower-case name a .model statement defines; None for any other."""
+    if statement.keyword != ".model" or not statement.items:
+        return None
+    name = statement.items[0]
+    return name.text.lower() if isinstance(name, Word) else None
 
 
 def _library(file: ModelFile) -> Netlist:

@@ -7,7 +7,7 @@ from collections.abc import Sequence
 
 from tauledger.circuit.elements import BehaviouralSource, ControlledSource, VoltageSource
 from tauledger.circuit.evaluate import EvaluationError, substitute
-from tauledger.circuit.expansion import Expansion
+from tauledger.circuit.expansion import Expansion, ignored
 from tauledger.circuit.operands import is_word, node_words, ungrouped
 from tauledger.circuit.scope import Scope
 from tauledger.netlist.codes import fault
@@ -32,6 +32,9 @@ MAXIMUM_TERMS = 1000
 def controlled(run: Expansion, scope: Scope, statement: Statement) -> None:
     """Add an E, F, G or H source."""
     items = _with_nodes_ungrouped(statement)
+    if len(items) < 2 and statement.name.text[0] in "hH":
+        run.leave_out(statement, "it has no two nodes and reads as a mounting hole", scope)
+        return
     if len(items) < 3:
         raise _incomplete(statement)
     output = run.nodes(_words(statement, items[:2]), scope)
@@ -111,6 +114,8 @@ def _linear(
         raise _incomplete(statement)
     control = _words(statement, items[:count])
     gain = run.number(items[count], scope, statement)
+    for extra in items[count + 1 : count + 2]:
+        ignored(run, statement, extra)
     _add_linear(run, scope, statement, output, control, gain)
 
 
@@ -161,6 +166,9 @@ def _value(
         raise _incomplete(statement)
     if isinstance(value, Formula):
         text = value.text
+        after = items[1:] if isinstance(head, Assignment) else items[2:]
+        for extra in after[:1]:
+            ignored(run, statement, extra)
     else:
         text = statement.line.text[value.offset :]
         value = Word(text.rstrip(), value.offset)

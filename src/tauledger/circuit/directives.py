@@ -113,7 +113,8 @@ def _hints(run: Expansion, scope: Scope, statement: Statement) -> Iterator[tuple
         inside, end = parenthesised(text, match.end() - 1)
         parts = [part.strip() for part in _split(inside)]
         names = [(part, run.find_node(part, scope)) for part in parts]
-        missing = [part for part, flat in names if flat is None]
+        # v(*) and the like ask for every node, which hints at none.
+        missing = [part for part, flat in names if flat is None and "*" not in part]
         found = True
         if complaints == _COMPLAINTS:
             return
@@ -121,7 +122,7 @@ def _hints(run: Expansion, scope: Scope, statement: Statement) -> Iterator[tuple
             complaints += 1
             word = Word(text[match.start() : end], statement.name.end + match.start())
             run.report([_no_node(statement, missing[0], word)])
-        elif names and not missing:
+        elif names and None not in [flat for _, flat in names]:
             yield tuple(flat for _, flat in names if flat is not None)
     if found or statement.keyword not in (".save", ".probe", "save", "plot"):
         return

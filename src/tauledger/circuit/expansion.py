@@ -6,11 +6,10 @@ import difflib
 import re
 from collections import Counter
 from collections.abc import Callable, Iterable, Sequence
-from typing import Any
 
-from tauledger.circuit.elements import GROUND, Element
+from tauledger.circuit.block import Block
+from tauledger.circuit.elements import GROUND, Element, Model
 from tauledger.circuit.evaluate import EvaluationError, evaluate
-from tauledger.circuit.generic import Replacement
 from tauledger.circuit.scope import Scope
 from tauledger.netlist.codes import fault, problem
 from tauledger.netlist.expression import Expression, ExpressionError, number_traps, parse_expression
@@ -21,7 +20,9 @@ from tauledger.quantity import TRAPS, parse_number, rejected_number
 _MAY_BE_TRAP = re.compile(r"[0-9][A-Za-z\u03bc]")
 
 MAXIMUM_ELEMENTS = 100_000
-MAXIMUM_WORK = 5_000_000
+MAXIMUM_DEPTH = 50
+"""Of subcircuit calls inside subcircuit calls."""
+MAXIMUM_WORK = 3_000_000
 """Steps of the expansion, weighed so that one is about a microsecond."""
 _WORK_OF_NUMBER, _WORK_OF_ARITHMETIC = 3, 10
 WORK_OF_CALL, WORK_OF_CONDITIONAL_CALL, WORK_OF_DEFINITION = 40, 200, 10
@@ -33,13 +34,14 @@ _MAXIMUM_SEARCHES = 20
 _LONGEST_SEARCHED = 60
 
 
-Substitute = Callable[[Word, Statement], Replacement]
+Substitute = Callable[[Word, Statement], tuple[Model | None, Problem]]
+"""From the word that names a missing model to what stands in and the warning, or the refusal."""
 
 
 class Expansion:
     """Mutable while :func:`tauledger.circuit.flatten` runs; gone afterwards."""
 
-    def __init__(self, problems: Iterable[Problem]) -> None:
+    def __init__(self) -> None:
         self.temperature_c = 27.0
         self.nominal_temperature_c = 27.0
         self.globals: set[str] = {GROUND, "gnd"}
@@ -56,12 +58,12 @@ class Expansion:
         self._spelling: dict[str, str] = {"0": GROUND, "gnd": GROUND}
         self._expressions: dict[str, Expression] = {}
         self._calls = 0
-        self.blocks: dict[int, Any] = {}
+        self.blocks: dict[int, Block] = {}
+        """Of each subcircuit expanded so far, by its id."""
         self.substitute: Substitute | None = None
         """What to put in place of a missing model; None to refuse."""
         self.directives: list[tuple[Scope, Statement]] = []
         """Dot statements met, to be read once every node is known."""
-        self.report(problems)
 
     # problems -------------------------------------------------------------------------------------
 
@@ -104,13 +106,24 @@ class Expansion:
     def has_errors(self) -> bool:
         return self._errors > 0
 
-    def listed_problems(self) -> tuple[Problem, ...]:
-        """All problems, with one note for each kind of warning of which some are left out."""
+    def listed_problems(self, path: str) -> tuple[Problem, ...]:
+        """All problems by position, those of the netlist ``path`` before those of its includes.
+
+        One note stands for each kind of warning of which some are left out.
+        """
         omitted = [
             problem("problems-omitted", f"{count} more like these: {code}", None, "")
             for code, count in self._omitted.items()
         ]
-        return (*self.problems, *omitted)
+        ordered = sorted(
+            self.problems,
+            key=lambda entry: (
+                (entry.span.path != path, entry.span.path, entry.span.line)
+                if entry.span
+                else (True, "", 0)
+            ),
+        )
+        return (*ordered, *omitted)
 
     def count_work(self, amount: int) -> None:
         """Bound what subcircuits called many times, each with many parameters, can cost."""

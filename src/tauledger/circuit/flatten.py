@@ -3,11 +3,11 @@
 from __future__ import annotations
 
 from collections import ChainMap
-from collections.abc import Callable, Iterator, Sequence
-from dataclasses import dataclass
+from collections.abc import Callable, Sequence
 from typing import TypeVar
 
 from tauledger.circuit import controlled, passives, sources
+from tauledger.circuit.block import Block, global_nodes
 from tauledger.circuit.conditionals import decide
 from tauledger.circuit.directives import (
     Directives,
@@ -16,28 +16,29 @@ from tauledger.circuit.directives import (
     read_settings,
 )
 from tauledger.circuit.elements import Circuit
+from tauledger.circuit.expanded_size import check_expanded_size
 from tauledger.circuit.expansion import (
-    MAXIMUM_ELEMENTS,
+    MAXIMUM_DEPTH,
     WORK_OF_CALL,
     WORK_OF_CONDITIONAL_CALL,
     WORK_OF_DEFINITION,
     Expansion,
     Substitute,
     ignored,
-    too_large,
 )
 from tauledger.circuit.parameters import Definition, assigned_text, collect, resolve
 from tauledger.circuit.scope import ModelCard, Scope, top_scope
 from tauledger.circuit.semiconductors import semiconductor
+from tauledger.circuit.unused import without_unused
 from tauledger.netlist import Netlist, Subcircuit
 from tauledger.netlist.codes import fault, problem
 from tauledger.netlist.statements import Assignment, Statement, Word
 from tauledger.problems import Problem, ProblemError
 
-MAXIMUM_DEPTH = 50
-"""Of subcircuit calls inside subcircuit calls."""
-
 T = TypeVar("T")
+
+_FEWEST_OF_A_LINE = 4
+"""Nodes of a transmission line."""
 Builder = Callable[[Expansion, Scope, Statement], None]
 
 _LEFT_OUT = {
@@ -60,24 +61,25 @@ def flatten(netlist: Netlist, substitute: Substitute | None = None) -> Circuit:
     Raises ProblemError with every error found, those of reading included, when there is any;
     warnings and notes go into :attr:`Circuit.problems`.
     """
-    run = Expansion(netlist.problems)
+    run = Expansion()
     run.substitute = substitute
     found = Directives()
     scope = top_scope()
-    block = _Block.of(netlist.statements, netlist.subcircuits)
-    _check_expanded_size(netlist)
-    run.globals.update(_global_nodes(netlist.statements))
+    block = Block.of(netlist.statements, netlist.subcircuits)
+    check_expanded_size(netlist)
+    run.globals.update(global_nodes(netlist.statements))
     active = _enter(run, scope, block, {}, [])
     _attempt_each(run, scope, active.settings, lambda r, s, t: read_settings(r, s, t, found))
     _expand(run, scope, active)
     elements = run.finish()
+    run.report(without_unused(netlist, run.blocks))
     for place, statement in run.directives:
         _attempt_each(run, place, [statement], lambda r, s, t: read_directive(r, s, t, found))
     _attempt_each(run, scope, netlist.commands, lambda r, s, t: read_command(r, s, t, found))
     if not elements and not run.has_errors:
         run.report([_empty(netlist.path)])
     if run.has_errors:
-        raise ProblemError(*run.listed_problems())
+        raise ProblemError(*run.listed_problems(netlist.path))
     return Circuit(
         netlist.title,
         netlist.path,
@@ -89,7 +91,7 @@ def flatten(netlist: Netlist, substitute: Substitute | None = None) -> Circuit:
         found.ac_range_hz,
         found.node_sets,
         found.initial_conditions,
-        run.listed_problems(),
+        run.listed_problems(netlist.path),
     )
 
 
@@ -100,55 +102,6 @@ def _empty(path: str) -> Problem:
         None,
         "Export the schematic again, with its parts.",
     )
-
-
-@dataclass(slots=True)
-class _Block:
-    """The statements of the netlist or of a subcircuit, sorted by kind."""
-
-    definitions: list[Statement]
-    models: list[Statement]
-    settings: list[Statement]
-    directives: list[Statement]
-    elements: list[Statement]
-    conditional: list[Statement]
-    """All statements in order, when there are conditionals among them."""
-    subcircuits: tuple[Subcircuit, ...]
-
-    @classmethod
-    def of(cls, statements: Sequence[Statement], subcircuits: tuple[Subcircuit, ...]) -> _Block:
-        block = cls([], [], [], [], [], [], subcircuits)
-        for statement in statements:
-            block.put(statement)
-        if any(statement.keyword == ".if" for statement in block.directives):
-            block = cls([], [], [], [], [], list(statements), subcircuits)
-        return block
-
-    @property
-    def defines_names(self) -> bool:
-        return bool(self.definitions or self.models or self.subcircuits or self.conditional)
-
-    def put(self, statement: Statement) -> None:
-        if statement.name.text[0] != ".":
-            self.elements.append(statement)
-            return
-        keyword = statement.keyword
-        if keyword in (".param", ".params", ".parameters", ".func", ".csparam"):
-            self.definitions.append(statement)
-        elif keyword == ".model":
-            self.models.append(statement)
-        elif keyword in (".temp", ".option", ".options", ".opt"):
-            self.settings.append(statement)
-        elif keyword != ".global":
-            self.directives.append(statement)
-
-
-def _global_nodes(statements: Sequence[Statement]) -> Iterator[str]:
-    for statement in statements:
-        if statement.keyword == ".global":
-            for item in statement.items:
-                if isinstance(item, Word):
-                    yield item.text.lower()
 
 
 def _attempt_each(
@@ -164,10 +117,10 @@ def _attempt_each(
 def _enter(
     run: Expansion,
     scope: Scope,
-    block: _Block,
+    block: Block,
     overrides: dict[str, float],
     defaults: list[Definition],
-) -> _Block:
+) -> Block:
     """Make the block's names known in its scope; returns it with its conditionals decided."""
     run.count_work(
         (WORK_OF_CONDITIONAL_CALL if block.conditional else WORK_OF_CALL)
@@ -180,7 +133,7 @@ def _enter(
         _define(run, scope.subcircuits, subcircuit.header, subcircuit.name, (subcircuit, scope))
     if block.conditional:
         chosen = decide(run, scope, block.conditional, overrides, defaults)
-        block = _Block.of(chosen, block.subcircuits)
+        block = Block.of(chosen, block.subcircuits)
     else:
         resolve(run, scope, defaults + collect(run, scope, block.definitions), overrides)
     for statement in block.models:
@@ -215,7 +168,7 @@ def _define(
         )
 
 
-def _expand(run: Expansion, scope: Scope, block: _Block) -> None:
+def _expand(run: Expansion, scope: Scope, block: Block) -> None:
     builders = _BUILDERS
     run.directives.extend((scope, statement) for statement in block.directives)
     for statement in block.elements:
@@ -235,6 +188,9 @@ def _unknown(run: Expansion, scope: Scope, statement: Statement) -> None:
     if letter == "u" and isinstance(last, Word) and last.text.lower() in scope.subcircuits:
         _call(run, scope, statement)
         return
+    if letter == "t" and len(statement.items) < _FEWEST_OF_A_LINE:
+        run.leave_out(statement, "it reads as a test point or a transformer", scope)
+        return
     if letter in _LEFT_OUT:
         run.leave_out(statement, _LEFT_OUT[letter], scope)
         return
@@ -248,6 +204,41 @@ def _unknown(run: Expansion, scope: Scope, statement: Statement) -> None:
 
 def _call(run: Expansion, scope: Scope, statement: Statement) -> None:
     """An X element: bind nodes and parameters, then expand the body."""
+    name, (subcircuit, home), given = _called(run, scope, statement)
+    _check_call(scope, statement, name, subcircuit, given)
+    _warn_multiplier(run, statement, subcircuit)
+    ports = dict(
+        zip((word.text.lower() for word in subcircuit.nodes), run.nodes(given, scope), strict=True)
+    )
+    overrides = {
+        item.name.text.lower(): run.number(item.value, scope, statement)
+        for item in statement.items
+        if isinstance(item, Assignment)
+    }
+    run.count_call(statement.span())
+    block = run.blocks.get(id(subcircuit))
+    if block is None:
+        block = Block.of(subcircuit.statements, subcircuit.subcircuits)
+        run.blocks[id(subcircuit)] = block
+    inner = scope.inner(
+        home,
+        scope.prefix + statement.name.text + ".",
+        ports,
+        parameters=bool(overrides or subcircuit.parameters or block.defines_names),
+        names=block.defines_names,
+    )
+    header = subcircuit.header
+    defaults = [
+        Definition(item.name.text.lower(), *assigned_text(item, header), header)
+        for item in subcircuit.parameters
+    ]
+    _expand(run, inner, _enter(run, inner, block, overrides, defaults))
+
+
+def _called(
+    run: Expansion, scope: Scope, statement: Statement
+) -> tuple[Word, tuple[Subcircuit, Scope], list[Word]]:
+    """The subcircuit's name, its definition with its scope, and the nodes given."""
     words = [
         item
         for item in statement.items
@@ -260,7 +251,7 @@ def _call(run: Expansion, scope: Scope, statement: Statement) -> None:
             statement.span(),
             "Write it as: Xname node node … subcircuit",
         )
-    name = words[-1]
+    name = words.pop()
     definition = scope.subcircuits.get(name.text.lower())
     if definition is None:
         raise fault(
@@ -270,8 +261,13 @@ def _call(run: Expansion, scope: Scope, statement: Statement) -> None:
             statement.span(name),
             "Add its .subckt lines, or include the file that holds them.",
         )
-    subcircuit, home = definition
-    given, expected = words[:-1], subcircuit.nodes
+    return name, definition, words
+
+
+def _check_call(
+    scope: Scope, statement: Statement, name: Word, subcircuit: Subcircuit, given: list[Word]
+) -> None:
+    expected = subcircuit.nodes
     if len(given) != len(expected):
         raise fault(
             "subcircuit-nodes",
@@ -287,33 +283,6 @@ def _call(run: Expansion, scope: Scope, statement: Statement) -> None:
             statement.span(),
             "A subcircuit that calls itself never ends; remove the call.",
         )
-    outer = run.nodes(given, scope)
-    ports = {word.text.lower(): node for word, node in zip(expected, outer, strict=True)}
-    _warn_multiplier(run, statement, subcircuit)
-    overrides = {
-        item.name.text.lower(): run.number(item.value, scope, statement)
-        for item in statement.items
-        if isinstance(item, Assignment)
-    }
-    run.count_call(statement.span())
-    block = run.blocks.get(id(subcircuit))
-    if block is None:
-        block = _Block.of(subcircuit.statements, subcircuit.subcircuits)
-        run.blocks[id(subcircuit)] = block
-    inner = scope.inner(
-        home,
-        scope.prefix + statement.name.text + ".",
-        ports,
-        parameters=bool(overrides or subcircuit.parameters or block.defines_names),
-        names=block.defines_names,
-    )
-    defaults = [
-        Definition(
-            item.name.text.lower(), *assigned_text(item, subcircuit.header), subcircuit.header
-        )
-        for item in subcircuit.parameters
-    ]
-    _expand(run, inner, _enter(run, inner, block, overrides, defaults))
 
 
 def _warn_multiplier(run: Expansion, statement: Statement, subcircuit: Subcircuit) -> None:
@@ -322,46 +291,6 @@ def _warn_multiplier(run: Expansion, statement: Statement, subcircuit: Subcircui
     for item in statement.items:
         if isinstance(item, Assignment) and item.name.text.lower() == "m" and "m" not in declared:
             ignored(run, statement, item)
-
-
-def _check_expanded_size(netlist: Netlist) -> None:
-    """Refuse a netlist that must grow past the limit, before anything is built.
-
-    Counts elements and calls of every subcircuit once; what stands inside conditionals is left
-    to the running count.
-    """
-    sizes: dict[int, int] = {}
-
-    def size(
-        statements: Sequence[Statement],
-        known: dict[str, Subcircuit],
-        subcircuits: tuple[Subcircuit, ...],
-        depth: int,
-    ) -> int:
-        if subcircuits:
-            # Reversed, since of two with one name the first counts.
-            known = known | {entry.name.text.lower(): entry for entry in reversed(subcircuits)}
-        total, level = 0, 0
-        for statement in statements:
-            first = statement.name.text[0]
-            if first == ".":
-                level += (statement.keyword == ".if") - (statement.keyword == ".endif")
-            elif level == 0:
-                total += 1
-                if first in "xX":
-                    words = [item for item in statement.items if isinstance(item, Word)]
-                    called = known.get(words[-1].text.lower()) if words else None
-                    if called is not None and depth < MAXIMUM_DEPTH:
-                        if id(called) not in sizes:
-                            sizes[id(called)] = size(
-                                called.statements, known, called.subcircuits, depth + 1
-                            )
-                        total += sizes[id(called)]
-                if total > MAXIMUM_ELEMENTS:
-                    raise too_large(statement.span())
-        return total
-
-    size(netlist.statements, {}, netlist.subcircuits, 0)
 
 
 _BUILDERS: dict[str, Builder] = {

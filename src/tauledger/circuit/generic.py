@@ -8,11 +8,11 @@ with a warning, so that no figure made with it can pass for that of the real par
 from __future__ import annotations
 
 import re
-from collections.abc import Callable, Mapping
-from dataclasses import dataclass
+from collections.abc import Mapping
 from types import MappingProxyType
 
 from tauledger.circuit.elements import Model
+from tauledger.circuit.expansion import Substitute
 from tauledger.netlist.statements import Statement, Word
 from tauledger.problems import Problem, Severity, SourceSpan
 
@@ -54,33 +54,24 @@ _FAMILIES = {
     "pmos": r"bs250|bss84",
 }
 """Type → common type numbers of that polarity [M: from memory]."""
-_FAMILY_PATTERNS = {kind: re.compile(pattern) for kind, pattern in _FAMILIES.items()}
 
 
-@dataclass(frozen=True, slots=True)
-class Replacement:
-    """What stands in for a missing model: the model, the warning; or None and the refusal."""
-
-    model: Model | None
-    problem: Problem
-
-
-def generic_models(kinds: Mapping[str, str]) -> Callable[[Word, Statement], Replacement]:
+def generic_models(kinds: Mapping[str, str]) -> Substitute:
     """How to replace a model: from the word that names it and the element's statement.
 
     ``kinds`` says the type of models (lower-case names) whose own name does not.
     """
 
-    def replace(word: Word, statement: Statement) -> Replacement:
+    def replace(word: Word, statement: Statement) -> tuple[Model | None, Problem]:
         letter = statement.name.text[0].lower()
         kind = kinds.get(word.text.lower()) or _kind_of(letter, word.text.lower())
         if not kind:
-            return Replacement(None, _refusal(word, statement, _KINDS[letter]))
+            return None, _refusal(word, statement, _KINDS[letter])
         if letter == "m" and statement.items.index(word) == 3:
             kind = {"nmos": "vdmosn", "pmos": "vdmosp"}.get(kind, kind)
         span = statement.span(word)
         model = Model(_name(kind), kind, CARDS[kind], span)
-        return Replacement(model, _warning(word, statement, model, span))
+        return model, _warning(word, statement, model, span)
 
     return replace
 
@@ -90,7 +81,7 @@ def _kind_of(letter: str, name: str) -> str:
     if len(kinds) == 1:
         return kinds[0]
     for kind in kinds:
-        if kind in name or _FAMILY_PATTERNS[kind].match(name):
+        if kind in name or re.match(_FAMILIES[kind], name):
             return kind
     return ""
 

@@ -44,12 +44,12 @@ def need_model(run: Expansion, scope: Scope, word: Word, statement: Statement) -
         )
     near = run.near_names(word.text, scope.models)
     if run.substitute is not None:
-        found = run.substitute(word, statement)
-        explained = replace(found.problem, message=found.problem.message + near)
-        if found.model is None:
+        model, found = run.substitute(word, statement)
+        explained = replace(found, message=found.message + near)
+        if model is None:
             raise ProblemError(explained)
         run.report([explained])
-        return found.model
+        return model
     raise fault(
         "model-missing",
         f"{statement.name.text}: no model {word.text!r}{near}",

@@ -1,32 +1,5 @@
 """``tauledger.toml``: what the schematic leaves out, and what the amplifier must do.
 
-The values stand here; ``reading`` makes them from a file, ``choice`` finds those for a netlist.
+``settings`` holds the values, ``reading`` makes them from a file, ``choice`` finds those for a
+netlist. Nothing is imported here: most netlists come without a configuration, and pay nothing.
 """
-
-from tauledger.configuration.settings import (
-    CapacitorClass,
-    Configuration,
-    Dominance,
-    GenericModels,
-    Input,
-    Limit,
-    ModelFile,
-    Output,
-    PathSettings,
-    Quantity,
-    Supply,
-)
-
-__all__ = [
-    "CapacitorClass",
-    "Configuration",
-    "Dominance",
-    "GenericModels",
-    "Input",
-    "Limit",
-    "ModelFile",
-    "Output",
-    "PathSettings",
-    "Quantity",
-    "Supply",
-]

@@ -4,11 +4,14 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from pathlib import Path
+from typing import TYPE_CHECKING
 
 from tauledger.configuration.codes import problem
 from tauledger.configuration.files import find_configuration, is_match
-from tauledger.configuration.settings import Configuration, PathSettings
 from tauledger.problems import ProblemError
+
+if TYPE_CHECKING:
+    from tauledger.configuration.settings import Configuration, PathSettings
 
 
 def find_settings(

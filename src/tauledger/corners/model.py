@@ -36,18 +36,25 @@ class Corner:
     """By the sum of time constants."""
     exact_hz: float | None
     set_by: tuple[str, ...]
+    """The part that moves the exact corner most; several when they tie."""
     poles_hz: tuple[complex, ...]
     zeros_hz: tuple[complex, ...]
     notes: tuple[str, ...]
     model: EndModel | None
     """The parts that count at this end."""
-
-    @property
-    def estimate_error(self) -> float | None:
-        """estimate/exact − 1."""
-        if self.estimate_hz is None or self.exact_hz is None:
-            return None
-        return self.estimate_hz / self.exact_hz - 1.0
+    improved_hz: float | None = None
+    """The best estimate whose conditions hold, and its name."""
+    improved_method: str = ""
+    lowest_hz: float | None = None
+    highest_hz: float | None = None
+    """Rigorous bounds of this end alone, where they hold."""
+    movers: tuple[tuple[str, float], ...] = ()
+    """Every part that moves the exact corner: name and d ln(corner)/d ln(value), strongest
+    first."""
+    changes: tuple[str, ...] = ()
+    """What doubling or halving the leading parts does."""
+    timing: tuple[str, ...] = ()
+    """Rise time, droop, settling, each with its condition."""
 
 
 @dataclass(frozen=True, slots=True)

@@ -7,6 +7,9 @@ from tauledger.devices.diode import DIODE
 from tauledger.devices.interface import AnyDevice
 from tauledger.devices.jfet import JFET
 from tauledger.devices.mosfet import MOSFET1
+from tauledger.devices.mosfet2 import MOSFET2
+from tauledger.devices.mosfet3 import MOSFET3
+from tauledger.devices.vdmos import VDMOS
 
 __all__ = ["device_for"]
 
@@ -19,6 +22,12 @@ _BY_KIND: dict[tuple[str, int], AnyDevice] = {
     ("pjf", 1): JFET,
     ("nmos", 1): MOSFET1,
     ("pmos", 1): MOSFET1,
+    ("nmos", 2): MOSFET2,
+    ("pmos", 2): MOSFET2,
+    ("nmos", 3): MOSFET3,
+    ("pmos", 3): MOSFET3,
+    ("vdmosn", 1): VDMOS,
+    ("vdmosp", 1): VDMOS,
 }
 
 

@@ -8,6 +8,9 @@ With B = 1 this is Shichman and Hodges' square law. For VDS < 0 drain and source
 parts. Two junctions, gate to source and gate to drain, carry a diode current and a depletion
 charge of grading ½.
 
+XTI is 0 unless stated and there is no emission coefficient, as in ngspice 39 (which ignores N).
+GM and GDS are the slopes of the drain current to VGS and VDS; with VDS < 0 gm is negative.
+
 Source: the level-1 JFET of SPICE (common practice); agrees with ngspice 39 in
 tests/devices/test_jfet.py [P: its output].
 """

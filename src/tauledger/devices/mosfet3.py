@@ -66,7 +66,7 @@ class SemiEmpiricalMosfet(Mosfet[SemiEmpiricalLaw]):
 
     name = "mosfet3"
     default_oxide_m = _DEFAULT_OXIDE_M
-    intrinsic_follows_nominal = True
+    semi_empirical = True
     leakage_tail = True
 
     def law(

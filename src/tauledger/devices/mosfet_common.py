@@ -122,7 +122,7 @@ class Mosfet(Device[MosfetParameters[L]]):
     }
     default_oxide_m = 0.0
     side_grading = 0.33
-    intrinsic_follows_nominal = False
+    semi_empirical = False
     leakage_tail = False
     """Whether the bulk junctions' reverse current creeps up to IS as a diode's does in SPICE."""
 
@@ -142,7 +142,7 @@ class Mosfet(Device[MosfetParameters[L]]):
             temperature_c,
             nominal_temperature_c,
             default_oxide_m=self.default_oxide_m,
-            intrinsic_follows_nominal=self.intrinsic_follows_nominal,
+            semi_empirical=self.semi_empirical,
         )
         around = surroundings(
             cards,

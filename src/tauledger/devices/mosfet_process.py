@@ -53,7 +53,7 @@ class Process:
     multiplier: FloatArray
     width_m: FloatArray
     length_m: FloatArray
-    """Channel length less twice the lateral diffusion."""
+    """Electrical size: drawn length less twice the lateral diffusion."""
     oxide_f_per_m2: FloatArray
     substrate_per_m3: FloatArray
     """NSUB, zero where the card gives none (or less than silicon has by itself)."""
@@ -113,12 +113,13 @@ def process(
     nominal_temperature_c: Value,
     *,
     default_oxide_m: float = 0.0,
-    intrinsic_follows_nominal: bool = False,
+    semi_empirical: bool = False,
 ) -> Process:
     """Channel constants of every card.
 
     ``default_oxide_m`` is TOX where a card gives none; 0 leaves the oxide out, as level 1 does.
-    ``intrinsic_follows_nominal`` lets the intrinsic density follow TNOM, as level 3 does.
+    ``semi_empirical`` adds what only level 3 knows: the intrinsic density follows TNOM, XL, XW and
+    WD correct the drawn size, DELVTO shifts the threshold.
     """
     kelvin, nominal = temperatures(cards, temperature_c, nominal_temperature_c)
     sign = np.array([[-1.0 if card.kind == "pmos" else 1.0 for card in cards]])
@@ -129,9 +130,16 @@ def process(
         given(cards, "kp") | (oxide == 0.0), stack(cards, "kp", 2e-5), mobility * oxide
     )
     substrate = np.where(oxide > 0.0, stack(cards, "nsub", 0.0) * 1e6, 0.0)
-    intrinsic = _INTRINSIC_PER_M3 * (_intrinsic_growth(nominal) if intrinsic_follows_nominal else 1)
+    intrinsic = _INTRINSIC_PER_M3 * (_intrinsic_growth(nominal) if semi_empirical else 1)
     substrate = np.where(substrate > intrinsic, substrate, 0.0)
     gamma, phi, threshold = _substrate(cards, sign, nominal, oxide, substrate, intrinsic)
+
+    width = stack(cards, "w", _DEFAULT_SIZE_M, instance=True)
+    length = stack(cards, "l", _DEFAULT_SIZE_M, instance=True) - 2.0 * stack(cards, "ld", 0.0)
+    if semi_empirical:
+        width = width + stack(cards, "xw", 0.0) - 2.0 * stack(cards, "wd", 0.0)
+        length = length + stack(cards, "xl", 0.0)
+        threshold = threshold + sign * first_given(cards, ("delvto", "delvt0"), 0.0)
 
     half = np.full_like(phi, 0.5)
     phi_now = depletion_at(0.0 * phi, phi, half, half, kelvin, nominal).potential_v
@@ -142,8 +150,8 @@ def process(
         sign=sign,
         kelvin=kelvin,
         multiplier=stack(cards, "m", 1.0, instance=True),
-        width_m=stack(cards, "w", _DEFAULT_SIZE_M, instance=True),
-        length_m=stack(cards, "l", _DEFAULT_SIZE_M, instance=True) - 2.0 * stack(cards, "ld", 0.0),
+        width_m=width,
+        length_m=length,
         oxide_f_per_m2=oxide,
         substrate_per_m3=substrate,
         transconductance=transconductance * slowing,

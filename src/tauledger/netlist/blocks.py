@@ -23,6 +23,8 @@ class Subcircuit:
     parameters: tuple[Assignment, ...]
     statements: tuple[Statement, ...]
     subcircuits: tuple[Subcircuit, ...]
+    closing: Statement | None
+    """Its ``.ends``, when there is one."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -70,7 +72,7 @@ def build_netlist(
             stack.append(_Open(statement))
         elif keyword in (".ends", ".eom"):
             if len(stack) > 1:
-                _close(stack, problems)
+                _close(stack, statement, problems)
             else:
                 problems.append(_unmatched(statement))
         else:
@@ -86,7 +88,7 @@ def build_netlist(
                 "Add .ends after its last line.",
             )
         )
-        _close(stack, problems)
+        _close(stack, None, problems)
     top = stack[0]
     body, inner = tuple(top.statements), tuple(top.subcircuits)
     if not any(statement.name.text[0] != "." for statement in body):
@@ -124,7 +126,7 @@ def _unmatched(statement: Statement) -> Problem:
     )
 
 
-def _close(stack: list[_Open], problems: list[Problem]) -> None:
+def _close(stack: list[_Open], closing: Statement | None, problems: list[Problem]) -> None:
     block = stack.pop()
     header = block.header
     assert header is not None
@@ -163,5 +165,6 @@ def _close(stack: list[_Open], problems: list[Problem]) -> None:
             tuple(parameters),
             tuple(block.statements),
             tuple(block.subcircuits),
+            closing,
         )
     )

@@ -21,10 +21,11 @@ if TYPE_CHECKING:
 MAXIMUM_NESTING = 40
 """Of parentheses in one statement."""
 
-# A line without any of the grammar's punctuation is words alone and needs no parser.
-_PUNCTUATION = re.compile(r"[=(){}'\"]")
-_FIRST_WORD = re.compile(r"[\s,]*([^\s,=(){}'\"]+)")
-_PLAIN_WORD = re.compile(r"[^\s,]+")
+# Most lines hold words alone and need no parser: blanks, and what the grammar's WORD consists of.
+# With them split here, 50,000 plain elements read four times faster (tests/benchmarks/reader.py).
+_PLAIN_LINE = re.compile(r"(?:[^=(){}'\"]++|(?<=[-/])\([^\s,=(){}'\"]*+\))*+")
+_WORD = re.compile(r"(?:[^\s,=(){}'\"]|(?<=[-/])\([^\s,=(){}'\"]*+\))++")
+_FIRST_WORD = re.compile(rf"[\s,]*({_WORD.pattern})")
 _DEFINITIONS = frozenset({".param", ".params", ".parameters", ".csparam"})
 _RAW = frozenset(
     (
@@ -166,8 +167,8 @@ def parse_statement(line: LogicalLine, problems: list[Problem]) -> Statement:
     if keyword in _RAW:
         return Statement(name, (), line)
     rule = _start_rule(keyword)
-    if rule == "items" and not _PUNCTUATION.search(text):
-        matches = _PLAIN_WORD.finditer(text, name.end)
+    if rule == "items" and _PLAIN_LINE.fullmatch(text):
+        matches = _WORD.finditer(text, name.end)
         return Statement(name, tuple([Word(match[0], match.start()) for match in matches]), line)
     if text.count("(") > MAXIMUM_NESTING:
         _check_nesting(line)
@@ -244,7 +245,7 @@ _SYNTAX_MESSAGES = (
     (
         lambda text, at, found, rule: rule == "behavioural",
         "expected a B source of the form: Bname node node V=expression, or I=expression",
-        "Write the output as V= or I= after the two nodes.",
+        "Write the output as V= or I= after the two nodes; a battery is a V element.",
     ),
     (
         lambda text, at, found, rule: rule == "definitions",

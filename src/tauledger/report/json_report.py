@@ -13,6 +13,7 @@ import json
 import math
 from typing import TYPE_CHECKING
 
+from tauledger.review.changes import Comparison
 from tauledger.review.rows import Review
 
 if TYPE_CHECKING:
@@ -25,18 +26,18 @@ _DIGITS = 10
 Json = dict[str, "Json"] | list["Json"] | str | float | int | bool | None
 
 
-def json_report(review: Review) -> str:
-    """The review as indented ASCII JSON, ended by a line feed."""
-    document: dict[str, Json] = {"format": FORMAT, **_fields(review)}
+def json_report(review: Review | Comparison) -> str:
+    """The review, or a comparison alone, as indented ASCII JSON, ended by a line feed."""
+    document: dict[str, Json] = {"format": FORMAT, **json_fields(review)}
     return json.dumps(document, indent=2, sort_keys=True, allow_nan=False) + "\n"
 
 
-def _fields(value: DataclassInstance) -> dict[str, Json]:
+def json_fields(value: DataclassInstance) -> dict[str, Json]:
+    """A row's fields in JSON's terms; raises TypeError for what a row must not hold."""
     return {field.name: _plain(getattr(value, field.name)) for field in dataclasses.fields(value)}
 
 
 def _plain(value: object) -> Json:
-    """The value in JSON's terms; raises TypeError for what a row must not hold."""
     match value:
         case None | bool():
             return value
@@ -54,7 +55,7 @@ def _plain(value: object) -> Json:
         case tuple() | list():
             return [_plain(item) for item in value]
         case _ if dataclasses.is_dataclass(value) and not isinstance(value, type):
-            return _fields(value)
+            return json_fields(value)
     raise TypeError(f"a report row holds a {type(value).__name__}")
 
 

@@ -44,6 +44,7 @@ def _columns(page: Page) -> tuple[Column, ...]:
         Column(page.spell("τ"), right=True),
         Column("corner", right=True),
         Column("share", right=True),
+        Column("exact", right=True),
         Column("", style="bar"),
     )
 
@@ -65,6 +66,7 @@ def _row(page: Page, row: TimeConstantRow, corner: CornerRow | None) -> Row:
         page.quantity(row.tau_s, "s"),
         page.quantity(row.corner_hz, "Hz"),
         page.percent(row.share),
+        page.percent(None if row.exact_move is None else -row.exact_move),
         page.bar(row.share),
     )
     detail = _detail(page, row, corner)
@@ -108,6 +110,7 @@ def _conclusion(page: Page, corner: CornerRow) -> list[Line]:
         lines.append((Piece(f" no {corner.end} corner"),))
     else:
         lines.append(_sum_line(page, corner))
+        lines += _better(page, corner)
     for label, roots in (("poles", corner.poles_hz), ("zeros", corner.zeros_hz)):
         if roots:
             first = f" {label}  "
@@ -116,9 +119,27 @@ def _conclusion(page: Page, corner: CornerRow) -> list[Line]:
         lines.append(
             (Piece(" a pole with a positive real part: the circuit is not stable", "alarm"),)
         )
-    for note in corner.notes:
+    for note in (*corner.notes, *corner.changes, *corner.timing):
         lines += paragraph(page.text(note), page.width, "   ", " - ")
     return lines
+
+
+def _better(page: Page, corner: CornerRow) -> list[Line]:
+    """The improved estimate with the name of its method, and the bounds that hold."""
+    text = ""
+    if corner.improved_hz is not None and corner.improved_hz != corner.estimate_hz:
+        text = (
+            f"better estimate {page.quantity(corner.improved_hz, 'Hz')} by "
+            f"{page.text(corner.improved_method)}"
+        )
+        if corner.improved_error is not None:
+            text += f" ({page.signed_percent(corner.improved_error)})"
+    low, high = corner.lowest_hz, corner.highest_hz
+    if low is not None or high is not None:
+        words = [f"above {page.quantity(low, 'Hz')}"] if low is not None else []
+        words += [f"below {page.quantity(high, 'Hz')}"] if high is not None else []
+        text += ("; " if text else "") + "real poles put it " + " and ".join(words)
+    return paragraph(text, page.width, "   ", " ") if text else []
 
 
 def _sum_line(page: Page, corner: CornerRow) -> Line:

@@ -6,6 +6,7 @@ from collections import Counter
 from collections.abc import Iterable
 
 from tauledger.problems import Problem, Severity
+from tauledger.report.changes import comparison_section
 from tauledger.report.comparison import comparison
 from tauledger.report.layout import (
     BLANK,
@@ -46,6 +47,7 @@ def report_lines(page: Page, review: Review) -> list[Line]:
     lines = _title(page, review)
     for path in review.paths:
         lines += _verdict(page, path)
+    lines += comparison_section(page, review.comparison)
     for path in review.paths:
         lines += _path_sections(page, path, named=len(review.paths) > 1)
     lines += _transistors(page, review.transistors)
@@ -148,15 +150,15 @@ def _path_sections(page: Page, path: PathRow, named: bool) -> list[Line]:
     if named:
         route = f"{page.name(path.input)} {page.spell('→')} {page.name(path.output)}"
         lines += [(Piece(route, "title"),), BLANK]
-    lines += _stages(page, path.stages)
+    lines += _stages(page, path)
     lines += end_ledger(page, path, "low")
     lines += end_ledger(page, path, "high")
     lines += _uncounted(page, path.time_constants)
     return lines + comparison(page, path.simulated)
 
 
-def _stages(page: Page, stages: tuple[StageRow, ...]) -> list[Line]:
-    if not stages:
+def _stages(page: Page, path: PathRow) -> list[Line]:
+    if not path.stages:
         return []
     columns = (
         Column("stage", right=True),
@@ -168,8 +170,24 @@ def _stages(page: Page, stages: tuple[StageRow, ...]) -> list[Line]:
         Column("input R", right=True),
         Column("output R", right=True),
     )
-    rows = [_stage_row(page, stage) for stage in stages]
-    return [page.heading("Stages at midband, loaded"), *table(columns, rows, page.width), BLANK]
+    rows = [_stage_row(page, stage) for stage in path.stages]
+    lines = [page.heading("Stages at midband, loaded"), *table(columns, rows, page.width)]
+    return [*lines, *_by_inspection(page, path), BLANK]
+
+
+def _by_inspection(page: Page, path: PathRow) -> list[Line]:
+    """The gain a hand analysis finds, beside the exact one."""
+    if path.gain_by_inspection is None or path.gain is None:
+        return []
+    text = (
+        f"gain with large capacitors short and small ones open "
+        f"{page.quantity(path.gain_by_inspection, path.gain_unit)}, "
+        f"exact {page.quantity(path.gain, path.gain_unit)}"
+    )
+    if path.gain_by_formulas is not None:
+        product = page.quantity(path.gain_by_formulas, path.gain_unit)
+        text = f"product of the formulas {product}; {text}"
+    return [BLANK, *paragraph(text, page.width, " ", " ")]
 
 
 def _stage_row(page: Page, stage: StageRow) -> Row:
@@ -183,7 +201,8 @@ def _stage_row(page: Page, stage: StageRow) -> Row:
             page.quantity(stage.gain, ""),
             page.quantity(stage.input_resistance_ohm, "Ω"),
             page.quantity(stage.output_resistance_ohm, "Ω"),
-        )
+        ),
+        (page.text(stage.formula),) if stage.formula else (),
     )
 
 

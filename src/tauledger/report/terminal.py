@@ -8,7 +8,7 @@ from __future__ import annotations
 
 import os
 import shutil
-from collections.abc import Iterable
+from collections.abc import Callable, Iterable, Sequence
 from typing import TextIO
 
 from tauledger.report.alphabet import alphabet
@@ -39,7 +39,12 @@ def text_report(review: Review, width: int = WIDTH, encoding: str | None = "utf-
 
 
 def write_text_report(review: Review, stream: TextIO) -> None:
-    """Write the report to the stream, coloured when it is a terminal that wants colour.
+    """Write the report to the stream; as :func:`write_page`."""
+    write_page(lambda page: report_lines(page, review), stream)
+
+
+def write_page(draw: Callable[[Page], Sequence[Line]], stream: TextIO) -> None:
+    """Write a page to the stream, coloured when it is a terminal that wants colour.
 
     Raises OSError when the stream cannot be written, BrokenPipeError among them.
     """
@@ -47,11 +52,11 @@ def write_text_report(review: Review, stream: TextIO) -> None:
     if stream.isatty():
         columns = shutil.get_terminal_size((WIDTH, 24)).columns
         width = min(WIDTH, max(columns, _NARROWEST))
+    lines = draw(Page(width, alphabet(stream.encoding)))
     if _wants_colour(stream):
-        page = Page(width, alphabet(stream.encoding))
-        _write_coloured(report_lines(page, review), stream)
+        _write_coloured(lines, stream)
     else:
-        stream.write(text_report(review, width, stream.encoding))
+        stream.write(plain(lines).replace(BOUND, " "))
 
 
 def _wants_colour(stream: TextIO) -> bool:

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Iterable, Mapping
+from collections.abc import Iterable, Mapping, Sequence
 
 import numpy as np
 
@@ -18,18 +18,19 @@ from tauledger.circuit.elements import (
     SemiconductorDevice,
     VoltageSource,
 )
-from tauledger.corners import Corner, Corners, PartAccount
+from tauledger.corners import Corner, Corners, HandExpression, PartAccount, StageFormula
 from tauledger.review.rows import (
     CornerRow,
     NamedValue,
     NodeRow,
     PathRow,
+    ResponsePoint,
     Review,
     StageRow,
     TimeConstantRow,
     TransistorRow,
 )
-from tauledger.smallsignal import DeviceAdmittance, LinearNetwork
+from tauledger.smallsignal import DeviceAdmittance, LinearNetwork, Response
 from tauledger.topology.model import SignalPath, StageOutline, Topology
 
 _BIPOLAR_FIGURES = (
@@ -49,6 +50,9 @@ _FET_FIGURES = (
     ("Cgd", "c_gd", "F"),
     ("fT", "f_t", "Hz"),
 )
+_BEYOND = 10.0
+"""How far the response is shown beyond its corners."""
+_MOST_POINTS = 40
 _TYPES = {
     "npn": "NPN",
     "pnp": "PNP",
@@ -69,9 +73,13 @@ def path_row(
     admittances: Mapping[str, DeviceAdmittance],
     topology: Topology,
     corners: Corners,
+    exact: Response,
+    expressions: Mapping[str, HandExpression],
+    formulas: Sequence[StageFormula],
 ) -> PathRow:
     """One signal path with its stages, time constants and corners."""
     path = topology.path
+    moves = {corner.end: dict(corner.movers) for corner in (corners.low, corners.high)}
     gain = math.copysign(corners.exact_gain, corners.gain) if corners.exact_gain > 0 else None
     output = path.output_node
     if path.output_reference != "0":
@@ -92,16 +100,20 @@ def path_row(
                 network,
                 corners,
                 _entry_resistance(stage, network, admittances, topology, corners),
+                formula,
             )
-            for i, stage in enumerate(topology.stages)
+            for i, (stage, formula) in enumerate(zip(topology.stages, formulas, strict=True))
         ),
         time_constants=tuple(
-            _time_constant_row(account, point, network, topology) for account in corners.accounts
+            _time_constant_row(account, point, network, topology, moves, expressions)
+            for account in corners.accounts
         ),
         low=_corner_row(corners.low),
         high=_corner_row(corners.high),
         notes=(*corners.notes, *topology.notes),
+        gain_by_formulas=_product(network, corners, topology.stages, formulas),
         gain_by_inspection=corners.gain if corners.midband is not None else None,
+        response=_response_points(corners, exact),
     )
 
 
@@ -186,6 +198,7 @@ def _stage_row(
     network: LinearNetwork,
     corners: Corners,
     entry_resistance_ohm: float | None,
+    formula: StageFormula,
 ) -> StageRow:
     entry = _signal(network, corners, stage.input_node)
     leaving = _signal(network, corners, stage.output_node)
@@ -202,7 +215,27 @@ def _stage_row(
         gain=gain,
         input_resistance_ohm=entry_resistance_ohm,
         output_resistance_ohm=resistance,
+        formula=formula.text,
+        formula_value=formula.value,
+        formula_reason=formula.reason,
     )
+
+
+def _product(
+    network: LinearNetwork,
+    corners: Corners,
+    stages: Sequence[StageOutline],
+    formulas: Sequence[StageFormula],
+) -> float | None:
+    values = [formula.value for formula in formulas if formula.value is not None]
+    if not stages or len(values) < len(stages):
+        return None
+    entry = _signal(network, corners, stages[0].input_node)
+    leaving = _signal(network, corners, stages[-1].output_node)
+    if not entry or not leaving:
+        return None
+    # The divisions before the first stage and behind the last come from the network.
+    return entry * math.prod(values) * corners.gain / leaving
 
 
 def _entry_resistance(
@@ -278,11 +311,17 @@ def _output_resistance(
 
 
 def _time_constant_row(
-    account: PartAccount, point: OperatingPoint, network: LinearNetwork, topology: Topology
+    account: PartAccount,
+    point: OperatingPoint,
+    network: LinearNetwork,
+    topology: Topology,
+    moves: Mapping[str, Mapping[str, float]],
+    expressions: Mapping[str, HandExpression],
 ) -> TimeConstantRow:
     part = account.part
     nodes = (_node_name(network, part.positive), _node_name(network, part.negative))
     role = topology.capacitors.get(part.name)
+    hand = expressions.get(part.name)
     on_board = not part.device and not part.is_inductor
     return TimeConstantRow(
         name=part.name,
@@ -298,6 +337,10 @@ def _time_constant_row(
         zero_hz=account.zero_hz,
         dc_voltage_v=point.voltage(nodes[0]) - point.voltage(nodes[1]) if on_board else None,
         reason=account.reason,
+        expression=hand.text if hand else "",
+        expression_deviation=hand.deviation if hand else None,
+        expression_reason=hand.reason if hand else "",
+        exact_move=moves[account.end].get(part.name, 0.0) if account.end in moves else None,
     )
 
 
@@ -310,9 +353,33 @@ def _corner_row(corner: Corner) -> CornerRow:
         end=corner.end,
         estimate_hz=corner.estimate_hz,
         exact_hz=corner.exact_hz,
-        estimate_error=corner.estimate_error,
+        estimate_error=_relative(corner.estimate_hz, corner.exact_hz),
         set_by=corner.set_by,
         poles_hz=corner.poles_hz,
         zeros_hz=corner.zeros_hz,
         notes=corner.notes,
+        improved_hz=corner.improved_hz,
+        improved_method=corner.improved_method,
+        improved_error=_relative(corner.improved_hz, corner.exact_hz),
+        lowest_hz=corner.lowest_hz,
+        highest_hz=corner.highest_hz,
+        changes=corner.changes,
+        timing=corner.timing,
     )
+
+
+def _response_points(corners: Corners, exact: Response) -> tuple[ResponsePoint, ...]:
+    """The band and what lies beyond its corners, in 25 to 40 equal steps of log frequency."""
+    low, high = corners.low.exact_hz, corners.high.exact_hz
+    first = math.floor(math.log10((low or corners.midband_hz / 100.0) / _BEYOND))
+    last = math.ceil(math.log10((high or corners.midband_hz * 100.0) * _BEYOND))
+    # Steps a decade that start each decade afresh; a band of 40 decades has fewer than one.
+    steps = next((n for n in (10, 8, 6, 5, 4, 3, 2) if n * (last - first) <= _MOST_POINTS), 1)
+    count = min(steps * (last - first), _MOST_POINTS) + 1
+    frequency = np.logspace(first, last, count)
+    gains = np.abs(exact.at(frequency))
+    return tuple(map(ResponsePoint, frequency.tolist(), gains.tolist()))
+
+
+def _relative(value: float | None, reference: float | None) -> float | None:
+    return value / reference - 1.0 if value is not None and reference is not None else None

@@ -7,7 +7,13 @@ import math
 from collections.abc import Iterable, Iterator
 from dataclasses import dataclass
 
-from tauledger.configuration import CapacitorClass, Dominance, Limit, PathSettings, Quantity
+from tauledger.configuration.settings import (
+    CapacitorClass,
+    Dominance,
+    Limit,
+    PathSettings,
+    Quantity,
+)
 from tauledger.problems import Problem, Severity, SourceSpan
 from tauledger.quantity import format_quantity
 from tauledger.review.rows import CornerRow, PathRow, Review, TimeConstantRow, TransistorRow
@@ -118,9 +124,8 @@ def _corner_figure(row: CornerRow | None, reaches_dc: bool, reason: str) -> _Fig
     if row.exact_hz is None:
         values = {"Hz": 0.0} if reaches_dc else {}
         return _Figure(name, values, part, "; ".join(row.notes) or reason)
-    direction = "lowers" if row.end == "low" else "raises"
-    change = "more" if row.end == "low" else "less"
-    advice = f"What {direction} it most is {change} time constant at {part}." if part else ""
+    change, effect = ("longer", "lowers") if row.end == "low" else ("shorter", "raises")
+    advice = f"A {change} time constant at {part} {effect} it most." if part else ""
     return _Figure(name, {"Hz": row.exact_hz}, part, advice=advice)
 
 

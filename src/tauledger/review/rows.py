@@ -9,6 +9,7 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 from tauledger.problems import Problem
+from tauledger.review.changes import Comparison
 
 
 @dataclass(frozen=True, slots=True)
@@ -53,7 +54,14 @@ class StageRow:
     gain: float | None
     """Loaded voltage gain from input_node to output_node at midband, signed, V/V."""
     input_resistance_ohm: float | None
+    """Looking into the terminal that the signal enters."""
     output_resistance_ohm: float | None
+    """At the output node, with everything attached to it."""
+    formula: str = ""
+    """Its gain by inspection, in symbols and with numbers put in; empty when no rule holds."""
+    formula_value: float | None = None
+    formula_reason: str = ""
+    """Why there is no formula."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -81,7 +89,13 @@ class TimeConstantRow:
     reason: str
     """Why it stands at this end, with the figures compared."""
     expression: str = ""
+    """The resistance it sees in symbols, as a hand analysis writes it; empty when none holds."""
     expression_deviation: float | None = None
+    """Value of the expression over resistance_ohm, minus one."""
+    expression_reason: str = ""
+    """Why there is no expression, where one was looked for."""
+    exact_move: float | None = None
+    """d ln(exact corner of its end) / d ln(value); −1 for the only capacitor of a corner."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -100,6 +114,18 @@ class CornerRow:
     """Poles of this end, in Hz, slowest first; negative real part is stable."""
     zeros_hz: tuple[complex, ...]
     notes: tuple[str, ...]
+    improved_hz: float | None = None
+    """By the best estimate whose conditions hold."""
+    improved_method: str = ""
+    improved_error: float | None = None
+    """improved/exact − 1."""
+    lowest_hz: float | None = None
+    highest_hz: float | None = None
+    """Rigorous bounds of this end alone, where they hold."""
+    changes: tuple[str, ...] = ()
+    """What doubling or halving the leading parts does to the corner."""
+    timing: tuple[str, ...] = ()
+    """Rise time, droop and settling, each with its condition."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -128,6 +154,15 @@ class SimulatedRow:
 
 
 @dataclass(frozen=True, slots=True)
+class ResponsePoint:
+    """One point of the exact response."""
+
+    frequency_hz: float
+    gain: float
+    """Magnitude, in the path's ``gain_unit``."""
+
+
+@dataclass(frozen=True, slots=True)
 class PathRow:
     """One signal path: input source to output node."""
 
@@ -146,10 +181,14 @@ class PathRow:
     low: CornerRow | None
     high: CornerRow | None
     notes: tuple[str, ...]
+    gain_by_formulas: float | None = None
+    """Product of the stages' formulas with the division at the input; None unless all hold."""
     gain_by_inspection: float | None = None
     """Signed gain with low-end parts short and high-end parts open, as a hand analysis has it."""
     simulated: SimulatedRow | None = None
     """Filled when the user asked for a simulator beside."""
+    response: tuple[ResponsePoint, ...] = ()
+    """The exact response over the band and its edges, in equal steps of log frequency."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -166,3 +205,5 @@ class Review:
     paths: tuple[PathRow, ...]
     problems: tuple[Problem, ...]
     supply_power_w: float | None
+    comparison: Comparison | None = None
+    """Filled when the user asked for the changes since another revision."""

@@ -5,6 +5,7 @@ from tauledger.smallsignal.network import LinearNetwork, ReactivePart
 from tauledger.smallsignal.response import (
     Response,
     drive_vector,
+    edge_sensitivity,
     gain_sensitivity,
     natural_frequencies,
     response,
@@ -19,6 +20,7 @@ __all__ = [
     "Response",
     "device_admittances",
     "drive_vector",
+    "edge_sensitivity",
     "gain_sensitivity",
     "linear_network",
     "natural_frequencies",

@@ -71,10 +71,31 @@ def gain_sensitivity(
     By the adjoint network: dH/dC = −s (senseᵀA⁻¹c)(cᵀA⁻¹drive), c picking the part's voltage;
     for an inductor +s on its branch unknown.
     """
+    return _sensitivities(response, parts, frequency_hz)[0]
+
+
+def edge_sensitivity(
+    response: Response, parts: Sequence[ReactivePart], edge_hz: float, midband_hz: float
+) -> FloatArray:
+    """(K,): d ln(edge) / d ln(value) of each part, for an edge defined relative to midband.
+
+    The edge keeps ln|H(edge)| − ln|H(midband)| constant, so its move is minus the change of
+    that difference over the slope d ln|H|/d ln f at the edge.
+    """
+    at_edge, slope = _sensitivities(response, parts, edge_hz)
+    at_midband, _ = _sensitivities(response, parts, midband_hz)
+    return np.asarray(-(at_edge - at_midband) / slope)
+
+
+def _sensitivities(
+    response: Response, parts: Sequence[ReactivePart], frequency_hz: float
+) -> tuple[FloatArray, float]:
+    """d ln|H| / d ln(value) of each part, and the slope d ln|H| / d ln(frequency)."""
     s = 2j * math.pi * frequency_hz
     matrix = response.conductance + s * response.reactance
-    forward = np.linalg.solve(matrix, response.drive.astype(complex))
-    adjoint = np.linalg.solve(matrix.T, response.sense.astype(complex))
+    inverse: ComplexArray = np.asarray(np.linalg.inv(matrix), dtype=np.complex128)
+    forward: ComplexArray = np.asarray(inverse @ response.drive, dtype=np.complex128)
+    adjoint: ComplexArray = np.asarray(inverse.T @ response.sense, dtype=np.complex128)
     transfer = complex(response.sense @ forward)
     result = np.empty(len(parts))
     for k, part in enumerate(parts):
@@ -83,7 +104,8 @@ def gain_sensitivity(
         else:
             change = -s * _across(forward, part) * _across(adjoint, part)
         result[k] = (change * part.value[0] / transfer).real
-    return result
+    slope = (-s * (adjoint @ response.reactance @ forward) / transfer).real
+    return result, float(slope)
 
 
 def _across(unknowns: ComplexArray, part: ReactivePart) -> complex:

@@ -30,7 +30,7 @@ class DeviceAdmittance:
         rows = [
             i
             for i, name in enumerate(self.terminals)
-            if name.removesuffix("_internal") == terminal and self.unknowns[i] == node
+            if name.partition("_")[0] == terminal and self.unknowns[i] == node
         ]
         return float(sum(self.matrix[i] @ voltages for i in rows))
 

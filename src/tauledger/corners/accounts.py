@@ -1,0 +1,127 @@
+"""One row for each capacitor and inductor: what it sees, its time constant, its share, why."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Iterable, Sequence
+from dataclasses import replace
+
+import numpy as np
+
+from tauledger.corners.effects import Ends, switching_effect
+from tauledger.corners.model import PartAccount
+from tauledger.corners.ports import EndModel
+from tauledger.quantity import format_quantity
+from tauledger.smallsignal.network import FloatArray, ReactivePart
+
+TWO_PI = 2.0 * math.pi
+
+
+def summands(model: EndModel) -> FloatArray:
+    """Summands: 1/τ in rad/s at the low end, τ in s at the high end."""
+    tau = model.tau_s
+    with np.errstate(divide="ignore"):
+        return np.asarray(1.0 / tau if model.low else tau)
+
+
+def total(model: EndModel) -> float:
+    return float(summands(model).sum())
+
+
+def part_accounts(
+    midband_hz: float,
+    ends: Ends,
+    looped: Sequence[ReactivePart],
+    groups: Sequence[tuple[ReactivePart, ...]],
+) -> list[PartAccount]:
+    accounts = []
+    for model in (ends.low, ends.high):
+        whole = total(model)
+        terms = summands(model)
+        end = "low" if model.low else "high"
+        for i in range(len(model.parts)):
+            accounts.append(_account(model, i, end, float(terms[i]) / whole, midband_hz))
+    for label, members in (("in-band", ends.in_band), ("no effect", ends.idle)):
+        for model, i in members:
+            accounts.append(_account(model, i, label, None, midband_hz))
+    loop = "closes a loop of other capacitors that are short at midband: no pole of its own"
+    accounts += [idle_account(part, loop) for part in looped]
+    members_of = {group[0].name: group for group in groups}
+    return [one for a in accounts for one in _split_parallel(a, members_of[a.part.name])]
+
+
+def _split_parallel(account: PartAccount, members: Sequence[ReactivePart]) -> Iterable[PartAccount]:
+    """Give each of several capacitors in parallel a row of its own.
+
+    Open-circuit time constants add, so each has its own; at the low end they act together, and
+    the largest stands for all.
+    """
+    if len(members) == 1:
+        return [account]
+    whole = float(account.part.value[0])
+    additive = account.end == "high"
+    rows = []
+    for i, part in enumerate(members):
+        part_of = float(part.value[0]) / whole
+        others = ", ".join(m.name for m in members if m is not part)
+        rows.append(
+            replace(
+                account,
+                part=part,
+                tau_s=account.tau_s * part_of if additive and account.tau_s else account.tau_s,
+                corner_hz=account.corner_hz / part_of
+                if additive and account.corner_hz and part_of
+                else account.corner_hz,
+                share=account.share * part_of
+                if additive and account.share is not None
+                else (account.share if i == 0 else None),
+                reason=account.reason + (f"; counted together with {others}" if i == 0 else "")
+                if i == 0 or additive
+                else f"in parallel with {members[0].name}, counted there",
+            )
+        )
+    return rows
+
+
+def _account(
+    model: EndModel, i: int, end: str, share: float | None, midband_hz: float
+) -> PartAccount:
+    part = model.parts[i]
+    resistance, tau = float(model.resistance_ohm[i]), float(model.tau_s[i])
+    zero = float(model.own_zero()[i])
+    corner = 1.0 / tau if 0 < tau < math.inf else None
+    finite_zero = corner is not None and 1e-6 * corner < abs(zero) < 1e6 * corner
+    return PartAccount(
+        part=part,
+        end=end,
+        resistance_ohm=resistance,
+        tau_s=tau,
+        corner_hz=corner / TWO_PI if corner is not None else None,
+        share=share,
+        zero_hz=-zero / TWO_PI if finite_zero else None,
+        effect=float(switching_effect(model)[i]),
+        reason=_reason(model, i, end, midband_hz),
+    )
+
+
+def _reason(model: EndModel, i: int, end: str, midband_hz: float) -> str:
+    part = model.parts[i]
+    model_end = "low" if model.low else "high"
+    omega = TWO_PI * midband_hz
+    value = float(part.value[0])
+    reactance = omega * value if part.is_inductor else 1.0 / (omega * value) if value else math.inf
+    seen = float(model.resistance_ohm[i])
+    state = "a short" if model.low != part.is_inductor else "an open circuit"
+    if not part.is_inductor and not model.low and seen < 1e-6 * reactance:
+        return "its two ends are tied together at midband by other parts"
+    text = (
+        f"at midband {format_quantity(midband_hz, 'Hz')} its "
+        f"{format_quantity(reactance, 'Ω')} stands against {format_quantity(seen, 'Ω')}: {state}"
+    )
+    if end != model_end:
+        text += f"; switching it moves the gain by {switching_effect(model)[i] * 100:.1f} %"
+    return text
+
+
+def idle_account(part: ReactivePart, reason: str) -> PartAccount:
+    return PartAccount(part, "no effect", None, None, None, None, None, 0.0, reason)

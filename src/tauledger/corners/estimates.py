@@ -1,0 +1,165 @@
+r"""Estimates of a corner better than the sum, and bounds, from one end's model.
+
+With the high end's denominator 1 + b₁s + b₂s² + … and numerator 1 + a₁s + a₂s² + … (for the low
+end read s as 1/s: the coefficients are then those of the descending powers), b₁ = Σ τ_i⁰ and
+b₂ = Σ τ_i⁰ τ_jⁱ are open-circuit time constants, a₁ and a₂ transfer constants.
+
+* Second order with zeros (references B5): the −3 dB frequency of the fit cut after s², the root
+  x = ω² of 1 + (b₁²−2b₂)x + b₂²x² = 2(1 + (a₁²−2a₂)x + a₂²x²). Exact for two parts.
+* All poles and zeros of the end: where the third-order terms are not small at the corner, the
+  −3 dB frequency of the end's own model of full order.
+* Bounds (references B8), all poles real and no finite zero: with S = Σ1/p²,
+  √(ln 2)/√S ≤ ω_H ≤ 1/√S and ω_H ≥ 1/b₁; low end by ω → 1/ω. Real finite zeros keep only the
+  side of the sum.
+"""
+
+from __future__ import annotations
+
+import math
+from dataclasses import dataclass
+
+import numpy as np
+
+from tauledger.corners.ports import EndModel
+from tauledger.smallsignal.response import ComplexArray
+
+TWO_PI = 2.0 * math.pi
+REAL_TOLERANCE = 1e-6
+GRID_PER_DECADE = 20
+ORDER_TOLERANCE = 0.05
+"""Largest third-order term, relative to the first-order one at the corner, that a second-order
+fit may leave out."""
+
+
+@dataclass(frozen=True, slots=True)
+class Roots:
+    """Poles and zeros of one end in rad/s, worked out once."""
+
+    poles: ComplexArray
+    zeros: ComplexArray
+
+    @classmethod
+    def of(cls, model: EndModel) -> Roots:
+        return cls(model.poles(), model.zeros())
+
+
+@dataclass(frozen=True, slots=True)
+class Estimate:
+    """A corner with the name of the method that gave it."""
+
+    frequency_hz: float
+    method: str
+
+
+@dataclass(frozen=True, slots=True)
+class Bounds:
+    """The corner lies between these; None where no rigorous bound holds on that side."""
+
+    lowest_hz: float | None
+    highest_hz: float | None
+
+
+def best_estimate(model: EndModel, roots: Roots, sum_hz: float) -> Estimate:
+    """The best estimate whose conditions hold; the sum itself where none does better."""
+    denominator = _coefficients(roots.poles, model)
+    numerator = _coefficients(roots.zeros, model)
+    if len(model.parts) == 1 and abs(numerator[0]) < 1e-9 * abs(denominator[0]):
+        return Estimate(sum_hz, "single pole")
+    second = _second_order(denominator, numerator)
+    if second is not None and _higher_terms_small(denominator, numerator, second):
+        return Estimate(_from_normalised(second, model), "second order with zeros")
+    edge = model_edge_hz(roots, low=model.low)
+    if edge is not None:
+        return Estimate(edge, "all poles and zeros of this end")
+    return Estimate(sum_hz, "sum of time constants")
+
+
+def rigorous_bounds(model: EndModel, roots: Roots, sum_hz: float) -> Bounds:
+    """Bounds that follow from real poles alone, see the module's docstring."""
+    poles, zeros = roots.poles, roots.zeros
+    if not poles.size or not _all_real(poles) or np.any(poles.real > 0):
+        return Bounds(None, None)
+    finite = zeros[np.abs(zeros) > 0]
+    if finite.size:
+        side = sum_hz if _all_real(zeros) else None
+        return Bounds(None, side) if model.low else Bounds(side, None)
+    if model.low:
+        root = math.sqrt(float(np.sum(np.abs(poles) ** 2))) / TWO_PI
+        return Bounds(root, min(sum_hz, root / math.sqrt(math.log(2.0))))
+    root = 1.0 / math.sqrt(float(np.sum(1.0 / np.abs(poles) ** 2))) / TWO_PI
+    return Bounds(max(sum_hz, root * math.sqrt(math.log(2.0))), root)
+
+
+def model_edge_hz(roots: Roots, *, low: bool) -> float | None:
+    """−3 dB frequency of the end's own model, every order; None when it does not fall so far.
+
+    The other end is taken at midband, so this differs from the exact corner by the overlap.
+    """
+    sizes = np.abs(np.concatenate([roots.poles, roots.zeros]))
+    sizes = sizes[sizes > 0]
+    if not roots.poles.size or not sizes.size:
+        return None
+    start, stop = math.log10(float(sizes.min())) - 1.5, math.log10(float(sizes.max())) + 1.5
+    span = np.logspace(start, stop, int((stop - start) * GRID_PER_DECADE) + 2)
+    below = np.flatnonzero(_log_gain(span, roots, low=low) < -0.5 * math.log(2.0))
+    if not below.size:
+        return None
+    outer = int(below[-1] if low else below[0])
+    inner = outer + (1 if low else -1)
+    if not 0 <= inner < span.size:
+        return None
+    inside, outside = float(span[inner]), float(span[outer])
+    while abs(outside / inside - 1.0) > 1e-8:
+        middle = math.sqrt(inside * outside)
+        if _log_gain(np.array([middle]), roots, low=low)[0] >= -0.5 * math.log(2.0):
+            inside = middle
+        else:
+            outside = middle
+    return math.sqrt(inside * outside) / TWO_PI
+
+
+def _log_gain(omega: np.ndarray, roots: Roots, *, low: bool) -> np.ndarray:
+    """ln |H/H₀| of the end model on the imaginary axis."""
+    s = 1j * omega[:, None]
+    top = 1.0 - roots.zeros[None, :] / s if low else 1.0 - s / roots.zeros[None, :]
+    bottom = 1.0 - roots.poles[None, :] / s if low else 1.0 - s / roots.poles[None, :]
+    return np.asarray(np.log(np.abs(top)).sum(axis=1) - np.log(np.abs(bottom)).sum(axis=1))
+
+
+def _coefficients(roots: ComplexArray, model: EndModel) -> tuple[float, float, float]:
+    """First three coefficients of ∏(1 − x/r), x = s for the high end and 1/s for the low."""
+    values = -roots if model.low else -1.0 / roots
+    polynomial = np.poly(-values) if values.size else np.ones(1)
+    padded = np.concatenate([np.real(polynomial), np.zeros(3)])
+    return float(padded[1]), float(padded[2]), float(padded[3])
+
+
+def _second_order(
+    denominator: tuple[float, float, float], numerator: tuple[float, float, float]
+) -> float | None:
+    """Normalised corner w (ω, or 1/ω at the low end) of the fit cut after the square."""
+    b1, b2, _ = denominator
+    a1, a2, _ = numerator
+    square = b2 * b2 - 2.0 * a2 * a2
+    linear = (b1 * b1 - 2.0 * b2) - 2.0 * (a1 * a1 - 2.0 * a2)
+    roots = (
+        np.roots([square, linear, -1.0]) if square else np.array([1.0 / linear if linear else 0])
+    )
+    real = [float(r.real) for r in np.atleast_1d(roots) if abs(r.imag) < 1e-9 * abs(r)]
+    positive = [r for r in real if r > 0]
+    return math.sqrt(min(positive)) if positive else None
+
+
+def _higher_terms_small(
+    denominator: tuple[float, float, float], numerator: tuple[float, float, float], w: float
+) -> bool:
+    third = max(abs(denominator[2]), abs(numerator[2])) * w**3
+    return third < ORDER_TOLERANCE * max(1.0, abs(denominator[0]) * w)
+
+
+def _from_normalised(w: float, model: EndModel) -> float:
+    return (1.0 / w if model.low else w) / TWO_PI
+
+
+def _all_real(roots: ComplexArray) -> bool:
+    return bool(np.all(np.abs(roots.imag) <= REAL_TOLERANCE * np.abs(roots)))

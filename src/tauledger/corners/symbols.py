@@ -1,0 +1,139 @@
+"""Resistances in symbols: small trees that know their value and how a hand writes them."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Callable, Sequence
+from dataclasses import dataclass
+
+NEGLIGIBLE = 0.01
+"""A term whose removal changes the value by less is left out."""
+
+_SUM, _PARALLEL, _FACTOR = 1, 2, 3
+"""How tightly each form binds, for parentheses."""
+
+
+@dataclass(frozen=True, slots=True)
+class Term:
+    """``value`` in Ω, ``text`` as written, ``binding`` of its outermost operator."""
+
+    value: float
+    text: str
+    binding: int = _FACTOR
+    where: tuple[str, ...] = ()
+    """Abbreviations the text uses, such as ``R1 = RS‖R2``."""
+
+    def within(self, binding: int) -> str:
+        """The text, in parentheses where it binds more loosely than its surroundings."""
+        return self.text if self.binding >= binding else f"({self.text})"
+
+
+GROUND = Term(0.0, "0")
+OPEN = Term(math.inf, "∞")
+
+
+def symbol(text: str, value: float) -> Term:
+    """A resistance with a name of its own."""
+    return Term(value, text)
+
+
+def series(*terms: Term) -> Term:
+    """Sum; terms that hardly count are left out."""
+    if any(math.isinf(term.value) for term in terms):
+        return OPEN
+    kept = _matter([term for term in terms if term.value != 0.0], math.fsum)
+    if not kept:
+        return GROUND
+    if len(kept) == 1:
+        return kept[0]
+    text = " + ".join(term.within(_SUM) for term in kept)
+    return Term(math.fsum(term.value for term in kept), text, _SUM, _abbreviations(kept))
+
+
+def parallel(*terms: Term) -> Term:
+    """Parallel connection; branches that hardly count are left out."""
+    if any(term.value == 0.0 for term in terms):
+        return GROUND
+    kept = _matter([term for term in terms if not math.isinf(term.value)], _parallel_value)
+    if not kept:
+        return OPEN
+    if len(kept) == 1:
+        return kept[0]
+    text = "‖".join(term.within(_PARALLEL) for term in kept)
+    value = _parallel_value([term.value for term in kept])
+    return Term(value, text, _PARALLEL, _abbreviations(kept))
+
+
+def multiplied(factor: float, text: str, term: Term) -> Term:
+    """``text·term``, such as (β+1)·RE."""
+    if term.value == 0.0 or math.isinf(term.value):
+        return term
+    return Term(factor * term.value, f"{text}·{term.within(_FACTOR)}")
+
+
+def increased(term: Term, ratio: float, text: str) -> Term:
+    """``term·(1 + text)``, where the ratio counts at all."""
+    if abs(ratio) < NEGLIGIBLE or term.value == 0.0 or math.isinf(term.value):
+        return term
+    return Term(term.value * (1.0 + ratio), f"{term.within(_FACTOR)}·(1 + {text})")
+
+
+def divided(term: Term, divisor: float, text: str) -> Term:
+    """``term/text``, such as (rπ + RB)/(β+1)."""
+    if term.value == 0.0 or math.isinf(term.value):
+        return term
+    return Term(term.value / divisor, f"{term.within(_FACTOR)}/{text}")
+
+
+def boosted(resistance: Term, conductance: float, text: str, degeneration: Term) -> Term:
+    """``r·(1 + gm·R)``: an output resistance raised by degeneration."""
+    gain = conductance * degeneration.value
+    if gain < NEGLIGIBLE:
+        return resistance
+    if math.isinf(gain):
+        return OPEN
+    written = f"{resistance.within(_FACTOR)}·(1 + {text}·{degeneration.within(_FACTOR)})"
+    return Term(resistance.value * (1.0 + gain), written)
+
+
+def bridging(first: Term, second: Term, conductance: Term) -> Term:
+    """``R1 + R2 + gm·R1·R2``, what a capacitor from input to inverted output sees.
+
+    ``conductance`` is the effective transconductance in S. The Miller form stands beside it.
+    """
+    if math.isinf(first.value) or math.isinf(second.value):
+        return OPEN
+    product = conductance.value * first.value * second.value
+    total = first.value + second.value + product
+    if product < NEGLIGIBLE * total:
+        return series(first, second)
+    where = [f"R1 = {first.text}", f"R2 = {second.text}"]
+    gain = conductance.text
+    if conductance.binding != _FACTOR:
+        where.append(f"gm' = {conductance.text}")
+        gain = "gm'"
+    text = f"R1 + R2 + {gain}·R1·R2 [Miller: R1·(1 + {gain}·R2) + R2]"
+    return Term(total, text, _SUM, tuple(where))
+
+
+def _abbreviations(terms: Sequence[Term]) -> tuple[str, ...]:
+    return tuple(dict.fromkeys(text for term in terms for text in term.where))
+
+
+def _matter(terms: Sequence[Term], combine: Callable[[Sequence[float]], float]) -> list[Term]:
+    """Leave out, least important first, what together changes the value by under a per cent."""
+    kept = list(terms)
+    whole = combine([term.value for term in kept]) if kept else 0.0
+    while len(kept) > 1:
+        changes = [
+            abs(combine([t.value for t in kept if t is not term]) / whole - 1.0) for term in kept
+        ]
+        least = min(range(len(kept)), key=changes.__getitem__)
+        if changes[least] >= NEGLIGIBLE:
+            break
+        del kept[least]
+    return kept
+
+
+def _parallel_value(values: Sequence[float]) -> float:
+    return 1.0 / math.fsum(1.0 / value for value in values)

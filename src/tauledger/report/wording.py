@@ -1,0 +1,146 @@
+"""The sentences and figures of a comparison, the same in every format; nothing is escaped here."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Iterator
+
+from tauledger.quantity import format_quantity
+from tauledger.review.changes import (
+    Attribution,
+    Comparison,
+    Detail,
+    FigureChange,
+    PartChange,
+    WordChange,
+)
+
+NO_CHANGE = "no electrical change"
+_DETAILS_SHOWN = 6
+_SMALL = 5e-4
+"""Relative changes below this print as such."""
+_SHARE_NAMED = 0.1
+
+
+def verdict(comparison: Comparison) -> list[str]:
+    """The answer in a sentence for every figure that moved."""
+    if not comparison.electrical:
+        renamed = sum(row.kind == "renamed" for row in comparison.parts)
+        if not renamed:
+            return [NO_CHANGE]
+        return [f"{NO_CHANGE}; {renamed} part{'s' if renamed > 1 else ''} renamed"]
+    sentences = [_moved(attribution) for attribution in comparison.attributions]
+    if sentences:
+        return sentences
+    if all(row.difference == 0.0 for row in comparison.figures):
+        return ["parts changed; no figure moved with them"]
+    return ["neither the corners nor the gain can be laid on the edits; see the figures"]
+
+
+def _moved(attribution: Attribution) -> str:
+    old, new = value(attribution.old, attribution.unit), value(attribution.new, attribution.unit)
+    sentence = f"{attribution.figure} {old} → {new}"
+    named = [
+        f"{effect.edit} {100 * effect.share:.0f} %"
+        for effect in attribution.effects
+        if effect.share is not None and abs(effect.share) >= _SHARE_NAMED
+    ]
+    return f"{sentence}: {', '.join(named[:4])} of the move" if named else sentence
+
+
+def value(number: float | None, unit: str, signed: bool = False) -> str:
+    """A figure with prefix and unit, or a dash."""
+    if number is None:
+        return "—"
+    shown = format_quantity(number, "" if unit == "V/V" else unit)
+    if unit == "V/V":
+        shown += " V/V"
+    return f"+{shown}" if signed and number > 0 else shown
+
+
+def change(row: FigureChange) -> str:
+    """How far a figure moved: in dB, else in percent, else as a difference."""
+    if row.difference is None:
+        return "—" if row.old is row.new else "gone" if row.new is None else "new"
+    if row.difference == 0.0:
+        return "none"
+    if row.relative is None or not math.isfinite(row.relative):
+        return value(row.difference, row.unit, signed=True)
+    if abs(row.relative) < _SMALL:
+        return "<0.05 %"
+    return f"{100 * row.relative:+.3g} %"
+
+
+def part_name(row: PartChange) -> str:
+    if row.old_name and row.new_name and row.old_name.casefold() != row.new_name.casefold():
+        return f"{row.old_name} → {row.new_name}"
+    return row.new_name or row.old_name
+
+
+def part_text(row: PartChange) -> str:
+    """What differs, in words."""
+    shown = [_detail(detail, row.kind) for detail in row.details[:_DETAILS_SHOWN]]
+    if len(row.details) > _DETAILS_SHOWN:
+        shown.append(f"{len(row.details) - _DETAILS_SHOWN} more")
+    text = "; ".join(shown)
+    if row.kind in ("added", "removed"):
+        return f"{row.part}, {text}" if text else row.part
+    return text or f"the same {row.part} in the same place"
+
+
+def _detail(detail: Detail, kind: str) -> str:
+    old, new = _sides(detail)
+    if kind == "added":
+        return f"{detail.what} {new}"
+    if kind == "removed":
+        return f"{detail.what} {old}"
+    return f"{detail.what} {old} → {new}"
+
+
+def _sides(detail: Detail) -> tuple[str, str]:
+    """Both sides, with as many digits as it takes to tell them apart."""
+    for digits in range(3, 9):
+        old, new = (_side(side, detail.unit, digits) for side in (detail.old, detail.new))
+        if old != new:
+            break
+    return old, new
+
+
+def _side(side: float | str | None, unit: str, digits: int) -> str:
+    if side is None:
+        return "not given"
+    return side if isinstance(side, str) else format_quantity(side, unit, digits)
+
+
+def place(row: PartChange) -> str:
+    """File and line, in the new revision where the part is in it."""
+    span = row.new_span or row.old_span
+    return f"{span.path}:{span.line}" if span is not None else ""
+
+
+def word_text(row: WordChange) -> str:
+    said = f"{row.old} → {row.new}" if row.old != row.new else row.new
+    return f"{row.part}: {row.what} {said}" if row.part else f"{row.what} {said}"
+
+
+def remainder(attribution: Attribution) -> Iterator[str]:
+    """What the attribution leaves over, and how far the edits act together."""
+    whole = attribution.new - attribution.old
+    unit = attribution.unit
+    yield (
+        f"whole change {value(whole, unit, signed=True)}; remainder "
+        f"{_part_of(attribution.remainder, whole, unit)}"
+    )
+    if len(attribution.effects) > 1:
+        yield (
+            "interaction, the whole change less what each edit does alone: "
+            f"{_part_of(attribution.interaction, whole, unit)}"
+        )
+    yield from attribution.notes
+
+
+def _part_of(part: float, whole: float, unit: str) -> str:
+    share = part / whole
+    if abs(share) < _SMALL:
+        return "none"
+    return f"{value(part, unit, signed=True)} ({100 * share:+.1f} %)"

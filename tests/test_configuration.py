@@ -21,6 +21,7 @@ from tauledger.configuration.files import find_configuration
 from tauledger.configuration.positions import Positions
 from tauledger.configuration.reading import read_configuration
 from tauledger.configuration.settings import PathSettings
+from tauledger.configuration.tolerances import TOLERANCE_LETTERS
 from tauledger.problems import ProblemError
 
 WHOLE = """\
@@ -331,6 +332,77 @@ def _marked(span: Any) -> str:
 # Schema -------------------------------------------------------------------------------------------
 
 
+PARTS = """\
+[path.x]
+netlist = "x.cir"
+
+[capacitors.ceramic]
+match = "C1"
+tolerance = "Z"
+dielectric = "X7R"
+values = ["1 µF", "470nF"]
+bias_curve = [{ voltage = "0 V", change = "0 %" }, { voltage = "10 V", change = "-35 %" }]
+
+[capacitors.electrolytic]
+match = "C*"
+tolerance = "M"
+polarised = true
+series = "E3"
+matched = "2 %"
+
+[resistors.film]
+match = "R*"
+tolerance = "F"
+rated_power = "0.25 W"
+
+[transistors.any]
+match = "Q*"
+current_gain = { min = "-40 %", max = "60 %" }
+base_emitter_voltage = "20 mV"
+matched = true
+
+[spread]
+distribution = "truncated"
+supply = "5 %"
+temperature = { min = "-10 °C", max = "50 °C" }
+"""
+
+
+def test_part_classes_are_read_with_their_tolerances(tmp_path: Path) -> None:
+    (path,) = read_configuration(_write(tmp_path, PARTS)).paths
+    ceramic, electrolytic = path.capacitors
+    assert ceramic.tolerance == (-0.2, 0.8)
+    assert ceramic.values_f == pytest.approx((470e-9, 1e-6))
+    assert ceramic.bias_curve == ((0.0, 0.0), (10.0, -0.35))
+    assert (electrolytic.polarised, electrolytic.series) == (True, "E3")
+    assert electrolytic.matched == pytest.approx(0.02)
+    assert path.resistors[0].tolerance == (-0.01, 0.01)
+    assert path.resistors[0].rated_power_w == 0.25
+    assert path.transistors[0].current_gain == (-0.4, 0.6)
+    assert path.transistors[0].base_emitter_voltage_v == pytest.approx((-0.02, 0.02))
+    assert path.transistors[0].matched
+    assert path.spread is not None
+    assert path.spread.temperature_c == (-10.0, 50.0)
+    assert path.spread.supply == pytest.approx((-0.05, 0.05))
+
+
+@pytest.mark.parametrize(
+    ("old", "new", "marked"),
+    [
+        ('tolerance = "Z"', 'tolerance = "C"', '"C"'),
+        ('"truncated"', '"flat"', '"flat"'),
+        ('series = "E3"', 'series = "E5"', '"E5"'),
+        ("polarised = true", 'polarised = "yes"', '"yes"'),
+        ('voltage = "10 V"', 'voltage = "-1 V"', "["),
+        ('"470nF"', '"470 nH"', '"470 nH"'),
+        ('supply = "5 %"', 'supply = "100 %"', '"100 %"'),
+    ],
+)
+def test_a_faulty_part_class_is_marked(tmp_path: Path, old: str, new: str, marked: str) -> None:
+    ((_, _, _, found),) = _faults(tmp_path, PARTS.replace(old, new))
+    assert found.startswith(marked)
+
+
 def test_the_schema_knows_the_keys_that_are_read() -> None:
     text = resources.files("tauledger.configuration").joinpath("schema.json").read_text("utf-8")
     schema = json.loads(text)
@@ -345,6 +417,10 @@ def test_the_schema_knows_the_keys_that_are_read() -> None:
     assert keys(parts["limits"]) == set(reading.LIMIT_KEYS)
     assert keys(parts["window"]) == set(reading.WINDOW_KEYS)
     assert keys(parts["capacitors"]["additionalProperties"]) == set(reading.CAPACITOR_KEYS)
+    assert keys(parts["resistors"]["additionalProperties"]) == set(reading.RESISTOR_KEYS)
+    assert keys(parts["transistors"]["additionalProperties"]) == set(reading.TRANSISTOR_KEYS)
+    assert keys(parts["spread"]) == set(reading.SPREAD_KEYS)
+    assert parts["tolerance"]["oneOf"][1]["enum"] == list(TOLERANCE_LETTERS)
     inputs = [keys(entry) for entry in parts["input"]["oneOf"][1:]]
     assert set().union(*inputs) == set(reading.INPUT_KEYS)
     assert keys(parts["output"]["oneOf"][1]) == set(reading.OUTPUT_KEYS)

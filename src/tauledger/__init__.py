@@ -4,10 +4,12 @@ from __future__ import annotations
 
 from typing import TYPE_CHECKING, Any
 
+from tauledger.version import VERSION
+
 if TYPE_CHECKING:
     from tauledger.analysis import Analysis, analyze, read
 
-__version__ = "0.1.0"
+__version__ = VERSION
 __all__ = ["Analysis", "analyze", "read"]
 
 

@@ -5,9 +5,8 @@ from __future__ import annotations
 import os
 from dataclasses import dataclass
 from pathlib import Path
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, NamedTuple
 
-from tauledger import __version__
 from tauledger.bias import BiasSolution, OperatingPoint, solve_bias
 from tauledger.circuit import flatten
 from tauledger.circuit.elements import (
@@ -27,13 +26,15 @@ from tauledger.review.assemble import path_row, review_of
 from tauledger.review.rows import Review
 from tauledger.smallsignal import (
     LinearNetwork,
+    Response,
     device_admittances,
     drive_vector,
     linear_network,
     response,
     sense_vector,
 )
-from tauledger.topology import Topology, choose_path, recognise
+from tauledger.topology import SignalPath, Topology, choose_path, recognise
+from tauledger.version import VERSION
 
 if TYPE_CHECKING:
     from tauledger.configuration.settings import PathSettings
@@ -56,6 +57,12 @@ class Analysis:
         """The operating point."""
         return self.solution.point
 
+    def _repr_html_(self) -> str:
+        """What a notebook shows of it."""
+        from tauledger.report.notebook import notebook_html
+
+        return notebook_html(self.review)
+
 
 def read(path: str | os.PathLike[str]) -> Netlist:
     """Read a netlist file.
@@ -73,6 +80,7 @@ def analyze(
     input: str | None = None,
     output: str | None = None,
     settings: PathSettings | None = None,
+    midband_hz: float | None = None,
 ) -> Analysis:
     """Bias point, stages and corners of the path from ``input`` to ``output``.
 
@@ -88,6 +96,9 @@ def analyze(
     settings
         What the configuration adds to the netlist, as ``find_settings`` of
         :mod:`tauledger.configuration.choice` gives it; ``input`` and ``output`` count before it.
+    midband_hz
+        Where the gain is meant to be judged, for a path that is not flat by intent; left out,
+        the middle of the flat stretch.
 
     Raises
     ------
@@ -95,36 +106,23 @@ def analyze(
         With every problem that stops the analysis, each with its place and what to do.
     """
     circuit, input, output = _completed(netlist, settings, input, output)
-    return analyze_circuit(netlist, circuit, input, output)
+    return analyze_circuit(netlist, circuit, input, output, midband_hz)
 
 
 def analyze_circuit(
-    netlist: Netlist, circuit: Circuit, input: str | None = None, output: str | None = None
+    netlist: Netlist,
+    circuit: Circuit,
+    input: str | None = None,
+    output: str | None = None,
+    midband_hz: float | None = None,
 ) -> Analysis:
     """Analyse a flat circuit, which may differ from what its netlist says (one part changed, say).
 
     Raises ProblemError as :func:`analyze` does.
     """
-    if floating := find_floating_nodes(circuit):
-        raise ProblemError(*floating)
-    path = choose_path(circuit, input, output)
-    solution = solve_bias(circuit)
-    network = linear_network(solution)
+    found = _solve(circuit, input, output, midband_hz)
+    path, solution, network, exact, held, corners = found
     topology = recognise(circuit, solution.point, path)
-    source = next(e for e in circuit.elements if e.name == path.source)
-    assert isinstance(source, IndependentSource)
-    exact = response(
-        network,
-        drive_vector(network, source),
-        sense_vector(network, path.output_node, path.output_reference),
-    )
-    held = _held_pairs(circuit, network)
-    corners = find_corners(
-        exact,
-        network.parts,
-        held,
-        _supply_pairs(circuit, network, path.source),
-    )
     admittances = device_admittances(solution)
     bench = workbench(circuit, network, solution.point, admittances, held)
     row = path_row(
@@ -138,8 +136,51 @@ def analyze_circuit(
         hand_expressions(bench, corners, exact),
         stage_formulas(bench, network, topology, corners),
     )
-    review = review_of(circuit, solution.point, topology, (row,), __version__)
+    review = review_of(circuit, solution.point, topology, (row,), VERSION)
     return Analysis(netlist, circuit, solution, network, topology, corners, review)
+
+
+def corners_of(
+    circuit: Circuit,
+    input: str | None = None,
+    output: str | None = None,
+    midband_hz: float | None = None,
+) -> Corners:
+    """The corners of a flat circuit alone, without the words of a report; otherwise as above."""
+    return _solve(circuit, input, output, midband_hz).corners
+
+
+class _Solved(NamedTuple):
+    """Every figure of one path; the words are not found yet."""
+
+    path: SignalPath
+    solution: BiasSolution
+    network: LinearNetwork
+    response: Response
+    held: list[tuple[int, int]]
+    """Node pairs whose voltage a source dictates."""
+    corners: Corners
+
+
+def _solve(
+    circuit: Circuit, input: str | None, output: str | None, midband_hz: float | None
+) -> _Solved:
+    if floating := find_floating_nodes(circuit):
+        raise ProblemError(*floating)
+    path = choose_path(circuit, input, output)
+    solution = solve_bias(circuit)
+    network = linear_network(solution)
+    source = next(e for e in circuit.elements if e.name == path.source)
+    assert isinstance(source, IndependentSource)
+    exact = response(
+        network,
+        drive_vector(network, source),
+        sense_vector(network, path.output_node, path.output_reference),
+    )
+    held = _held_pairs(circuit, network)
+    supplies = _supply_pairs(circuit, network, path.source)
+    corners = find_corners(exact, network.parts, held, supplies, midband_hz)
+    return _Solved(path, solution, network, exact, held, corners)
 
 
 def _completed(

@@ -16,14 +16,14 @@ from dataclasses import dataclass, replace
 from pathlib import Path
 from typing import TYPE_CHECKING, NoReturn
 
-from tauledger import __version__
 from tauledger.problems import Problem, ProblemError, Severity
+from tauledger.version import VERSION
 
 if TYPE_CHECKING:
     from tauledger.analysis import Analysis
     from tauledger.configuration.settings import PathSettings
     from tauledger.review.rows import Review
-    from tauledger.revision import Place
+    from tauledger.revisions import Aim
 
 FINE = 0
 FINDING = 1
@@ -64,13 +64,12 @@ def report(arguments: argparse.Namespace) -> int:
 
     netlist = read(arguments.netlist)
     settings = _settings(arguments, Path(arguments.netlist))
-    analysis = analyze(netlist, arguments.input, arguments.output, settings)
+    analysis = analyze(netlist, arguments.input, arguments.output, settings, arguments.midband)
     review = _simulated(analysis) if arguments.simulate else analysis.review
     if arguments.against:
         from tauledger.revisions import compare_against
 
-        ends = arguments.input, arguments.output
-        since = compare_against(arguments.against, analysis, *ends, _settings_of(arguments))
+        since = compare_against(arguments.against, analysis, _aim(arguments))
         review = replace(review, comparison=since)
     _explain(review.problems)
     if arguments.format == "json":
@@ -94,8 +93,7 @@ def compare(arguments: argparse.Namespace) -> int:
     """Compare two revisions of a netlist and print which edit moved each corner."""
     from tauledger.revisions import compare_netlists
 
-    ends = arguments.input, arguments.output
-    comparison = compare_netlists(arguments.old, arguments.new, *ends, _settings_of(arguments))
+    comparison = compare_netlists(arguments.old, arguments.new, _aim(arguments))
     if arguments.format == "json":
         from tauledger.report.json_report import json_report
 
@@ -104,8 +102,8 @@ def compare(arguments: argparse.Namespace) -> int:
     elif arguments.format == "markdown":
         from tauledger.report.markdown_changes import changes_section
 
-        text = changes_section(comparison)
-        _deliver(lambda: sys.stdout.write(text))
+        section = changes_section(comparison)
+        _deliver(lambda: _write_utf8(section))
     else:
         from tauledger.report.changes import comparison_page
         from tauledger.report.terminal import write_page
@@ -115,7 +113,23 @@ def compare(arguments: argparse.Namespace) -> int:
 
 
 def annotate(arguments: argparse.Namespace) -> int:
-    """Write the results beside the parts, into the netlist or onto its drawings."""
+    """Write the results beside the parts, into netlists or onto the drawings of one."""
+    netlists: list[str] = arguments.netlists
+    if len(netlists) > 1 and (arguments.drawing or arguments.output):
+        _refuse("usage", "--drawing and --output take one netlist", "Name one netlist at a time.")
+    worst = FINE
+    for netlist in netlists:
+        arguments.netlist = netlist
+        try:
+            worst = max(worst, _annotate_one(arguments))
+        except ProblemError as error:
+            # One bad netlist does not stop the others.
+            _explain(error.problems)
+            worst = UNUSABLE
+    return worst
+
+
+def _annotate_one(arguments: argparse.Namespace) -> int:
     from tauledger.annotate import check_files, removed, write_files
 
     sources = arguments.drawing or [arguments.netlist]
@@ -171,7 +185,8 @@ def check(arguments: argparse.Namespace) -> int:
         sys.stderr.write(check_summary(checks))
     for one in checks:
         if one.details:
-            _save_details(one.details, [one.netlist])
+            where = _save_details(one.details, [one.netlist])
+            print(f"tauledger: internal error; {where}", file=sys.stderr)
     return exit_code(checks, threshold)
 
 
@@ -204,9 +219,16 @@ def _simulated(analysis: Analysis) -> Review:
     return beside(analysis.review, simulation)
 
 
-def _settings_of(arguments: argparse.Namespace) -> Callable[[Place], PathSettings | None]:
-    """The same for a netlist of another revision, which has a configuration of its own."""
-    return lambda place: _settings(arguments, place.path, place.roots)
+def _aim(arguments: argparse.Namespace) -> Aim:
+    """What is asked of both sides of a comparison, each with the configuration it has."""
+    from tauledger.revisions import Aim
+
+    return Aim(
+        arguments.input,
+        arguments.output,
+        arguments.midband,
+        lambda place: _settings(arguments, place.path, place.roots),
+    )
 
 
 def _settings(
@@ -230,6 +252,7 @@ def _report_arguments(parser: argparse.ArgumentParser) -> None:
     parser.usage = "%(prog)s [OPTIONS] NETLIST"
     parser.add_argument("netlist", metavar="NETLIST", help="SPICE netlist of the amplifier")
     _path_arguments(parser)
+    _midband_argument(parser)
     result = parser.add_argument_group("result")
     result.add_argument("--against", metavar="REV", help="add the changes since a revision in git")
     result.add_argument(
@@ -237,6 +260,7 @@ def _report_arguments(parser: argparse.ArgumentParser) -> None:
     )
     result.add_argument(
         "--format",
+        metavar="FORMAT",
         choices=("text", "json", "markdown"),
         default="text",
         help="text (default), json or markdown",
@@ -250,8 +274,10 @@ def _compare_arguments(parser: argparse.ArgumentParser) -> None:
             name, metavar=name.upper(), help="netlist, or REV:path in git, counted from its top"
         )
     _path_arguments(parser)
+    _midband_argument(parser)
     parser.add_argument(
         "--format",
+        metavar="FORMAT",
         choices=("text", "json", "markdown"),
         default="text",
         help="text (default), json or markdown",
@@ -259,8 +285,10 @@ def _compare_arguments(parser: argparse.ArgumentParser) -> None:
 
 
 def _annotate_arguments(parser: argparse.ArgumentParser) -> None:
-    parser.usage = "%(prog)s [OPTIONS] NETLIST"
-    parser.add_argument("netlist", metavar="NETLIST", help="SPICE netlist of the amplifier")
+    parser.usage = "%(prog)s [OPTIONS] NETLIST ..."
+    parser.add_argument(
+        "netlists", metavar="NETLIST", nargs="+", help="SPICE netlists of amplifiers"
+    )
     parser.add_argument(
         "--drawing",
         metavar="SVG",
@@ -273,6 +301,21 @@ def _annotate_arguments(parser: argparse.ArgumentParser) -> None:
     what.add_argument("--remove", action="store_true", help="take the annotations out again")
     what.add_argument("--check", action="store_true", help="write nothing; exit 1 when stale")
     _path_arguments(parser, "--output-node")
+
+
+def _midband_argument(parser: argparse.ArgumentParser) -> None:
+    parser.add_argument(
+        "--midband", metavar="FREQ", type=_frequency, help="judge gain there (1kHz): equalisers"
+    )
+
+
+def _frequency(text: str) -> float:
+    from tauledger.quantity import parse_si
+
+    value, unit = parse_si(text)
+    if unit not in ("", "Hz") or value <= 0:
+        raise argparse.ArgumentTypeError(f"expected a frequency such as 1kHz, found {text!r}")
+    return value
 
 
 def _path_arguments(parser: argparse.ArgumentParser, output: str = "--output") -> None:
@@ -355,7 +398,7 @@ COMMANDS = {
         annotate,
     ),
     "check": Command(
-        "Hold netlists against their limits and look for what is wrong in them.",
+        "Hold netlists against their limits and look for what is wrong.",
         "tauledger check boards/*.cir --format github",
         _check_arguments,
         check,
@@ -405,7 +448,7 @@ def _top_parser() -> _Parser:
         formatter_class=argparse.RawDescriptionHelpFormatter,
         allow_abbrev=False,
     )
-    version = f"tauledger {__version__}"
+    version = f"tauledger {VERSION}"
     parser.add_argument("--version", action="version", version=version, help="print the version")
     return parser
 
@@ -414,7 +457,7 @@ def _command_parser(name: str, command: Command) -> _Parser:
     parser = _Parser(
         prog=f"tauledger {name}",
         description=command.summary,
-        epilog=f"example:\n  {command.example}",
+        epilog=f"example: {command.example}",
         formatter_class=argparse.RawDescriptionHelpFormatter,
         allow_abbrev=False,
     )
@@ -503,18 +546,17 @@ def _report_internal(error: Exception, given: Sequence[str]) -> int:
     from tauledger.report.inert import clip, inert
 
     what = clip(inert(f"{type(error).__name__}: {error}"), 200)
-    print(f"tauledger: internal error ({what})", file=sys.stderr)
-    _save_details("".join(traceback.format_exception(error)), given)
+    where = _save_details("".join(traceback.format_exception(error)), given)
+    print(f"tauledger: internal error ({what}); {where}", file=sys.stderr)
     return INTERNAL
 
 
-def _save_details(traceback: str, given: Sequence[str]) -> None:
-    """Keep a traceback in a fresh file, and say where."""
+def _save_details(traceback: str, given: Sequence[str]) -> str:
+    """Keep a traceback in a fresh file; where, in words."""
     try:
-        where = f"details in {_save(f'arguments: {list(given)!r}', traceback)}"
+        return f"details in {_save(f'arguments: {list(given)!r}', traceback)}"
     except OSError as failure:
-        where = f"details could not be saved: {failure.strerror}"
-    print(f"tauledger: {where}", file=sys.stderr)
+        return f"details could not be saved: {failure.strerror}"
 
 
 def _save(head: str, traceback: str) -> str:

@@ -14,12 +14,12 @@ from dataclasses import dataclass
 from pathlib import Path
 from typing import TYPE_CHECKING
 
-from tauledger import __version__
 from tauledger.configuration.codes import problem
 from tauledger.configuration.files import FILE_NAME, find_configuration, is_match
 from tauledger.netlist.include import default_roots
 from tauledger.problems import Problem, ProblemError, Severity
 from tauledger.review.check import Finding, NetlistCheck, check, note
+from tauledger.version import VERSION
 
 if TYPE_CHECKING:
     from tauledger.configuration.settings import Configuration, PathSettings
@@ -218,7 +218,7 @@ def _judge(target: Target, name: str, netlist: Netlist) -> NetlistCheck:
         from tauledger.review.assemble import review_of
 
         circuit = flatten(netlist)
-        review = review_of(circuit, solve_bias(circuit).point, None, (), __version__)
+        review = review_of(circuit, solve_bias(circuit).point, None, (), VERSION)
     limits, findings = check(circuit, review, target.settings)
     return NetlistCheck(target.netlist, name, review, limits, findings)
 

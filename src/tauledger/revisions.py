@@ -2,93 +2,85 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Callable
-from dataclasses import replace
+from dataclasses import dataclass, replace
 from pathlib import Path
 
-from tauledger.analysis import Analysis, analyze, analyze_circuit
+from tauledger.analysis import Analysis, analyze, corners_of
 from tauledger.circuit.elements import GROUND, Circuit
 from tauledger.configuration.settings import PathSettings
 from tauledger.netlist import read
 from tauledger.problems import ProblemError
+from tauledger.review.attribution import Figures, figures
 from tauledger.review.changes import Comparison, PartChange
 from tauledger.review.compare import Revision
 from tauledger.review.compare import compare as compare_revisions
-from tauledger.review.rows import PathRow
 from tauledger.revision import Place, name_in, opened
 
-Settings = Callable[[Place], PathSettings | None]
-"""What the configuration adds to a netlist."""
+
+@dataclass(frozen=True, slots=True)
+class Aim:
+    """What is asked of both sides."""
+
+    input: str | None = None
+    output: str | None = None
+    midband_hz: float | None = None
+    settings: Callable[[Place], PathSettings | None] | None = None
+    """What the configuration adds to a netlist."""
+
+    def analysed(self, place: Place) -> Analysis:
+        """The netlist at this place, read and analysed."""
+        netlist = read(place.path, place.roots)
+        added = self.settings(place) if self.settings else None
+        return analyze(netlist, self.input, self.output, added, self.midband_hz)
 
 
-def compare(old: Analysis, new: Analysis) -> Comparison:
+def compare(old: Analysis, new: Analysis, midband_hz: float | None = None) -> Comparison:
     """What differs between two analyses, and which edit moved each corner.
 
-    For every edit, up to 40, two circuits between the old and the new one are solved.
+    For every edit, up to 40, two circuits between the old and the new one are solved;
+    ``midband_hz`` is as it was for both analyses.
     """
-    return _compare(old, new, old.circuit.path, new.circuit.path)
+    return _compare(old, new, old.circuit.path, new.circuit.path, midband_hz)
 
 
-def compare_netlists(
-    old: str,
-    new: str,
-    input: str | None = None,
-    output: str | None = None,
-    settings: Settings | None = None,
-    where: Path | None = None,
-) -> Comparison:
+def compare_netlists(old: str, new: str, aim: Aim, where: Path | None = None) -> Comparison:
     """Compare two netlists, each a file or ``REV:path`` in the git repository of ``where``.
 
     Raises ProblemError when one of them cannot be read or analysed.
     """
     with opened(old, where) as before, opened(new, where) as after:
-        return _renamed(
-            _compare(
-                _analysed(before, input, output, settings),
-                _analysed(after, input, output, settings),
-                before.name,
-                after.name,
-            ),
-            before,
-            after,
-        )
+        sides = aim.analysed(before), aim.analysed(after)
+        comparison = _compare(*sides, before.name, after.name, aim.midband_hz)
+        return _renamed(comparison, before, after)
 
 
-def compare_against(
-    revision: str,
-    new: Analysis,
-    input: str | None = None,
-    output: str | None = None,
-    settings: Settings | None = None,
-) -> Comparison:
+def compare_against(revision: str, new: Analysis, aim: Aim) -> Comparison:
     """Compare an analysed file of a working tree with itself in a revision of its repository."""
     netlist = Path(new.circuit.path)
-    old = name_in(revision, netlist)
-    with opened(old, netlist.parent) as before:
-        comparison = _compare(
-            _analysed(before, input, output, settings), new, before.name, new.circuit.path
-        )
+    with opened(name_in(revision, netlist), netlist.parent) as before:
+        names = before.name, new.circuit.path
+        comparison = _compare(aim.analysed(before), new, *names, aim.midband_hz)
         return _renamed(comparison, before, None)
 
 
-def _analysed(
-    place: Place, input: str | None, output: str | None, settings: Settings | None
-) -> Analysis:
-    added = settings(place) if settings else None
-    return analyze(read(place.path, place.roots), input, output, added)
-
-
-def _compare(old: Analysis, new: Analysis, old_name: str, new_name: str) -> Comparison:
+def _compare(
+    old: Analysis, new: Analysis, old_name: str, new_name: str, midband_hz: float | None
+) -> Comparison:
     path = old.topology.path
     output = path.output_node
     if path.output_reference != GROUND:
         output += f",{path.output_reference}"
 
-    def solve(circuit: Circuit) -> PathRow | None:
+    def solve(circuit: Circuit) -> Figures | None:
         try:
-            return analyze_circuit(old.netlist, circuit, path.source, output).review.paths[0]
+            corners = corners_of(circuit, path.source, output, midband_hz)
         except ProblemError:
             return None
+        gain = corners.exact_gain
+        gain_db = 20.0 * math.log10(gain) if gain > 0 else None
+        return figures(gain_db, corners.low.exact_hz, corners.high.exact_hz)
 
     sides = [
         Revision(name, side.circuit, side.topology.path, side.review)

@@ -72,7 +72,10 @@ def test_a_completed_board_has_the_figures_of_one_with_sources_written_in(tmp_pa
     bare = tmp_path / "bare"
     bare.mkdir()
     (bare / "parts.lib").write_text(MODEL)
-    connectors = "J1 SENSE GND conn_01x02\nP1 OUT GND CONN_2\n"
+    connectors = (
+        "J1 SENSE GND conn_01x02\nP1 OUT GND CONN_2\nJ2 OUT GND SENSE GND GND HEADER_5\n"
+        "XJ3 OUT GND Terminal_2\nX4 SENSE GND Conn_01x02_Pin\n"
+    )
     board = "probe\n" + BOARD.format(input="SENSE") + connectors
     completed = _analysis(bare, board, SETTINGS).review
     full = tmp_path / "full"

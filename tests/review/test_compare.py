@@ -287,3 +287,88 @@ def test_all_edits_together_make_the_new_circuit(seed: int) -> None:
         assert (a is None) == (b is None)
         if a is not None and b is not None:
             assert b.exact_hz == pytest.approx(a.exact_hz)
+
+
+@pytest.mark.parametrize("seed", range(2))
+def test_a_part_put_in_series_is_found_in_a_netlist_numbered_afresh(seed: int) -> None:
+    new = _edited(FEEDBACK_PAIR, ("RF", "RF  fb  x1  22k\nRX x1 e1 470"))
+    comparison = _compared(FEEDBACK_PAIR, _scrambled(new, seed))
+    edited = {(row.kind, row.old_name) for row in comparison.parts if row.electrical}
+    assert edited == {("changed", "RF"), ("added", "")}
+    (gain,) = _moved(comparison, "midband gain").effects
+    assert gain.share == pytest.approx(1.0)
+
+
+REFERRING = """parts that refer to others
+V1 in 0 AC 1
+RS in a 50
+L1 a 0 1m
+L2 b 0 4m
+K1 L1 L2 0.98
+R2 b 0 10k
+E1 c 0 b 0 2
+R3 c d 1k
+V9 d e 0
+R4 e 0 1k
+F1 0 f V9 10
+R5 f 0 1k
+B1 g 0 V = 2*v(f) + 50*i(V9)
+R6 g out 1k
+X1 out 0 pad
+.subckt pad p q
+R1 p q 10k
+C1 p m 1n
+R2 m q 100
+.ends
+.print ac v(out)
+"""
+RENAMED = """parts that refer to others, renamed
+V5 n1 0 AC 1
+RA n1 n2 50
+L7 n2 0 1m
+L8 n3 0 4m
+K3 L7 L8 0.98
+RB n3 0 10k
+E2 n4 0 n3 0 2
+RC n4 n5 1k
+V6 n5 n6 0
+RD n6 0 1k
+F2 0 n7 V6 10
+RE n7 0 1k
+B2 n8 0 V = 2*v(n7) + 50*i(V6)
+RF n8 n9 1k
+X7 n9 0 pad
+.subckt pad p q
+R1 p q 10k
+C1 p m 1n
+R2 m q 100
+.ends
+.print ac v(n9)
+"""
+
+
+def test_references_follow_the_parts_they_name() -> None:
+    comparison = _compared(REFERRING, RENAMED)
+    assert not comparison.electrical
+    assert {row.kind for row in comparison.parts} == {"renamed"}
+
+
+@pytest.mark.parametrize(
+    ("before", "after", "part", "what"),
+    [
+        ("K3 L7 L8 0.98", "K3 L7 L8 0.9", "K3", "coefficient"),
+        ("F2 0 n7 V6 10", "F2 0 n7 V6 12", "F2", "gain"),
+        ("2*v(n7)", "3*v(n7)", "B2", "written as"),
+        ("C1 p m 1n", "C1 p m 3n", "X7.C1", "value"),
+    ],
+)
+def test_an_edit_of_a_part_that_refers_to_others_moves_a_figure(
+    before: str, after: str, part: str, what: str
+) -> None:
+    comparison = _compared(REFERRING, RENAMED.replace(before, after))
+    (edited,) = [row for row in comparison.parts if row.electrical]
+    assert (edited.new_name, edited.details[0].what) == (part, what)
+    assert comparison.attributions
+    for attribution in comparison.attributions:
+        (effect,) = attribution.effects
+        assert (effect.parts, effect.share) == ((part,), pytest.approx(1.0))

@@ -35,6 +35,7 @@ EXPRESSIONS = [
     *("limit(v(n),-1,1)", "limit(v(p),2,-2)", "limit(v(q)*9,v(n),v(p)*2)"),
     *(f"atan2({y},{x})" for y in ("v(n)", "v(p)") for x in ("v(n)*2", "v(p)*3", "v(z)")),
     "atan2(v(z),v(n))",
+    *("pwl(v(n),-1,5,1,7)", "pwl(v(q),-1,5,0,6,1,9)"),
     *("table(v(n),-1,5,1,7)", "table(v(p),-1,5,1,7)", "table(v(q),-1,5,0,6,1,9)"),
     "i(VP)*1k+v(n)",
 ]

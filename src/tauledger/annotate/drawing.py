@@ -26,6 +26,8 @@ _MARK_SIZE = 0.82
 """Text of a mark against that of a designator."""
 _PAGE_PART = 90.0
 """Letters of a designator are about this part of a page's longer side, when none is text."""
+_SMALLEST, _LARGEST = 1 / 400, 1 / 25
+"""Text of a mark against the page's longer side; a designator outside that is no guide."""
 _LEGEND_PART = 0.46
 """Of the page that the legend may take along either side."""
 
@@ -133,28 +135,15 @@ def _marked(
     review: Review,
 ) -> bytes:
     room = Room(sheet.page, _usual_size(sheet, places), _text_boxes(sheet), sheet.outlines)
-    elements = []
-    # What sets a corner chooses its place first.
-    for name in sorted(places, key=lambda name: not notes[name].sets):
-        for place in places[name]:
-            mark = Mark(notes[name])
-            size = _MARK_SIZE * place.size or room.unit
-            box = room.near(place.box, mark.width * size, mark.height * size)
-            elements.append(mark.svg(box, size, place.box))
+    # Capacitors choose first, by their say; the marks of transistors are larger.
+    order = sorted(places, key=lambda name: -(notes[name].share or 0.0))
+    elements = [_beside(place, notes[name], room) for name in order for place in places[name]]
     footer = f"tauledger {review.version}, at {review.temperature_c:g} °C"
-    legend = Legend(summary_of(review), missing, footer)
-    size = min(
-        room.unit,
-        _LEGEND_PART * sheet.page.width / legend.width,
-        _LEGEND_PART * sheet.page.height / legend.height,
-    )
-    elements.append(legend.svg(room.anywhere(legend.width * size, legend.height * size), size))
-    block = (
-        f'<!--{_BEGIN}-->\n<g xmlns="http://www.w3.org/2000/svg" aria-label="results of tauledger">'
-        + "\n".join(["", *elements, ""])
-        + f"</g>\n<!--{_END}-->"
-    ).encode(encoding_of(drawing.content))
-    content = drawing.content[: sheet.end] + block + drawing.content[sheet.end :]
+    elements.append(_legend(Legend(summary_of(review), missing, footer), room))
+    head = '<g xmlns="http://www.w3.org/2000/svg" aria-label="results of tauledger">'
+    block = "\n".join([f"<!--{_BEGIN}-->", head, *elements, f"</g>\n<!--{_END}-->"])
+    encoded = block.encode(encoding_of(drawing.content))
+    content = drawing.content[: sheet.end] + encoded + drawing.content[sheet.end :]
     if remove_marks(content, drawing.path) != drawing.content:
         raise drawing_fault(
             "drawing-unmarkable",
@@ -164,12 +153,45 @@ def _marked(
     return content
 
 
+def _legend(legend: Legend, room: Room) -> str:
+    """In a clear place, the smaller where there is none large enough."""
+    largest = min(
+        room.unit,
+        _LEGEND_PART * room.page.width / legend.width,
+        _LEGEND_PART * room.page.height / legend.height,
+    )
+    scales = [largest, 0.8 * largest, 0.65 * largest]
+    chosen, box = room.anywhere([(legend.width * s, legend.height * s) for s in scales])
+    return legend.svg(box, scales[chosen])
+
+
+def _beside(place: Place, note: PartNote, room: Room) -> str:
+    """The mark of one part, in the shape that fits; with its name where it stands apart."""
+    size = _readable(_MARK_SIZE * place.size, room.page) if place.size else room.unit
+    for named in (False, True):
+        shapes = [Mark(note, narrow, named) for narrow in (False, True)]
+        sizes = [(shape.width * size, shape.height * size) for shape in shapes]
+        chosen, box = room.near(place.box, sizes, opaque=bool(note.sets))
+        if named or not room.is_far(place.box, box):
+            break
+        room.marks.pop()
+    return shapes[chosen].svg(box, size, place.box)
+
+
 def _usual_size(sheet: Sheet, places: Mapping[str, list[Place]]) -> float:
     """Size of a mark's text where its own designator does not give it."""
     sizes = [p.size for found in places.values() for p in found if p.size > 0]
     sizes = sizes or [label.size for label in sheet.labels if label.size > 0]
-    longer = max(sheet.page.width, sheet.page.height)
-    return _MARK_SIZE * (statistics.median(sizes) if sizes else longer / _PAGE_PART)
+    usual = statistics.median(sizes) if sizes else _longer(sheet.page) / _PAGE_PART
+    return _readable(_MARK_SIZE * usual, sheet.page)
+
+
+def _readable(size: float, page: Box) -> float:
+    return min(max(size, _SMALLEST * _longer(page)), _LARGEST * _longer(page))
+
+
+def _longer(page: Box) -> float:
+    return max(page.width, page.height)
 
 
 def _text_boxes(sheet: Sheet) -> list[Box]:

@@ -28,6 +28,7 @@ _PIXELS = {
     "cm": 96 / 2.54,
     "mm": 96 / 25.4,
 }
+_FARTHEST = 1e12
 _RELATIVE = {"em": 1.0, "ex": 0.5, "rem": 1.0, "%": 0.01}
 
 
@@ -99,18 +100,33 @@ class Box:
         down = max(self.top - other.bottom, other.top - self.bottom, 0.0)
         return math.hypot(across, down)
 
+    def link(self, other: Box) -> tuple[Point, Point]:
+        """The nearest points of the two, this one's first; in the middle where sides face."""
+        x1, x2 = _facing(self.left, self.right, other.left, other.right)
+        y1, y2 = _facing(self.top, self.bottom, other.top, other.bottom)
+        return (x1, y1), (x2, y2)
+
+
+def _facing(low: float, high: float, other_low: float, other_high: float) -> tuple[float, float]:
+    shared_low, shared_high = max(low, other_low), min(high, other_high)
+    if shared_low <= shared_high:
+        middle = (shared_low + shared_high) / 2
+        return middle, middle
+    return (high, other_low) if high < other_low else (low, other_high)
+
 
 def box_around(points: Iterable[Point]) -> Box | None:
-    """The smallest box with all points; None without one, or when one is not finite."""
+    """The smallest box with all points; None without one, or when one is out of all bounds."""
     across, down = [], []
     for x, y in points:
         across.append(x)
         down.append(y)
-    if not across:
+    # One sum tells whether any is not finite; comparisons would overlook a NaN.
+    if not across or not math.isfinite(sum(across) + sum(down)):
         return None
     box = Box(min(across), min(down), max(across), max(down))
-    sizes = (box.left, box.top, box.right, box.bottom)
-    return box if all(math.isfinite(v) and abs(v) < 1e12 for v in sizes) else None
+    outermost = max(-box.left, -box.top, box.right, box.bottom)
+    return box if outermost < _FARTHEST else None
 
 
 def corners_of(x: float, y: float, width: float, height: float) -> tuple[Point, ...]:

@@ -31,30 +31,39 @@ class Mark:
     """What stands beside one part; sizes in em of its text."""
 
     note: PartNote
+    narrow: bool = False
+    named: bool = False
+    """With the designator, where the mark cannot stand right beside it."""
+
+    @property
+    def rows(self) -> list[str]:
+        rows = list(self.note.narrow if self.narrow else self.note.mark)
+        return [f"{self.note.name}: {rows[0]}", *rows[1:]] if self.named else rows
 
     @property
     def width(self) -> float:
         weight = _BOLD if self.note.sets else 1.0
-        return max(text_width(line) for line in self.note.mark) * weight + 2 * _PAD
+        return max(text_width(row) for row in self.rows) * weight + 2 * _PAD
 
     @property
     def height(self) -> float:
         bar = _BAR + 0.15 if self.note.share is not None else 0.0
-        return len(self.note.mark) * _LEADING + 2 * _PAD * 0.6 + bar
+        return len(self.rows) * _LEADING + 2 * _PAD * 0.6 + bar
 
     def svg(self, box: Box, size: float, label: Box) -> str:
-        """The mark in its box, for text of ``size``, tied to a label that is further off."""
+        """The mark in its box, for text of ``size``; a named one is tied to its label."""
         note = self.note
         front, back = (PAPER, INK) if note.sets else (INK, PAPER)
-        parts = [_leader(label, box, size), _plate(box, back, 1.0 if note.sets else 0.82)]
+        parts = [_leader(label, box, size)] if self.named else []
+        parts.append(_plate(box, back, 1.0 if note.sets else 0.82))
         if note.transistor and not note.sets:
             parts.append(_plate(Box(box.left, box.top, box.left + 0.12 * size, box.bottom), INK))
         left, top = box.left + _PAD * size, box.top + _PAD * 0.6 * size
-        for row, line in enumerate(note.mark):
+        for row, line in enumerate(self.rows):
             base = top + (row * _LEADING + ASCENT + 0.13) * size
             parts.append(text(line, left, base, size, front, bold=bool(note.sets)))
         if note.share is not None:
-            under = top + (len(note.mark) * _LEADING + 0.1) * size
+            under = top + (len(self.rows) * _LEADING + 0.1) * size
             parts += _bar(left, under, box.width - 2 * _PAD * size, note.share, size, front)
         title = f"<title>{escape(note.name + ': ' + ', '.join(note.facts))}</title>"
         return f"<g>{title}{''.join(parts)}</g>"
@@ -98,7 +107,7 @@ class Legend:
 
     @property
     def height(self) -> float:
-        return (len(self.rows) + len(_KEY) + 2) * 1.35 + 1.1
+        return (len(self.rows) + len(_KEY) + 2) * 1.35 + 1.5
 
     def svg(self, box: Box, size: float) -> str:
         left, step = box.left + 0.8 * size, 1.35 * size
@@ -112,6 +121,7 @@ class Legend:
             base += step
             indent = 0.8 * size if row.startswith(" ") else 0.0
             parts.append(text(row.strip(), left + indent, base, size, INK))
+        base += 0.4 * size
         for row, sample in zip(_KEY, _SAMPLES, strict=True):
             base += step
             parts.append(sample(left, base, size))
@@ -196,18 +206,8 @@ def _bar(
 
 
 def _leader(label: Box, box: Box, size: float) -> str:
-    """A fine line from a label to a mark that could not stand right beside it."""
-    if label.gap(box) < 0.9 * size:
-        return ""
-    x1, y1 = (min(max(c, a), b) for c, a, b in _facing(box, label))
-    x2, y2 = (min(max(c, a), b) for c, a, b in _facing(label, box))
+    (x1, y1), (x2, y2) = label.link(box)
     return _path(f"M{_n(x1)} {_n(y1)}L{_n(x2)} {_n(y2)}", _stroke(INK, 0.07 * size))
-
-
-def _facing(of: Box, seen: Box) -> tuple[tuple[float, float, float], ...]:
-    """Middle of one box, to be held inside the other."""
-    x, y = of.centre
-    return (x, seen.left, seen.right), (y, seen.top, seen.bottom)
 
 
 def escape(content: str) -> str:

@@ -19,6 +19,8 @@ class PartNote:
     """For a comment, the most telling first."""
     mark: tuple[str, ...]
     """For a mark on a drawing, in short: one string a line."""
+    narrow: tuple[str, ...]
+    """The same in more and shorter lines."""
     sets: str
     """``low``, ``high`` or ``low and high`` when it sets that corner; else empty."""
     share: float | None
@@ -76,17 +78,18 @@ def part_notes(review: Review) -> tuple[PartNote, ...]:
 def _reactive_note(row: TimeConstantRow, path: PathRow | None) -> PartNote:
     sets = _ends_set(path, row.name)
     if row.corner_hz is None or row.share is None:
-        return PartNote(row.name, False, (row.role, row.end), (row.role, row.end), "", None)
+        return PartNote(row.name, False, (row.role, row.end), (row.end,), (row.end,), "", None)
     corner, share = format_quantity(row.corner_hz, "Hz"), _percent(row.share)
     facts = [row.role]
     if row.resistance_ohm is not None:
         facts.append(f"sees {format_quantity(row.resistance_ohm, 'Ω')}")
     facts += [f"corner {corner}", f"{share} of the {row.end} end"]
-    mark = [f"{corner}  {share}"]
+    mark, narrow = [f"{corner}  {share}"], [corner, share]
     if sets:
         facts.append(f"SETS THE {sets.upper()} CORNER")
         mark.append(f"sets {sets} corner")
-    return PartNote(row.name, False, tuple(facts), tuple(mark), sets, row.share)
+        narrow += [f"sets {sets}", "corner"]
+    return PartNote(row.name, False, tuple(facts), tuple(mark), tuple(narrow), sets, row.share)
 
 
 def _transistor_note(row: TransistorRow, path: PathRow | None) -> PartNote:
@@ -103,16 +106,18 @@ def _transistor_note(row: TransistorRow, path: PathRow | None) -> PartNote:
         if figure.symbol == "gm"
     ]
     own = [entry for entry in _own_capacitances(row, path) if _ends_set(path, entry.name)]
-    facts, mark = [configuration, *bias, *gm], [configuration, "  ".join(bias)]
+    facts = [configuration, *bias, *gm]
+    mark, narrow = [configuration, "  ".join(bias)], [*configuration.split(), *bias]
     for entry in own:
         symbol = entry.name.rpartition(".")[2]
         share = _percent(entry.share or 0.0)
         facts.append(
             f"{symbol} {share} of the {entry.end} end, SETS THE {entry.end.upper()} CORNER"
         )
-        mark.append(f"{symbol} {share} sets {entry.end} corner")
+        mark.append(f"{symbol} sets {entry.end} corner")
+        narrow += [f"{symbol} sets", f"{entry.end} corner"]
     ends = " and ".join(dict.fromkeys(entry.end for entry in own))
-    return PartNote(row.name, True, tuple(facts), tuple(mark), ends, None)
+    return PartNote(row.name, True, tuple(facts), tuple(mark), tuple(narrow), ends, None)
 
 
 def _own_capacitances(row: TransistorRow, path: PathRow | None) -> Iterator[TimeConstantRow]:

@@ -19,10 +19,22 @@ _CELLS = 1200
 _MOST_SAMPLES = 4_000_000
 _TEXT_COST, _MARK_COST, _OUTSIDE_COST = 12.0, 14.0, 40.0
 """For each square em covered, or off the page."""
-_LINE_COST = 1.6
-"""For each em of line covered."""
-_FAR_COST = 0.4
+_LINE_COST, _OPAQUE_COST = 2.2, 4.4
+"""For each em of line covered, by a mark it shows through and by one it does not."""
+_FAR_COST = 0.6
 """For each em between a designator and its mark."""
+_BESIDE = 1.6
+"""Em between the two up to which no line need tie them."""
+_LEADER_COST, _ACROSS_TEXT, _ACROSS_LINE = 1.0, 2.5, 1.6
+"""Of that line: for itself, and for each half em of text or lines it crosses."""
+_STEPS = (0.3, 0.55, 0.85, 1.3, 1.8, 2.4, 3.1, 3.8, 4.6, 5.5, 6.5, 8.0, 10.0, 13.0, 17.0)
+"""Em from a designator at which places are tried."""
+_CLEAR = 0.5
+"""What a place may cost and still count as clear."""
+_PLACES = 60
+"""Tried along each side of a page."""
+_LATER_COST = 0.4
+"""For each size a mark would rather not take."""
 
 Grid = NDArray[np.int64]
 
@@ -49,45 +61,88 @@ class Room:
         self.lines = _summed(self._drawn(outlines))
         self.marks: list[Box] = []
 
-    def near(self, label: Box, width: float, height: float) -> Box:
-        """The best place for a mark of this size beside a label; it is taken from then on."""
-        best = min(self._around(label, width, height), key=lambda box: self._cost(box, label))
-        self.marks.append(best)
-        return best
+    def near(
+        self, label: Box, sizes: Sequence[tuple[float, float]], *, opaque: bool
+    ) -> tuple[int, Box]:
+        """Which of some sizes fits best beside a label, and where; it is taken from then on.
 
-    def anywhere(self, width: float, height: float) -> Box:
-        """The clearest place of this size on the page, the lower right for choice; then taken."""
+        The first size is for choice.
+        """
+        chosen, best, least = 0, label, math.inf
+        for index, (width, height) in enumerate(sizes):
+            for box in self._around(label, width, height):
+                # Far places are many and dear to weigh: most drop out on their distance alone.
+                cost = _LATER_COST * index + _FAR_COST * label.gap(box) / self.unit
+                if cost < least:
+                    cost += self.covered(box.grown(0.2 * self.unit), opaque)
+                if cost < least and self.is_far(label, box):
+                    cost += self._crossed(label, box)
+                if cost < least:
+                    chosen, best, least = index, box, cost
+        self.marks.append(best)
+        return chosen, best
+
+    def is_far(self, label: Box, box: Box) -> bool:
+        """Whether a mark needs a line to the label it belongs to."""
+        return label.gap(box) > _BESIDE * self.unit
+
+    def anywhere(self, sizes: Sequence[tuple[float, float]]) -> tuple[int, Box]:
+        """The first size with a clear place on the page, the lower right for choice; then taken.
+
+        Where no size has one, the last at the place where it covers least.
+        """
         margin = 0.6 * self.unit
-        page = self.page.grown(-margin)
-        across = np.linspace(max(page.right - width, page.left), page.left, 60)
-        down = np.linspace(max(page.bottom - height, page.top), page.top, 60)
-        best, least = Box(page.left, page.top, page.left + width, page.top + height), math.inf
-        for i, top in enumerate(down):
-            for j, left in enumerate(across):
-                box = Box(float(left), float(top), float(left) + width, float(top) + height)
-                cost = self.covered(box.grown(0.5 * margin)) + 0.02 * (i + j)
+        chosen, best = 0, self.page
+        for index, (width, height) in enumerate(sizes):
+            chosen, least = index, math.inf
+            for box in self._on_page(width, height, margin):
+                cost = self.covered(box.grown(0.5 * margin))
                 if cost < least:
                     best, least = box, cost
+                if cost == 0.0:
+                    break
+            if least < _CLEAR:
+                break
         self.marks.append(best)
-        return best
+        return chosen, best
 
-    def covered(self, box: Box) -> float:
+    def _on_page(self, width: float, height: float, margin: float) -> Iterable[Box]:
+        """From the lower right to the upper left."""
+        page = self.page.grown(-margin)
+        across = np.linspace(max(page.right - width, page.left), page.left, _PLACES)
+        down = np.linspace(max(page.bottom - height, page.top), page.top, _PLACES)
+        for both in range(2 * _PLACES - 1):
+            for i in range(max(0, both - _PLACES + 1), min(both, _PLACES - 1) + 1):
+                yield _box(float(across[both - i]), float(down[i]), width, height)
+
+    def covered(self, box: Box, opaque: bool = False) -> float:
         """How much a box would cover, weighted; 0 for a clear place on the page."""
         square = self.unit * self.unit
         text = self._count(self.texts, box) * self.cell * self.cell / square
         line = self._count(self.lines, box) * self.cell / self.unit
         outside = (box.width * box.height - box.overlap(self.page)) / square
-        marks = sum(box.overlap(mark) for mark in self.marks) / square
-        cost = _TEXT_COST * text + _LINE_COST * line + _MARK_COST * marks
-        return cost + _OUTSIDE_COST * outside
+        wide = box.grown(0.2 * self.unit)
+        marks = sum(wide.overlap(mark) for mark in self.marks) / square
+        cost = _TEXT_COST * text + (_OPAQUE_COST if opaque else _LINE_COST) * line
+        return cost + _MARK_COST * marks + _OUTSIDE_COST * outside
 
-    def _cost(self, box: Box, label: Box) -> float:
-        away = box.gap(label) / self.unit
-        return self.covered(box.grown(0.15 * self.unit)) + _FAR_COST * away
+    def _crossed(self, label: Box, box: Box) -> float:
+        """The cost of a line between the two: what it runs across."""
+        (x1, y1), (x2, y2) = label.link(box)
+        steps = min(40, 1 + round(math.hypot(x2 - x1, y2 - y1) / (0.5 * self.unit)))
+        cost = _LEADER_COST
+        for step in range(1, steps):
+            part = step / steps
+            x, y = x1 + part * (x2 - x1), y1 + part * (y2 - y1)
+            spot = Box(x, y, x, y).grown(0.5 * self.cell)
+            cost += _ACROSS_TEXT * (self._count(self.texts, spot) > 0)
+            cost += _ACROSS_LINE * (self._count(self.lines, spot) > 0)
+            cost += _ACROSS_TEXT * any(spot.overlap(mark) > 0 for mark in self.marks)
+        return cost
 
     def _around(self, label: Box, width: float, height: float) -> Iterable[Box]:
         """Right, below, above, left; then the same further out and shifted along."""
-        for step in (0.3, 1.0, 2.0, 3.2, 4.6, 6.2, 8.0, 10.0, 13.0, 17.0):
+        for step in _STEPS:
             gap = step * self.unit
             for part in (0.5, 0.0, 1.0, 0.25, 0.75, -0.5, 1.5, -1.2, 2.2):
                 top = label.top - part * (height - label.height)

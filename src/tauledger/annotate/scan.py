@@ -8,11 +8,11 @@ stopped at the first entity declaration, so that no entity is ever expanded.
 from __future__ import annotations
 
 import codecs
-import re
 from collections.abc import Callable, Mapping
 from dataclasses import dataclass, field
 from xml.parsers import expat
 
+from tauledger.annotate.active import ActiveContent
 from tauledger.annotate.geometry import (
     Affine,
     Box,
@@ -25,7 +25,7 @@ from tauledger.annotate.geometry import (
 from tauledger.annotate.shapes import SHAPES, nested_map, view_box_of
 from tauledger.annotate.style import INHERITED, StyleSheet, is_none, specified
 from tauledger.annotate.textline import Chunk, TextElement
-from tauledger.problems import Problem, ProblemError, Severity, SourceSpan
+from tauledger.problems import Problem, ProblemError, Severity
 
 MAXIMUM_DEPTH = 500
 MAXIMUM_ELEMENTS = 500_000
@@ -42,14 +42,11 @@ _NOT_DRAWN = frozenset((
     "defs", "symbol", "clipPath", "mask", "pattern", "marker", "metadata", "linearGradient",
     "radialGradient", "filter", "foreignObject", "script", "style", "font",
 ))
-_ACTIVE = frozenset(("script", "iframe", "object", "embed", "handler", "audio", "video"))
 _LABEL_ATTRIBUTES = frozenset((
     "aria-label", "label", "title", "data-label", "data-name", "data-ref", "data-reference",
     "data-designator",
 ))
 # fmt: on
-_OUTSIDE = re.compile(r"\s*(?:javascript:|vbscript:|data:text/|https?:|ftp:|file:|//)", re.I)
-_OUTSIDE_STYLE = re.compile(r"@import|url\(\s*[\"']?\s*(?:https?:|file:|//|javascript:)", re.I)
 
 
 @dataclass(frozen=True, slots=True)
@@ -174,7 +171,7 @@ class _Reading:
         self.page: Box | None = None
         self.content: Box | None = None
         self.end = 0
-        self.active: dict[str, int] = {}
+        self.active = ActiveContent()
 
     def attach(self, parser: expat.XMLParserType) -> None:
         self.parser = parser
@@ -191,18 +188,16 @@ class _Reading:
             raise drawing_fault(
                 "drawing-empty", f"{self.path}: the drawing is empty", "Export the sheet again."
             )
-        page = self.page or self.content or Box(0.0, 0.0, 300.0, 150.0)
-        problems = tuple(
-            Problem(
-                "drawing-active",
-                Severity.WARNING,
-                f"the drawing {what}; it is left as it is",
-                SourceSpan(self.path, line, 1, 1, ""),
-                "Open the drawing only where you trust its source.",
-            )
-            for what, line in self.active.items()
+        page = self.page or self.content
+        if page is None or page.width <= 0 or page.height <= 0:
+            page = Box(0.0, 0.0, 300.0, 150.0)  # what a browser takes for want of a size
+        return Sheet(
+            page,
+            tuple(self.labels),
+            tuple(self.outlines),
+            self.end,
+            self.active.problems(self.path),
         )
-        return Sheet(page, tuple(self.labels), tuple(self.outlines), self.end, problems)
 
     # Elements -------------------------------------------------------------------------------------
 
@@ -217,7 +212,7 @@ class _Reading:
             )
         tag = name.rpartition(":")[2]
         attributes = {key.rpartition(":")[2]: value for key, value in given.items()}
-        self.note_active(tag, attributes)
+        self.active.look(tag, attributes, self.parser.CurrentLineNumber)
         frame = self.child(tag, attributes) if self.stack else self.root(tag, attributes)
         self.stack.append(frame)
         if frame.tag in SHAPES:
@@ -245,7 +240,7 @@ class _Reading:
                 for side in ("width", "height")
             )
             if width > 0 and height > 0:
-                view = Box(0.0, 0.0, width, height)
+                view = box_around([(0.0, 0.0), (width, height)])
         self.page = view
         size = length(style.get("font-size"), DEFAULT_SIZE, DEFAULT_SIZE)
         return _Frame(tag, Affine(), style, size, True, not is_none(style.get("opacity")), view)
@@ -287,7 +282,7 @@ class _Reading:
         parent = self.stack[-1]
         if frame.tag == "style":
             self.styles.add("".join(frame.characters))
-            self.note_style("".join(frame.characters))
+            self.active.look_at_style("".join(frame.characters), self.parser.CurrentLineNumber)
         elif frame.tag in ("title", "desc"):
             said = " ".join("".join(frame.characters).split())
             if 0 < len(said) <= LONGEST_LABEL:
@@ -386,28 +381,6 @@ class _Reading:
             moved = box_around(place.apply(point) for point in outline)
             if moved is not None:
                 self.label(frame, Label(label.text, moved, label.size * place.scale))
-
-    # Active content -------------------------------------------------------------------------------
-
-    def note_active(self, tag: str, attributes: dict[str, str]) -> None:
-        if tag in _ACTIVE:
-            self.note(f"holds active content, <{tag}>")
-        for key, value in attributes.items():
-            if key.startswith("on"):
-                self.note(f"holds active content, the attribute {key[:40]}")
-            elif key in ("href", "src") and _OUTSIDE.match(value):
-                self.note("refers to something outside the file")
-            elif key == "style":
-                self.note_style(value)
-
-    def note_style(self, text: str) -> None:
-        if _OUTSIDE_STYLE.search(text):
-            self.note("refers to something outside the file")
-
-    def note(self, what: str) -> None:
-        """Each kind once, where it is first met."""
-        if len(self.active) < 20:
-            self.active.setdefault(what, self.parser.CurrentLineNumber)
 
 
 def _extend(known: list[Point], more: list[Point]) -> None:

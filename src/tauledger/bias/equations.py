@@ -38,7 +38,7 @@ from tauledger.circuit.elements import (
     VoltageSource,
 )
 from tauledger.devices import device_for
-from tauledger.devices.interface import AnyDevice, Card, FloatArray, Value
+from tauledger.devices.interface import AnyDevice, BoolArray, Card, FloatArray, Value
 from tauledger.problems import Problem, ProblemError, Severity
 
 IntArray = NDArray[np.intp]
@@ -50,20 +50,29 @@ Variations = Mapping[str, FloatArray]
 class Scatter:
     """Adds values into a flat array whose positions repeat, for every board at once."""
 
-    order: IntArray
-    starts: IntArray
-    targets: IntArray
+    positions: IntArray
+    layers: tuple[tuple[IntArray, IntArray], ...]
+    """Targets and where their values stand; no target repeats within a layer."""
 
     @classmethod
-    def onto(cls, positions: IntArray) -> Scatter:
-        order = np.argsort(positions, kind="stable")
-        targets, starts = np.unique(positions[order], return_index=True)
-        return cls(order, starts, targets)
+    def onto(cls, positions: IntArray, kept: BoolArray | None = None) -> Scatter:
+        """``kept`` marks the values worth adding to a batch: those outside the ground row."""
+        sources = np.arange(positions.size) if kept is None else np.flatnonzero(kept)
+        order = sources[np.argsort(positions[sources], kind="stable")]
+        targets, starts, counts = np.unique(positions[order], return_index=True, return_counts=True)
+        layers = []
+        for depth in range(counts.max(initial=0)):
+            here = counts > depth
+            layers.append((targets[here], order[starts[here] + depth]))
+        return cls(positions, tuple(layers))
 
     def add(self, flat: FloatArray, values: FloatArray) -> None:
         """``flat`` is (boards, M), ``values`` (boards or 1, number of positions)."""
-        if self.targets.size:
-            flat[:, self.targets] += np.add.reduceat(values[:, self.order], self.starts, axis=1)
+        if flat.shape[0] == 1:
+            flat[0] += np.bincount(self.positions, values[0], flat.shape[1])
+            return
+        for targets, sources in self.layers:
+            flat[:, targets] += values[:, sources]
 
 
 @dataclass(frozen=True, slots=True)
@@ -303,6 +312,7 @@ def _group(
     incidence[rows, minus] -= 1.0
     wrapped = terminals % (size + 1)
     pairs = wrapped[:, :, None] * (size + 1) + wrapped[:, None, :]
+    inside = wrapped < size
     return DeviceGroup(
         device=device,
         names=tuple(e.name for e in elements),
@@ -311,8 +321,10 @@ def _group(
         plus=terminals[:, plus],
         minus=terminals[:, minus],
         incidence=incidence,
-        matrix_scatter=Scatter.onto(pairs.ravel()),
-        vector_scatter=Scatter.onto(wrapped.ravel()),
+        matrix_scatter=Scatter.onto(
+            pairs.ravel(), (inside[:, :, None] & inside[:, None, :]).ravel()
+        ),
+        vector_scatter=Scatter.onto(wrapped.ravel(), inside.ravel()),
     )
 
 

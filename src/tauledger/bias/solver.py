@@ -1,34 +1,44 @@
 """From a circuit to its operating point: Newton, then its helps, then a clear refusal.
 
-The order is plain Newton, gmin stepping (a conductance from every node to ground, taken away
-step by step) and source stepping (the supplies brought up step by step). Each later method is
-tried only on the boards that still need it.
+The order is plain Newton, gmin stepping, source stepping and pseudo-transient continuation; each
+later method is tried only on the boards that still need it. Many boards start from the solution of
+the circuit as drawn.
 """
 
 from __future__ import annotations
 
-import dataclasses
 from collections.abc import Callable, Mapping
 from dataclasses import dataclass
 
 import numpy as np
 
+from tauledger.bias.continuation import gmin_stepping, pseudo_transient, source_stepping
+from tauledger.bias.diagnosis import explain_failure
 from tauledger.bias.equations import Equations, Variations, build_equations
 from tauledger.bias.newton import (
     Helps,
+    IntArray,
     State,
-    linearise,
     solve_newton,
     starting_state,
     take_boards,
 )
 from tauledger.bias.point import DevicePoint, OperatingPoint
-from tauledger.circuit.elements import Circuit, Element, VoltageSource
-from tauledger.devices.interface import FloatArray, OperatingValues, Value
+from tauledger.circuit.elements import Circuit
+from tauledger.devices.interface import OperatingValues, Value
 from tauledger.problems import Problem, ProblemError, Severity
 
-LARGEST_SYSTEM = 2000
-"""Unknowns; the dense solver's time grows with the cube of their number."""
+LARGEST_SYSTEM = 4000
+"""Unknowns; a dense matrix of that order takes 128 MB."""
+CHUNK_BYTES = 1 << 20
+"""Size of the matrices of the boards solved together."""
+FEWEST_WARM = 8
+"""Boards for which it pays to solve the circuit as drawn first."""
+FALLBACKS: Mapping[str, Callable[[Equations, State], State]] = {
+    "gmin stepping": gmin_stepping,
+    "source stepping": source_stepping,
+    "pseudo-transient continuation": pseudo_transient,
+}
 
 
 @dataclass(frozen=True, slots=True)
@@ -53,14 +63,14 @@ def solve_bias(
     ------
     ProblemError
         When the equations are too many or singular, or no board converges; the message names
-        the nodes and parts at fault, or the nodes that moved most.
+        the nodes and parts at fault, or the devices that moved most.
     """
     equations = build_equations(circuit, variations, temperature_c)
     if equations.size > LARGEST_SYSTEM:
         raise ProblemError(_too_large(equations))
-    state, method = _converge(equations)
+    state, method = _converge(equations, _nominal_state(circuit, equations, temperature_c))
     if not state.converged.any():
-        raise ProblemError(_explain_failure(equations, state))
+        raise ProblemError(*explain_failure(equations, state))
     figures = tuple(
         group.device.operating(group.parameters, u, circuit.gmin)
         for group, u in zip(equations.groups, state.branch_voltages, strict=True)
@@ -69,62 +79,69 @@ def solve_bias(
     return BiasSolution(point, equations, state, figures)
 
 
-def _converge(equations: Equations) -> tuple[State, str]:
-    start = _with_node_sets(equations, starting_state(equations))
-    state = solve_newton(equations, start)
+def _converge(equations: Equations, nominal: State | None) -> tuple[State, str]:
+    """All boards, in chunks that stay in the processor's cache."""
+    chunk = max(64, CHUNK_BYTES // (8 * (equations.size + 1) ** 2))
+    if equations.boards <= chunk:
+        return _converge_chunk(equations, nominal)
+    whole = starting_state(equations)
+    methods = set()
+    for first in range(0, equations.boards, chunk):
+        boards = np.arange(first, min(first + chunk, equations.boards))
+        part, method = _converge_chunk(take_boards(equations, boards), nominal)
+        _put_state(whole, boards, part)
+        methods.add(method)
+    return whole, max(methods, key=["newton", *FALLBACKS].index)
+
+
+def _converge_chunk(equations: Equations, nominal: State | None) -> tuple[State, str]:
+    state = starting_state(equations)
+    if nominal is not None:
+        state = solve_newton(equations, _repeated(nominal, equations.boards))
     method = "newton"
-    fallbacks: tuple[tuple[str, Callable[[Equations, State], State]], ...] = (
-        ("gmin stepping", _gmin_stepping),
-        ("source stepping", _source_stepping),
+    attempts: tuple[tuple[str, Callable[[Equations, State], State]], ...] = (
+        ("newton", solve_newton),
+        *FALLBACKS.items(),
     )
-    for name, fallback in fallbacks:
+    for name, attempt in attempts:
         left = np.flatnonzero(~state.converged)
         if not left.size:
             break
         part = equations if left.size == equations.boards else take_boards(equations, left)
-        found = fallback(part, _take_state(start, left))
+        found = attempt(part, _with_node_sets(part, starting_state(part)))
         if found.converged.any():
             method = name
-        state = _put_state(state, left, found)
+        _put_state(state, left, found)
     return state, method
 
 
-def _gmin_stepping(equations: Equations, start: State) -> State:
-    """Ten-fold steps from 10 mS down, halved in the exponent when one fails."""
-    state, exponent, step = start, -2.0, 1.0
-    reached = solve_newton(equations, start, Helps(node_conductance_s=10.0**exponent))
-    if not reached.converged.any():
-        return reached
-    while step > 0.02:
-        state = reached
-        if exponent <= -14.0:
-            return solve_newton(equations, state)
-        trial = solve_newton(
-            equations, state, Helps(node_conductance_s=10.0 ** (exponent - step)), 60
-        )
-        if trial.converged.sum() >= state.converged.sum():
-            reached, exponent, step = trial, exponent - step, min(1.0, 1.5 * step)
-        else:
-            step /= 4.0
-    return solve_newton(equations, state)
+def _nominal_state(
+    circuit: Circuit, equations: Equations, temperature_c: Value | None
+) -> State | None:
+    """Solution of the circuit as drawn, to start many boards from; None when it is no help."""
+    if equations.boards < FEWEST_WARM or isinstance(temperature_c, np.ndarray):
+        return None
+    nominal = build_equations(circuit, None, temperature_c)
+    if nominal.nodes != equations.nodes:
+        return None  # a varied series resistance adds nodes
+    state, _ = _converge(nominal, None)
+    return state if state.converged.all() else None
 
 
-def _source_stepping(equations: Equations, start: State) -> State:
-    """Supplies from zero to full, the step adapted to what converges."""
-    scale, step = 0.0, 0.1
-    state = solve_newton(equations, start, Helps(source_scale=0.0))
-    while scale < 1.0 and step > 1e-4:
-        target = min(1.0, scale + step)
-        trial = solve_newton(equations, state, Helps(source_scale=target), 60)
-        if trial.converged.sum() >= max(1, state.converged.sum()):
-            state, scale, step = trial, target, 2.0 * step
-        else:
-            step /= 4.0
-    return dataclasses.replace(state, converged=state.converged & (scale >= 1.0))
+def _repeated(state: State, boards: int) -> State:
+    return State(
+        np.repeat(state.unknowns, boards, axis=0),
+        tuple(np.repeat(array, boards, axis=0) for array in state.branch_voltages),
+        np.zeros(boards, dtype=bool),
+        np.repeat(state.movement, boards, axis=0),
+    )
 
 
 def _with_node_sets(equations: Equations, start: State) -> State:
-    """Begin from a solution in which the nodes of .nodeset are held at their voltages."""
+    """Begin from a solution in which the nodes of .nodeset are held at their voltages.
+
+    As in ngspice, ``.ic`` has no part in an operating point; it is for transient analysis.
+    """
     wanted: Mapping[str, float] = {
         node.lower(): value for node, value in equations.circuit.node_sets.items()
     }
@@ -135,28 +152,13 @@ def _with_node_sets(equations: Equations, start: State) -> State:
     return held if held.converged.all() else start
 
 
-def _take_state(state: State, boards: np.ndarray) -> State:
-    return State(
-        state.unknowns[boards],
-        tuple(array[boards] for array in state.branch_voltages),
-        state.converged[boards],
-        state.movement[boards],
-    )
-
-
-def _put_state(whole: State, boards: np.ndarray, part: State) -> State:
-    result = State(
-        whole.unknowns.copy(),
-        tuple(array.copy() for array in whole.branch_voltages),
-        whole.converged.copy(),
-        whole.movement.copy(),
-    )
-    result.unknowns[boards] = part.unknowns
-    result.converged[boards] = part.converged
-    result.movement[boards] = part.movement
-    for array, fresh in zip(result.branch_voltages, part.branch_voltages, strict=True):
+def _put_state(whole: State, boards: IntArray, part: State) -> None:
+    """Write the results of some boards into ``whole``, in place."""
+    whole.unknowns[boards] = part.unknowns
+    whole.converged[boards] = part.converged
+    whole.movement[boards] = part.movement
+    for array, fresh in zip(whole.branch_voltages, part.branch_voltages, strict=True):
         array[boards] = fresh
-    return result
 
 
 def _operating_point(
@@ -197,69 +199,3 @@ def _too_large(equations: Equations) -> Problem:
         None,
         "Give the netlist of the amplifier alone, without the rest of the board.",
     )
-
-
-def _explain_failure(equations: Equations, state: State) -> Problem:
-    start = starting_state(equations)
-    matrix, _ = linearise(equations, start.unknowns, start.branch_voltages)
-    size = equations.size
-    guilty = _null_space_names(equations, matrix[0, :size, :size])
-    if guilty:
-        return _singular(equations, guilty)
-    movement = np.where(np.isfinite(state.movement[0]), state.movement[0], 0.0)
-    worst = np.argsort(movement[: len(equations.nodes)])[::-1][:3]
-    names = [equations.nodes[i] for i in worst if movement[i] > 0] or list(equations.nodes[:3])
-    devices = _devices_at(equations, set(names))
-    return Problem(
-        "bias-not-found",
-        Severity.ERROR,
-        f"no operating point found; the last steps still moved {', '.join(names)}"
-        + (f" (at {', '.join(devices)})" if devices else ""),
-        None,
-        "Check the supplies and the bias network there; a .nodeset near the expected voltages "
-        "helps the solver.",
-    )
-
-
-def _null_space_names(equations: Equations, matrix: FloatArray) -> list[str]:
-    """Names of the unknowns that a singular matrix leaves undetermined; empty when it is not."""
-    scale = np.abs(matrix).max(axis=1, keepdims=True)
-    if not np.isfinite(matrix).all():
-        return []
-    _, singular, right = np.linalg.svd(matrix / np.where(scale > 0, scale, 1.0))
-    if singular[-1] > 1e-14 * singular[0]:
-        return []
-    vector = np.abs(right[-1])
-    names = (*equations.nodes, *equations.branches)
-    return [names[i] for i in np.argsort(vector)[::-1] if vector[i] > 0.3 * vector.max()][:6]
-
-
-def _singular(equations: Equations, guilty: list[str]) -> Problem:
-    branches = [name for name in guilty if name in equations.branches]
-    by_name: dict[str, Element] = {e.name: e for e in equations.circuit.elements}
-    if branches:
-        loop = all(isinstance(by_name[name], VoltageSource) for name in branches)
-        what = "voltage sources" if loop else "voltage sources, inductors or controlled sources"
-        return Problem(
-            "voltage-loop",
-            Severity.ERROR,
-            f"{', '.join(branches)} form a loop of {what} with no resistance, "
-            "so their current is not determined",
-            by_name[branches[0]].span,
-            "Put the resistance of the real part in series, or remove the duplicate source.",
-        )
-    return Problem(
-        "node-undetermined",
-        Severity.ERROR,
-        f"nothing fixes the DC voltage of {', '.join(guilty)}",
-        None,
-        "Give the node a DC path to ground, such as a bias resistor.",
-    )
-
-
-def _devices_at(equations: Equations, nodes: set[str]) -> list[str]:
-    return [
-        e.name
-        for e in equations.circuit.elements
-        if nodes & {*e.nodes} and e.name in {n for g in equations.groups for n in g.names}
-    ][:4]

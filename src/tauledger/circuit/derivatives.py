@@ -261,6 +261,15 @@ def _table(x: FloatArray, *points: FloatArray) -> _Outcome:
     return np.asarray(np.interp(x, xs, ys)), (slope, *(_ZERO,) * len(points))
 
 
+def _pwl(x: FloatArray, *points: FloatArray) -> _Outcome:
+    xs, ys = np.array(points[0::2]), np.array(points[1::2])
+    if xs.size == 1:
+        return np.full_like(x, ys[0]), (0.0, *(_ZERO,) * len(points))
+    index = np.clip(np.searchsorted(xs, x, side="right") - 1, 0, xs.size - 2)
+    slope = (np.diff(ys) / np.diff(xs))[index]
+    return np.asarray(ys[index] + slope * (x - xs[index])), (slope, *(_ZERO,) * len(points))
+
+
 def _flat(function: Callable[..., NDArray[np.generic]]) -> Callable[..., _Outcome]:
     """A function made of steps: its slope is zero wherever it has one."""
 
@@ -304,6 +313,7 @@ _RULES: dict[str, Callable[..., _Outcome]] = {
     "max": _largest,
     "limit": _limit,
     "table": _table,
+    "pwl": _pwl,
     "?:": _choose,
     "uramp": lambda x: (np.maximum(x, 0.0), (np.where(x >= 0, 1.0, 0.0),)),
     "u2": lambda x: (np.clip(x, 0.0, 1.0), (np.where((x >= 0) & (x < 1), 1.0, 0.0),)),

@@ -204,6 +204,9 @@ def _unknown(run: Expansion, scope: Scope, statement: Statement) -> None:
 
 def _call(run: Expansion, scope: Scope, statement: Statement) -> None:
     """An X element: bind nodes and parameters, then expand the body."""
+    if _is_connector(scope, statement):
+        run.leave_out(statement, "it reads as a connector", scope)
+        return
     name, (subcircuit, home), given = _called(run, scope, statement)
     _check_call(scope, statement, name, subcircuit, given)
     _warn_multiplier(run, statement, subcircuit)
@@ -233,6 +236,14 @@ def _call(run: Expansion, scope: Scope, statement: Statement) -> None:
         for item in subcircuit.parameters
     ]
     _expand(run, inner, _enter(run, inner, block, overrides, defaults))
+
+
+def _is_connector(scope: Scope, statement: Statement) -> bool:
+    """An X element of no known subcircuit whose name or designator is a connector's."""
+    words = [item.text.lower() for item in statement.items if isinstance(item, Word)]
+    if not words or words[-1] in scope.subcircuits:
+        return False
+    return words[-1].startswith("conn") or statement.name.text.lower().startswith(("xj", "xp"))
 
 
 def _called(

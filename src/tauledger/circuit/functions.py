@@ -7,7 +7,7 @@ from __future__ import annotations
 
 import itertools
 import math
-from collections.abc import Callable, Iterable, Mapping
+from collections.abc import Callable, Iterable, Mapping, Sequence
 from dataclasses import dataclass
 
 
@@ -37,18 +37,28 @@ def _nominal(nominal: float, *_: float) -> float:
 
 
 def table(x: float, *points: float) -> float:
-    xs, ys = points[0::2], points[1::2]
-    if len(xs) != len(ys):
+    """Linear between the points, level beyond them."""
+    xs = _rising(points)
+    return pwl(min(max(x, xs[0]), xs[-1]), *points)
+
+
+def pwl(x: float, *points: float) -> float:
+    """Linear between the points; the outer lines run on beyond them, as in ngspice 39."""
+    xs, ys = _rising(points), points[1::2]
+    if len(xs) == 1:
+        return ys[0]
+    index = next((i for i in range(1, len(xs)) if x <= xs[i]), len(xs) - 1)
+    share = (x - xs[index - 1]) / (xs[index] - xs[index - 1])
+    return ys[index - 1] + share * (ys[index] - ys[index - 1])
+
+
+def _rising(points: Sequence[float]) -> Sequence[float]:
+    xs = points[0::2]
+    if len(xs) * 2 != len(points):
         raise EvaluationError("table needs its points in pairs: table(x, x1, y1, x2, y2, ...)")
     if any(left >= right for left, right in itertools.pairwise(xs)):
         raise EvaluationError("table needs its x values in rising order")
-    if x <= xs[0]:
-        return ys[0]
-    for index in range(1, len(xs)):
-        if x <= xs[index]:
-            share = (x - xs[index - 1]) / (xs[index] - xs[index - 1])
-            return ys[index - 1] + share * (ys[index] - ys[index - 1])
-    return ys[-1]
+    return xs
 
 
 @dataclass(frozen=True, slots=True)
@@ -118,6 +128,7 @@ FUNCTIONS: dict[str, BuiltIn] = (
         "max": BuiltIn(2, _MANY, max),
         "limit": BuiltIn(2, 3, _limit),
         "table": BuiltIn(3, _MANY, table),
+        "pwl": BuiltIn(3, _MANY, pwl),
         "?:": BuiltIn(3, 3, lambda condition, yes, no: yes if condition else no),
         "agauss": BuiltIn(2, 3, _nominal),
         "gauss": BuiltIn(2, 3, _nominal),
@@ -135,7 +146,6 @@ SAME_FUNCTION = {
     "ternary_fcn": "?:",
     "log": "ln",
     "arctan": "atan",
-    "pwl": "table",
 }
 _BEYOND_ANALYSIS = frozenset(
     ("ddt", "idt", "sdt", "delay", "absdelay", "rand", "random", "white", "noise", "laplace")

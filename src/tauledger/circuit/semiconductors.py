@@ -109,6 +109,9 @@ def _node_count(
     last = len(words) - 1
     while last > fewest and _is_number_or_flag(words[last].text):
         last -= 1
+    if letter == "j" and last > max(_NODES[letter]):
+        run.leave_out(statement, "it reads as a connector, not as a junction FET", scope)
+        return None
     return min(last, max(_NODES[letter]))
 
 

@@ -15,9 +15,19 @@ from tauledger.configuration.files import (
     find_model_files,
     read_text,
 )
+from tauledger.configuration.parts import (
+    CAPACITOR_KEYS,
+    RESISTOR_KEYS,
+    SPREAD_KEYS,
+    TRANSISTOR_KEYS,
+    WINDOW_KEYS,
+    capacitors,
+    resistors,
+    spread,
+    transistors,
+)
 from tauledger.configuration.positions import Positions
 from tauledger.configuration.settings import (
-    CapacitorClass,
     Configuration,
     Dominance,
     GenericModels,
@@ -32,14 +42,23 @@ from tauledger.configuration.settings import (
 from tauledger.configuration.tables import EXAMPLES, Log, Table
 from tauledger.problems import Problem, ProblemError, SourceSpan
 
-SHARED_KEYS = ("supplies", "models", "temperature", "generic_models", "capacitors")
+__all__ = [
+    "CAPACITOR_KEYS",
+    "RESISTOR_KEYS",
+    "SPREAD_KEYS",
+    "TRANSISTOR_KEYS",
+    "read_configuration",
+]
+
+SHARED_KEYS = (
+    "supplies", "models", "temperature", "generic_models", "capacitors", "resistors",
+    "transistors", "spread",
+)  # fmt: skip
 """May stand at the top, for all paths, or in a path, which then counts first."""
 TOP_KEYS = ("path", *SHARED_KEYS)
 PATH_KEYS = ("netlist", "input", "output", *SHARED_KEYS, "limits")
 INPUT_KEYS = ("source", "node", "resistance")
 OUTPUT_KEYS = ("node", "load_resistance", "load_capacitance")
-CAPACITOR_KEYS = ("match", "tolerance", "rated_voltage")
-WINDOW_KEYS = ("min", "max")
 FIGURE_UNITS = {
     "midband_gain": ("dB", "V/V", "Ω"),
     "low_corner": ("Hz",),
@@ -114,7 +133,10 @@ def _shared(table: Table, folder: Path) -> PathSettings:
         models=tuple(_models(table, folder)),
         temperature=table.quantity("temperature", "°C", above=-273.15),
         generic=_generic(table),
-        capacitors=tuple(_capacitors(table)),
+        capacitors=tuple(capacitors(table)),
+        resistors=tuple(resistors(table)),
+        transistors=tuple(transistors(table)),
+        spread=spread(table),
     )
 
 
@@ -139,6 +161,9 @@ def _path(name: str, table: Table, folder: Path, shared: PathSettings) -> PathSe
         temperature=own.temperature or shared.temperature,
         generic=own.generic if "generic_models" in table.content else shared.generic,
         capacitors=(*own.capacitors, *shared.capacitors),
+        resistors=(*own.resistors, *shared.resistors),
+        transistors=(*own.transistors, *shared.transistors),
+        spread=own.spread or shared.spread,
         limits=tuple(_limits(limits)) if limits else (),
         dominance=tuple(_dominance(limits)) if limits else (),
         span=table.span,
@@ -223,35 +248,6 @@ def _generic(table: Table) -> GenericModels | None:
         if kind is not None and kind.lower() not in MODEL_KINDS:
             kinds.refuse(name, f"found {kind[:40]!r}; expected one of {', '.join(MODEL_KINDS)}")
     return GenericModels({name.lower(): kind.lower() for name, kind in found.items() if kind})
-
-
-def _capacitors(table: Table) -> Iterator[CapacitorClass]:
-    for name, inner in table.tables("capacitors", *CAPACITOR_KEYS):
-        match = tuple(pattern.lower() for pattern, _ in inner.texts("match"))
-        if "match" not in inner.content:
-            inner.missing("match", 'match = ["C1", "C2*"]')
-        rated = inner.quantity("rated_voltage", "V", above=0.0)
-        yield CapacitorClass(
-            name, match, _tolerance(inner), rated.value if rated else None, inner.span
-        )
-
-
-def _tolerance(table: Table) -> tuple[float, float] | None:
-    if not isinstance(table.content.get("tolerance"), dict):
-        both = table.quantity("tolerance", "%", least=0.0)
-        return (-both.value / 100.0, both.value / 100.0) if both else None
-    window = table.table("tolerance", *WINDOW_KEYS)
-    assert window is not None
-    low = window.quantity("min", "%", above=-100.0)
-    high = window.quantity("max", "%", above=-100.0)
-    for key in WINDOW_KEYS:
-        if key not in window.content:
-            window.missing(key, 'tolerance = { min = "-20 %", max = "80 %" }')
-    if low is None or high is None:
-        return None
-    if low.value > high.value:
-        window.refuse("min", "is above max")
-    return low.value / 100.0, high.value / 100.0
 
 
 def _limits(table: Table) -> Iterator[Limit]:

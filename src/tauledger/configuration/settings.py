@@ -15,7 +15,7 @@ class Quantity:
 
     value: float
     unit: str
-    """``Hz``, ``V``, ``A``, ``Ω``, ``F``, ``dB``, ``%``, ``°C`` or ``V/V``."""
+    """``Hz``, ``V``, ``A``, ``W``, ``Ω``, ``F``, ``dB``, ``%``, ``°C`` or ``V/V``."""
     text: str
     span: SourceSpan
 
@@ -73,6 +73,65 @@ class CapacitorClass:
     """Lowest and highest relative deviation, such as (−0.2, 0.8)."""
     rated_voltage_v: float | None
     span: SourceSpan
+    matched: float | None = None
+    """How far its parts differ among themselves, ± relative; None when they are independent."""
+    polarised: bool | None = None
+    """None when the configuration does not say."""
+    series: str = ""
+    """Values to choose from, such as ``E6``; empty when the configuration does not say."""
+    values_f: tuple[float, ...] = ()
+    """Values at hand, ascending; they count before the series."""
+    dielectric: str = ""
+    """EIA code of a ceramic dielectric, such as ``X7R``."""
+    bias_curve: tuple[tuple[float, float], ...] = ()
+    """(V, relative change of the capacitance), ascending in voltage."""
+    temperature_curve: tuple[tuple[float, float], ...] = ()
+    """(°C, relative change of the capacitance), ascending in temperature."""
+
+
+@dataclass(frozen=True, slots=True)
+class ResistorClass:
+    """Tolerance and rating of the resistors whose designators match."""
+
+    name: str
+    match: tuple[str, ...]
+    tolerance: tuple[float, float] | None
+    rated_power_w: float | None
+    matched: float | None
+    span: SourceSpan
+
+
+@dataclass(frozen=True, slots=True)
+class TransistorClass:
+    """How far the transistors whose designators match stray from their model card."""
+
+    name: str
+    match: tuple[str, ...]
+    current_gain: tuple[float, float] | None
+    """Relative, of the model's forward current gain."""
+    base_emitter_voltage_v: tuple[float, float] | None
+    """Shift of VBE at a given current."""
+    drain_current: tuple[float, float] | None
+    """Relative, of a JFET's IDSS."""
+    pinch_off: tuple[float, float] | None
+    """Relative, of a JFET's pinch-off voltage, IDSS unchanged."""
+    threshold_voltage_v: tuple[float, float] | None
+    """Shift of a MOSFET's threshold."""
+    matched: bool
+    """Whether all of them stray alike."""
+    span: SourceSpan
+
+
+@dataclass(frozen=True, slots=True)
+class SpreadSettings:
+    """How boards differ beyond their parts."""
+
+    distribution: str
+    """``uniform``, ``normal`` or ``truncated``; empty when the configuration does not say."""
+    supply: tuple[float, float] | None
+    """Relative, of every DC voltage source on its own."""
+    temperature_c: tuple[float, float] | None
+    span: SourceSpan
 
 
 @dataclass(frozen=True, slots=True)
@@ -125,6 +184,11 @@ class PathSettings:
     limits: tuple[Limit, ...] = ()
     dominance: tuple[Dominance, ...] = ()
     span: SourceSpan | None = None
+    resistors: tuple[ResistorClass, ...] = ()
+    """The first class that matches counts."""
+    transistors: tuple[TransistorClass, ...] = ()
+    """The first class that matches counts."""
+    spread: SpreadSettings | None = None
 
 
 @dataclass(frozen=True, slots=True)

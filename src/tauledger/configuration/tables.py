@@ -14,7 +14,7 @@ from tauledger.quantity import parse_si
 
 EXAMPLES = {
     "Hz": "20 Hz", "V": "12 V", "A": "1.5 mA", "Ω": "10 kΩ", "F": "220 pF", "dB": "26 dB",
-    "%": "20 %", "°C": "25 °C", "V/V": "20 V/V",
+    "%": "20 %", "°C": "25 °C", "V/V": "20 V/V", "W": "0.25 W",
 }  # fmt: skip
 _KINDS = {
     dict: "a table", list: "a list", str: "text", bool: "true or false", int: "a number",

@@ -40,9 +40,6 @@ class Passband:
 
     midband_hz: float
     flat: bool
-    reaches_dc: bool
-    """True when the stretch runs down to the lowest frequency swept."""
-    reaches_top: bool
 
 
 def sweep_response(response: Response, natural_frequencies: ComplexArray) -> Sweep:
@@ -91,8 +88,6 @@ def find_passband(sweep: Sweep) -> Passband:
         if flat.any()
         else float(sweep.frequency_hz[best]),
         flat=bool(flat.any()),
-        reaches_dc=begin == 0,
-        reaches_top=end == last,
     )
 
 
@@ -136,11 +131,11 @@ def find_edge(response: Response, sweep: Sweep, midband_hz: float, *, upward: bo
     def excess(log_frequency: float) -> float:
         return math.log(max(response.magnitude(math.exp(log_frequency)), 1e-300) / target)
 
-    root = _false_position(excess, math.log(inside), math.log(float(frequency[outer])))
+    root = false_position(excess, math.log(inside), math.log(float(frequency[outer])))
     return math.exp(root)
 
 
-def _false_position(function: Callable[[float], float], inside: float, outside: float) -> float:
+def false_position(function: Callable[[float], float], inside: float, outside: float) -> float:
     """Illinois variant of the false-position method; ``function`` is ≥ 0 inside, < 0 outside."""
     a, b = inside, outside
     fa, fb = function(a), function(b)

@@ -31,7 +31,12 @@ class Ends:
 
 
 def divide_ends(
-    response: Response, sides: Sides, edges: tuple[float | None, ...], held: HeldPairs
+    response: Response,
+    sides: Sides,
+    edges: tuple[float | None, ...],
+    held: HeldPairs,
+    *,
+    shaped: bool,
 ) -> Ends:
     """Leave out what has no effect, and set in-band parts aside.
 
@@ -40,7 +45,7 @@ def divide_ends(
     """
     low, idle_low = _effective_low(response, sides.midband.low, sides.high, held)
     high, idle_high = _effective_high(sides.midband.high)
-    middle_low, middle_high = (_in_band(model, edges) for model in (low, high))
+    middle_low, middle_high = (_in_band(model, edges, any_step=shaped) for model in (low, high))
     in_band = [(low, i) for i in middle_low] + [(high, i) for i in middle_high]
     if in_band:
         low_rest = [part for i, part in enumerate(low.parts) if i not in middle_low]
@@ -53,8 +58,8 @@ def divide_ends(
     return Ends(low, high, tuple(in_band), (*idle_low, *idle_high))
 
 
-def _in_band(model: EndModel, edges: tuple[float | None, ...]) -> list[int]:
-    """Parts that step the gain by less than 3 dB well inside the passband."""
+def _in_band(model: EndModel, edges: tuple[float | None, ...], *, any_step: bool) -> list[int]:
+    """Parts that step the gain well inside the passband, by less than 3 dB unless told."""
     if not model.parts:
         return []
     low_hz, high_hz = edges
@@ -64,7 +69,7 @@ def _in_band(model: EndModel, edges: tuple[float | None, ...]) -> list[int]:
     inside = (corner_hz > IN_BAND_FACTOR * (low_hz or 0.0)) & (
         corner_hz < (high_hz or math.inf) / IN_BAND_FACTOR
     )
-    return [int(i) for i in np.flatnonzero(small & inside)]
+    return [int(i) for i in np.flatnonzero((small | any_step) & inside)]
 
 
 def _effective_low(

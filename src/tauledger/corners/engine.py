@@ -4,12 +4,13 @@ from __future__ import annotations
 
 import math
 from collections.abc import Iterable, Sequence
+from dataclasses import dataclass
 
 import numpy as np
 
 from tauledger.corners.accounts import idle_account, part_accounts, summands, total
 from tauledger.corners.band import Passband, Sweep, find_edge, find_passband, sweep_response
-from tauledger.corners.effects import divide_ends
+from tauledger.corners.effects import IN_BAND_FACTOR, divide_ends
 from tauledger.corners.estimates import Bounds, Estimate, Roots, best_estimate, rigorous_bounds
 from tauledger.corners.model import Corner, Corners, PartAccount
 from tauledger.corners.ports import EndModel
@@ -26,8 +27,10 @@ from tauledger.corners.sides import (
     HeldPairs,
     Sides,
     as_one,
+    impedance_seen,
     merge_parallel,
     part_out_held,
+    ratio_at_midband,
     split_sides,
 )
 from tauledger.smallsignal.network import ReactivePart
@@ -42,6 +45,9 @@ TIE_MARGIN = 0.2
 """Parts that move a corner by amounts closer than this cannot be told apart within usual part
 tolerance (±10 to ±20 %; common practice, no source)."""
 LEAST_MOVE = 0.01
+TRANSISTOR_CAPACITANCES = {"Cπ", "Cμ", "Cμx", "Cgs", "Cgd", "Cds"}
+SHORTEST_SWEEP = 12
+"""Points of the sweep that must be left to look for a passband in."""
 TWO_PI = 2.0 * math.pi
 
 
@@ -50,6 +56,7 @@ def find_corners(
     parts: Sequence[ReactivePart],
     fixed_voltage_pairs: HeldPairs,
     supply_pairs: HeldPairs,
+    midband_hz: float | None = None,
 ) -> Corners:
     """Analyse one signal path.
 
@@ -64,8 +71,12 @@ def find_corners(
     supply_pairs
         Those of them whose source does not carry the signal, so that the two nodes are one
         for the signal.
+    midband_hz
+        Where to judge the gain, when the path is not meant to be flat; the corners then are
+        where the gain has fallen by 3 dB from there, and what shapes the response between them
+        is in-band.
     """
-    path = _survey(response, parts)
+    path = _survey(response, parts, midband_hz)
     if not path.passband.flat or path.exact_gain == 0.0:
         return _without_estimate(path, passband_notes(path.passband, path.exact_gain))
     free, across_source = part_out_held(parts, fixed_voltage_pairs)
@@ -79,7 +90,9 @@ def find_corners(
                 "reaches the output; only exact figures are given",
             ),
         )
-    ends = divide_ends(response, sides, path.edges, fixed_voltage_pairs)
+    ends = divide_ends(
+        response, sides, path.edges, fixed_voltage_pairs, shaped=midband_hz is not None
+    )
     accounts = part_accounts(path.passband.midband_hz, ends, sides.looped, groups)
     accounts += [idle_account(part, "straight across a source: no pole") for part in across_source]
     in_band = [model.parts[i].name for model, i in ends.in_band]
@@ -97,36 +110,57 @@ def find_corners(
     )
 
 
+@dataclass(frozen=True, slots=True)
 class _Path:
     """What the exact response alone tells; gathered once and handed on."""
 
-    __slots__ = ("edges", "exact_gain", "natural", "parts", "passband", "response", "sweep")
-
-    def __init__(
-        self,
-        response: Response,
-        parts: Sequence[ReactivePart],
-        natural: ComplexArray,
-        sweep: Sweep,
-        passband: Passband,
-        edges: tuple[float | None, float | None],
-        exact_gain: float,
-    ) -> None:
-        self.response, self.parts, self.natural = response, parts, natural
-        self.sweep, self.passband, self.edges = sweep, passband, edges
-        self.exact_gain = exact_gain
+    response: Response
+    parts: tuple[ReactivePart, ...]
+    natural: ComplexArray
+    sweep: Sweep
+    passband: Passband
+    edges: tuple[float | None, float | None]
+    exact_gain: float
 
 
-def _survey(response: Response, parts: Sequence[ReactivePart]) -> _Path:
+def _survey(response: Response, parts: Sequence[ReactivePart], midband_hz: float | None) -> _Path:
     natural = natural_frequencies(response.conductance, response.reactance)
     sweep = sweep_response(response, natural)
-    passband = find_passband(sweep)
+    passband = (
+        _transistor_passband(response, parts, sweep)
+        if midband_hz is None
+        else Passband(midband_hz, True)
+    )
     exact_gain = response.magnitude(passband.midband_hz)
     low, high = (
         find_edge(response, sweep, passband.midband_hz, upward=up) if exact_gain > 0 else None
         for up in (False, True)
     )
-    return _Path(response, parts, natural, sweep, passband, (low, high), exact_gain)
+    return _Path(response, tuple(parts), natural, sweep, passband, (low, high), exact_gain)
+
+
+def _transistor_passband(
+    response: Response, parts: Sequence[ReactivePart], sweep: Sweep
+) -> Passband:
+    """The passband, looked for below where the transistors' own capacitances are shorts.
+
+    A transistor that is saturated or switched off still passes signal through Cμ at very high
+    frequency; that is not where the amplifier is used.
+    """
+    own = [part for part in parts if part.symbol in TRANSISTOR_CAPACITANCES]
+    passband = find_passband(sweep)
+    for _ in range(3):
+        frequency = passband.midband_hz
+        ratio = ratio_at_midband(own, impedance_seen(response, own, frequency), frequency)
+        if not (ratio > 1.0).any():
+            break
+        limit = frequency / float(ratio.max()) / IN_BAND_FACTOR
+        below = sweep.frequency_hz < limit
+        if below.sum() < SHORTEST_SWEEP:
+            break
+        sweep = Sweep(sweep.frequency_hz[below], sweep.transfer[below])
+        passband = find_passband(sweep)
+    return passband
 
 
 def _sides(path: _Path, parts: Sequence[ReactivePart], held: HeldPairs) -> Sides | None:
@@ -134,7 +168,7 @@ def _sides(path: _Path, parts: Sequence[ReactivePart], held: HeldPairs) -> Sides
         sides = split_sides(path.response, parts, path.passband.midband_hz, held)
     except np.linalg.LinAlgError:
         return None
-    return sides if sides.midband.gain != 0.0 else None
+    return sides if abs(sides.midband.gain) > 1e-6 * path.exact_gain else None
 
 
 def _corner(path: _Path, model: EndModel, in_band: Sequence[str]) -> Corner:
@@ -146,7 +180,7 @@ def _corner(path: _Path, model: EndModel, in_band: Sequence[str]) -> Corner:
         estimate_hz = (whole if model.low else 1.0 / whole) / TWO_PI
     better: Estimate | None = None
     bounds = Bounds(None, None)
-    if estimate_hz is not None:
+    if estimate_hz is not None and not in_band:
         better = best_estimate(model, roots, estimate_hz)
         bounds = rigorous_bounds(model, roots, estimate_hz)
     movers = _movers(path, exact_hz)
@@ -170,7 +204,7 @@ def _corner(path: _Path, model: EndModel, in_band: Sequence[str]) -> Corner:
         lowest_hz=bounds.lowest_hz,
         highest_hz=bounds.highest_hz,
         movers=movers,
-        changes=what_if(model, roots, exact_hz, [name for name, _ in movers[:2]]),
+        changes=what_if(model, exact_hz, [name for name, _ in movers[:2]]),
         timing=timing_notes(model, roots, exact_hz, path.natural),
     )
 

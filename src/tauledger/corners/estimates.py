@@ -20,13 +20,15 @@ from dataclasses import dataclass
 
 import numpy as np
 
+from tauledger.corners.band import HALF_POWER, false_position
 from tauledger.corners.ports import EndModel
 from tauledger.smallsignal.response import ComplexArray
 
 TWO_PI = 2.0 * math.pi
-REAL_TOLERANCE = 1e-6
-GRID_PER_DECADE = 20
-ORDER_TOLERANCE = 0.05
+REAL_TOLERANCE = 1e-4
+"""Equal real poles come out of the eigenvalue routine as a ring of about this width."""
+EDGE_DECADES, EDGE_POINTS = 2.0, 49
+ORDER_TOLERANCE = 0.03
 """Largest third-order term, relative to the first-order one at the corner, that a second-order
 fit may leave out."""
 
@@ -68,7 +70,7 @@ def best_estimate(model: EndModel, roots: Roots, sum_hz: float) -> Estimate:
     second = _second_order(denominator, numerator)
     if second is not None and _higher_terms_small(denominator, numerator, second):
         return Estimate(_from_normalised(second, model), "second order with zeros")
-    edge = model_edge_hz(roots, low=model.low)
+    edge = model_edge_hz(model, sum_hz)
     if edge is not None:
         return Estimate(edge, "all poles and zeros of this end")
     return Estimate(sum_hz, "sum of time constants")
@@ -90,40 +92,29 @@ def rigorous_bounds(model: EndModel, roots: Roots, sum_hz: float) -> Bounds:
     return Bounds(max(sum_hz, root * math.sqrt(math.log(2.0))), root)
 
 
-def model_edge_hz(roots: Roots, *, low: bool) -> float | None:
-    """−3 dB frequency of the end's own model, every order; None when it does not fall so far.
+def model_edge_hz(model: EndModel, near_hz: float) -> float | None:
+    """−3 dB frequency of the end's own model, every order, within two decades of ``near_hz``.
 
     The other end is taken at midband, so this differs from the exact corner by the overlap.
+    None when the gain does not cross −3 dB there.
     """
-    sizes = np.abs(np.concatenate([roots.poles, roots.zeros]))
-    sizes = sizes[sizes > 0]
-    if not roots.poles.size or not sizes.size:
+    if not model.parts:
         return None
-    start, stop = math.log10(float(sizes.min())) - 1.5, math.log10(float(sizes.max())) + 1.5
-    span = np.logspace(start, stop, int((stop - start) * GRID_PER_DECADE) + 2)
-    below = np.flatnonzero(_log_gain(span, roots, low=low) < -0.5 * math.log(2.0))
+    omega = TWO_PI * near_hz * np.logspace(-EDGE_DECADES, EDGE_DECADES, EDGE_POINTS)
+    below = np.flatnonzero(model.relative_gain(omega) < HALF_POWER)
     if not below.size:
         return None
-    outer = int(below[-1] if low else below[0])
-    inner = outer + (1 if low else -1)
-    if not 0 <= inner < span.size:
+    outer = int(below[-1] if model.low else below[0])
+    inner = outer + (1 if model.low else -1)
+    if not 0 <= inner < omega.size:
         return None
-    inside, outside = float(span[inner]), float(span[outer])
-    while abs(outside / inside - 1.0) > 1e-8:
-        middle = math.sqrt(inside * outside)
-        if _log_gain(np.array([middle]), roots, low=low)[0] >= -0.5 * math.log(2.0):
-            inside = middle
-        else:
-            outside = middle
-    return math.sqrt(inside * outside) / TWO_PI
 
+    def excess(log_omega: float) -> float:
+        gain = float(model.relative_gain(np.array([math.exp(log_omega)]))[0])
+        return math.log(max(gain, 1e-300) / HALF_POWER)
 
-def _log_gain(omega: np.ndarray, roots: Roots, *, low: bool) -> np.ndarray:
-    """ln |H/H₀| of the end model on the imaginary axis."""
-    s = 1j * omega[:, None]
-    top = 1.0 - roots.zeros[None, :] / s if low else 1.0 - s / roots.zeros[None, :]
-    bottom = 1.0 - roots.poles[None, :] / s if low else 1.0 - s / roots.poles[None, :]
-    return np.asarray(np.log(np.abs(top)).sum(axis=1) - np.log(np.abs(bottom)).sum(axis=1))
+    ends = math.log(float(omega[inner])), math.log(float(omega[outer]))
+    return math.exp(false_position(excess, *ends)) / TWO_PI
 
 
 def _coefficients(roots: ComplexArray, model: EndModel) -> tuple[float, float, float]:

@@ -83,12 +83,12 @@ class Workbench:
         """
         pairs = [*self.held, *shorted, *(self.inner if ideal else ())]
         resistors = list(self.resistors)
-        for device in self.devices:
-            if device.name == dead:
-                resistors += device.passive()
+        dead_devices = [d for d in self.devices if d.name == dead or d.transconductance <= 0.0]
+        for device in dead_devices:
+            resistors += device.passive()
         return SignalNetwork(
             resistors,
-            [device for device in self.devices if device.name != dead],
+            [device for device in self.devices if device not in dead_devices],
             merge_nodes(pairs),
             {node: name for node, name in self.opaque.items() if name != dead},
         )

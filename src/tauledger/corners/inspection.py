@@ -299,7 +299,7 @@ class SignalNetwork:
         else:
             into = divided(whole, device.beta_plus_one, f"({device.s('β')}+1)")
         ratio = above.value / device.output_resistance_ohm
-        text = f"{above.text if above.binding > 1 else f'({above.text})'}/{device.s('ro')}"
+        text = f"{above.within(3)}/{device.s('ro')}"
         return increased(into, ratio, text) if ratio < LARGEST_COLLECTOR_RATIO else into
 
 

@@ -126,6 +126,19 @@ class EndModel:
         )
         return np.asarray(self.gain + step)
 
+    def relative_gain(self, omega: FloatArray) -> FloatArray:
+        """|H/H₀| of this end's model at angular frequencies (F,), the other end at midband."""
+        s = 1j * omega[:, None, None]
+        if self.low:
+            system = s * np.diag(self.values) + self.matrix
+            drive, sense = self.inward, self.outward
+        else:
+            system = np.eye(self.values.size) + s * (self.matrix * self.values[None, :])
+            drive, sense = self.inward, self.outward * self.values
+        right = np.broadcast_to(drive[:, None], (omega.size, drive.size, 1))
+        state = np.linalg.solve(system, right)[:, :, 0] @ sense
+        return np.asarray(np.abs(1.0 + (state if self.low else s[:, 0, 0] * state) / self.gain))
+
     def own_zero(self) -> FloatArray:
         """(K,): the zero each part makes with the others at midband state, rad/s, sign kept.
 

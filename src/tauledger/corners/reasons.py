@@ -155,11 +155,9 @@ def _difference_notes(
     return notes
 
 
-def what_if(
-    model: EndModel, roots: Roots, exact_hz: float | None, names: Sequence[str]
-) -> tuple[str, ...]:
+def what_if(model: EndModel, exact_hz: float | None, names: Sequence[str]) -> tuple[str, ...]:
     """What doubling or halving a leading part does to the corner, by the end's own model."""
-    before = model_edge_hz(roots, low=model.low) if exact_hz is not None else None
+    before = model_edge_hz(model, exact_hz) if exact_hz is not None else None
     if before is None or exact_hz is None:
         return ()
     sentences = []
@@ -168,8 +166,7 @@ def what_if(
         factor, sign = (2.0, "×") if model.low != part.is_inductor else (0.5, "/")
         values = model.values.copy()
         values[i] *= factor
-        changed = Roots.of(replace(model, values=values))
-        after = model_edge_hz(changed, low=model.low)
+        after = model_edge_hz(replace(model, values=values), exact_hz)
         new = format_quantity(exact_hz * after / before, "Hz") if after else "no corner"
         sentences.append(f"{part.name} {sign} 2: {format_quantity(exact_hz, 'Hz')} → {new}")
     return tuple(sentences)

@@ -37,7 +37,7 @@ def stage_formulas(
     midband = corners.midband
     short = [(p.positive, p.negative) for p in midband.low.parts if not p.is_inductor]
     short += [(p.positive, p.negative) for p in midband.high.parts if p.is_inductor]
-    devices = {device.name: device for device in bench.devices}
+    devices = {d.name: d for d in bench.devices if d.transconductance > 0.0}
     plain, full = (bench.network(short, ideal=ideal) for ideal in (True, False))
     formulas = []
     for stage in topology.stages:

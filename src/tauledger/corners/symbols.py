@@ -41,7 +41,7 @@ def series(*terms: Term) -> Term:
     """Sum; terms that hardly count are left out."""
     if any(math.isinf(term.value) for term in terms):
         return OPEN
-    kept = _matter([term for term in terms if term.value != 0.0], math.fsum)
+    kept = _matter([term for term in terms if term.value != 0.0], _resistance)
     if not kept:
         return GROUND
     if len(kept) == 1:
@@ -54,7 +54,7 @@ def parallel(*terms: Term) -> Term:
     """Parallel connection; branches that hardly count are left out."""
     if any(term.value == 0.0 for term in terms):
         return GROUND
-    kept = _matter([term for term in terms if not math.isinf(term.value)], _parallel_value)
+    kept = _matter([term for term in terms if not math.isinf(term.value)], _conductance)
     if not kept:
         return OPEN
     if len(kept) == 1:
@@ -120,20 +120,30 @@ def _abbreviations(terms: Sequence[Term]) -> tuple[str, ...]:
     return tuple(dict.fromkeys(text for term in terms for text in term.where))
 
 
-def _matter(terms: Sequence[Term], combine: Callable[[Sequence[float]], float]) -> list[Term]:
-    """Leave out, least important first, what together changes the value by under a per cent."""
-    kept = list(terms)
-    whole = combine([term.value for term in kept]) if kept else 0.0
-    while len(kept) > 1:
-        changes = [
-            abs(combine([t.value for t in kept if t is not term]) / whole - 1.0) for term in kept
-        ]
-        least = min(range(len(kept)), key=changes.__getitem__)
-        if changes[least] >= NEGLIGIBLE:
+def _matter(terms: Sequence[Term], weight: Callable[[float], float]) -> list[Term]:
+    """Leave out, least important first, what changes the value by under a per cent.
+
+    ``weight`` gives what adds up: the resistance in series, the conductance in parallel.
+    """
+    kept = sorted(terms, key=lambda term: weight(term.value))
+    total = math.fsum(weight(term.value) for term in kept)
+    dropped = 0
+    while len(kept) - dropped > 1:
+        rest = total - weight(kept[dropped].value)
+        if abs(total / rest - 1.0) >= NEGLIGIBLE:
             break
-        del kept[least]
-    return kept
+        total, dropped = rest, dropped + 1
+    important = {id(term) for term in kept[dropped:]}
+    return [term for term in terms if id(term) in important]
 
 
 def _parallel_value(values: Sequence[float]) -> float:
     return 1.0 / math.fsum(1.0 / value for value in values)
+
+
+def _resistance(value: float) -> float:
+    return value
+
+
+def _conductance(value: float) -> float:
+    return 1.0 / value

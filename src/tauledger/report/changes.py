@@ -2,10 +2,13 @@
 
 from __future__ import annotations
 
+from tauledger.report.inert import clip
 from tauledger.report.layout import BLANK, Column, Line, Piece, Row, paragraph, table
 from tauledger.report.page import Page
 from tauledger.report.wording import (
     change,
+    kind_text,
+    moves,
     part_name,
     part_text,
     place,
@@ -31,7 +34,8 @@ def comparison_section(page: Page, comparison: Comparison | None) -> list[Line]:
     """The part of a report that says what changed since another revision."""
     if comparison is None:
         return []
-    heading = page.heading(page.text(f"Changes since {comparison.old}"))
+    room = page.width - len("Changes since  ")
+    heading = page.heading(f"Changes since {clip(page.text(comparison.old), room)}")
     return [heading, *_body(page, comparison)]
 
 
@@ -45,7 +49,7 @@ def _body(page: Page, comparison: Comparison) -> list[Line]:
     lines += _parts(page, comparison)
     lines += _words(page, comparison)
     lines += _figures(page, comparison)
-    for attribution in comparison.attributions:
+    for attribution in moves(comparison):
         lines += _attribution(page, attribution)
     return lines
 
@@ -63,7 +67,7 @@ def _parts(page: Page, comparison: Comparison) -> list[Line]:
         Row(
             (
                 page.text(part_name(row)),
-                page.text(row.kind if row.electrical else f"{row.kind}, not electrically"),
+                page.text(kind_text(row)),
                 page.text(part_text(row)),
                 page.text(place(row)),
             )

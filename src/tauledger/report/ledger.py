@@ -135,6 +135,8 @@ def _better(page: Page, corner: CornerRow) -> list[Line]:
         if corner.improved_error is not None:
             text += f" ({page.signed_percent(corner.improved_error)})"
     low, high = corner.lowest_hz, corner.highest_hz
+    if low is not None and high is not None and high / low - 1.0 < _CLOSE:
+        low = high = None
     if low is not None or high is not None:
         words = [f"above {page.quantity(low, 'Hz')}"] if low is not None else []
         words += [f"below {page.quantity(high, 'Hz')}"] if high is not None else []

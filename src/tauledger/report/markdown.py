@@ -9,7 +9,6 @@ from __future__ import annotations
 from collections import Counter
 from collections.abc import Iterator, Sequence
 
-from tauledger import __version__
 from tauledger.problems import Severity
 from tauledger.quantity import format_quantity
 from tauledger.report.bode import bode_sketch
@@ -18,6 +17,7 @@ from tauledger.report.markup import code, details, html_code, sentence, table
 from tauledger.review.check import Finding, NetlistCheck, distinct_findings, exit_code
 from tauledger.review.limits import LimitRow
 from tauledger.review.rows import CornerRow, PathRow, Review, TimeConstantRow
+from tauledger.version import VERSION
 
 MOST_CHARACTERS = 60_000
 _ROWS_SHOWN = 60
@@ -32,7 +32,7 @@ _CAUTION = (
 def markdown_report(checks: Sequence[NetlistCheck], threshold: Severity) -> str:
     """The whole report; ``threshold`` is the severity from which a finding fails the check."""
     sections = [*_head(checks, threshold), *_bodies(checks)]
-    footer = f"{_CAUTION}\ntauledger {sentence(__version__)}\n"
+    footer = f"{_CAUTION}\ntauledger {sentence(VERSION)}\n"
     room = MOST_CHARACTERS - len(footer) - _CUT_RESERVE
     kept: list[str] = []
     for index, section in enumerate(sections):
@@ -128,8 +128,8 @@ def _limits(rows: Sequence[tuple[NetlistCheck, LimitRow]]) -> str:
             code(one.path),
             sentence(row.figure),
             _quantity(row.value, "" if row.unit == "V/V" else row.unit),
-            sentence(row.minimum) or "—",
-            sentence(row.maximum) or "—",
+            sentence(row.minimum),
+            sentence(row.maximum),
             row.verdict if row.verdict == "met" else f"**{row.verdict}**",
             ", ".join(code(part) for part in row.part.split(", ") if part) or "—",
         )
@@ -206,7 +206,7 @@ def _bias(review: Review) -> str:
             code(row.name),
             sentence(row.type),
             code(row.model),
-            sentence(row.configuration) or "—",
+            sentence(row.configuration),
             row.region if row.region == "active" else f"**{sentence(row.region)}**",
             _quantity(row.current_a, "A"),
             _quantity(row.voltage_v, "V"),
@@ -223,7 +223,7 @@ def _bias(review: Review) -> str:
 def _constants(row: PathRow) -> str:
     heads = ("end", "part", "role", "value", "sees", "expression", "τ", "corner", "share", "why")
     cells = [
-        (*_constant(entry), sentence(entry.reason, 200) or "—")
+        (*_constant(entry), sentence(entry.reason, 200))
         for entry in row.time_constants[:_ROWS_SHOWN]
     ]
     return table(heads, cells, (3, 4, 6, 7, 8)) + _more(len(row.time_constants), "parts")

@@ -7,6 +7,8 @@ from collections.abc import Iterator
 from tauledger.report.markup import code, details, sentence, table
 from tauledger.report.wording import (
     change,
+    kind_text,
+    moves,
     part_name,
     part_text,
     place,
@@ -35,7 +37,7 @@ def _blocks(comparison: Comparison) -> Iterator[str]:
         yield "".join(f"- {sentence(line)}\n" for line in lines[:_PARTS_SHOWN])
     if comparison.parts:
         yield _parts(comparison)
-    for attribution in comparison.attributions:
+    for attribution in moves(comparison):
         yield _attribution(attribution)
     if comparison.electrical:
         yield details("All figures, old and new", _figures(comparison))
@@ -45,7 +47,7 @@ def _parts(comparison: Comparison) -> str:
     rows = [
         (
             code(part_name(row)),
-            row.kind if row.electrical else f"{row.kind}, not electrically",
+            kind_text(row),
             sentence(part_text(row), 200),
             code(place(row)),
         )

@@ -34,8 +34,8 @@ def code(text: str, columns: int = _NAME_COLUMNS) -> str:
 
 
 def sentence(text: str, columns: int = _SENTENCE_COLUMNS) -> str:
-    """Words as they are, inert."""
-    broken = _LINKED.sub(_BREAK, _without_bars(clip(inert(text), columns)))
+    """Words as they are, inert; none are a dash."""
+    broken = _LINKED.sub(_BREAK, _without_bars(clip(inert(text), columns)).strip()) or "—"
     # A dollar sign in an element of its own opens no formula.
     return _ACTIVE.sub(r"\\\1", _html(broken)).replace("$", "<span>$</span>")
 

@@ -12,11 +12,11 @@ from pathlib import Path, PurePath
 from typing import Any
 from urllib.parse import quote
 
-from tauledger import __version__
 from tauledger.problems import Severity
 from tauledger.report.inert import clip, inert
 from tauledger.report.places import fingerprints, place_of, relative_path
 from tauledger.review.check import Finding, NetlistCheck, describe, distinct_findings
+from tauledger.version import VERSION
 
 _SCHEMA = "https://docs.oasis-open.org/sarif/sarif/v2.1.0/os/schemas/sarif-schema-2.1.0.json"
 _LEVELS = {Severity.ERROR: "error", Severity.WARNING: "warning", Severity.NOTE: "note"}
@@ -34,7 +34,7 @@ def sarif_log(checks: Sequence[NetlistCheck], folder: Path) -> str:
         "tool": {
             "driver": {
                 "name": "tauledger",
-                "semanticVersion": __version__,
+                "semanticVersion": VERSION,
                 "rules": list(rules.values()),
             }
         },

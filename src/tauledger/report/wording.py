@@ -19,22 +19,33 @@ NO_CHANGE = "no electrical change"
 _DETAILS_SHOWN = 6
 _SMALL = 5e-4
 """Relative changes below this print as such."""
+_SMALL_DB = 0.005
 _SHARE_NAMED = 0.1
 
 
 def verdict(comparison: Comparison) -> list[str]:
-    """The answer in a sentence for every figure that moved."""
+    """The answer in a sentence for every corner and gain that moved."""
     if not comparison.electrical:
         renamed = sum(row.kind == "renamed" for row in comparison.parts)
         if not renamed:
             return [NO_CHANGE]
         return [f"{NO_CHANGE}; {renamed} part{'s' if renamed > 1 else ''} renamed"]
-    sentences = [_moved(attribution) for attribution in comparison.attributions]
+    sentences = [_moved(attribution) for attribution in moves(comparison)]
     if sentences:
         return sentences
-    if all(row.difference == 0.0 for row in comparison.figures):
-        return ["parts changed; no figure moved with them"]
+    if comparison.attributions or all(row.difference == 0.0 for row in comparison.figures):
+        return ["parts changed; neither the corners nor the gain moved by 0.05 %"]
     return ["neither the corners nor the gain can be laid on the edits; see the figures"]
+
+
+def moves(comparison: Comparison) -> list[Attribution]:
+    """The attributions of moves large enough to print; JSON has the others too."""
+    return [
+        attribution
+        for attribution in comparison.attributions
+        if abs(attribution.new - attribution.old)
+        >= (_SMALL_DB if attribution.unit == "dB" else _SMALL * abs(attribution.old))
+    ]
 
 
 def _moved(attribution: Attribution) -> str:
@@ -77,11 +88,20 @@ def part_name(row: PartChange) -> str:
     return row.new_name or row.old_name
 
 
+def kind_text(row: PartChange) -> str:
+    """What happened to the part; a change that the equations do not see is marked so."""
+    return row.kind if row.electrical or row.kind == "renamed" else f"{row.kind}, not electrically"
+
+
 def part_text(row: PartChange) -> str:
     """What differs, in words."""
-    shown = [_detail(detail, row.kind) for detail in row.details[:_DETAILS_SHOWN]]
-    if len(row.details) > _DETAILS_SHOWN:
-        shown.append(f"{len(row.details) - _DETAILS_SHOWN} more")
+    details = row.details
+    if any(detail.what == "model" for detail in details):
+        # Another model says it; its parameters are in JSON.
+        details = tuple(detail for detail in details if not detail.what.startswith("model "))
+    shown = [_detail(detail, row.kind) for detail in details[:_DETAILS_SHOWN]]
+    if len(details) > _DETAILS_SHOWN:
+        shown.append(f"{len(details) - _DETAILS_SHOWN} more")
     text = "; ".join(shown)
     if row.kind in ("added", "removed"):
         return f"{row.part}, {text}" if text else row.part

@@ -13,45 +13,39 @@ alone_1 + last_2 = Δ.
 
 from __future__ import annotations
 
-from collections.abc import Callable, Sequence
+from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass
 
 from tauledger.circuit.elements import Circuit
 from tauledger.review.changes import Attribution, EditEffect
 from tauledger.review.edits import Edit, apply
-from tauledger.review.rows import PathRow
 
 MAXIMUM_EDITS = 40
 """Attributed one by one; two circuits are solved for each."""
 
-Solve = Callable[[Circuit], PathRow | None]
-"""The signal path of a circuit, or None when it cannot be solved."""
-_SAME = 1e-9
+FIGURES = (("low corner", "Hz"), ("high corner", "Hz"), ("midband gain", "dB"))
+Figures = Mapping[str, float | None]
+"""Each of :data:`FIGURES` by its name; None where a circuit has no such figure."""
+Solve = Callable[[Circuit], Figures | None]
+"""The figures of a circuit, or None when it cannot be solved."""
+_SAME = 1e-6
 """A relative change below this is rounding."""
 
 
-def figure(row: PathRow | None, name: str) -> float | None:
-    """One figure of a path by its name."""
-    if row is None:
-        return None
-    if name == "midband gain":
-        return row.gain_db
-    corner = row.low if name == "low corner" else row.high
-    return corner.exact_hz if corner is not None else None
-
-
-FIGURES = (("low corner", "Hz"), ("high corner", "Hz"), ("midband gain", "dB"))
+def figures(gain_db: float | None, low_hz: float | None, high_hz: float | None) -> Figures:
+    """The figures that are laid on edits."""
+    return {"low corner": low_hz, "high corner": high_hz, "midband gain": gain_db}
 
 
 @dataclass(frozen=True, slots=True)
 class _Trial:
     edit: Edit
-    alone: PathRow | None
-    without: PathRow | None
+    alone: Figures | None
+    without: Figures | None
 
 
 def attribute(
-    circuit: Circuit, edits: Sequence[Edit], old: PathRow, new: PathRow, solve: Solve
+    circuit: Circuit, edits: Sequence[Edit], old: Figures, new: Figures, solve: Solve
 ) -> tuple[Attribution, ...]:
     """Lay the change of both corners and of the gain on the edits; unchanged figures are left out.
 
@@ -62,11 +56,11 @@ def attribute(
     edits
         As :func:`tauledger.review.edits.find_edits` gives them.
     old, new
-        The path in both revisions.
+        The figures of both revisions.
     solve
         Solves one circuit between them.
     """
-    moved = [(name, unit) for name, unit in FIGURES if _moved(figure(old, name), figure(new, name))]
+    moved = [(name, unit) for name, unit in FIGURES if _moved(old[name], new[name])]
     if not moved or not edits:
         return ()
     if len(edits) == 1:
@@ -91,9 +85,9 @@ def _moved(old: float | None, new: float | None) -> bool:
 
 
 def _attribution(
-    name: str, unit: str, old: PathRow, new: PathRow, trials: Sequence[_Trial], left_out: int
+    name: str, unit: str, old: Figures, new: Figures, trials: Sequence[_Trial], left_out: int
 ) -> Attribution:
-    start, end = figure(old, name), figure(new, name)
+    start, end = old[name], new[name]
     assert start is not None
     assert end is not None
     change = end - start
@@ -112,7 +106,8 @@ def _attribution(
 
 
 def _effect(trial: _Trial, name: str, start: float, end: float) -> EditEffect:
-    reached, missed = figure(trial.alone, name), figure(trial.without, name)
+    reached = trial.alone[name] if trial.alone is not None else None
+    missed = trial.without[name] if trial.without is not None else None
     alone = None if reached is None else reached - start
     last = None if missed is None else end - missed
     found = [value for value in (alone, last) if value is not None]

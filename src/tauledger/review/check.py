@@ -129,7 +129,7 @@ def _reversed(subject: Subject) -> Iterator[Case]:
     for element in subject.circuit.elements:
         if not isinstance(element, Capacitor):
             continue
-        reason = _polarised_by(element, subject.settings)
+        reason = polarised_by(element, subject.settings)
         positive, negative = element.nodes
         voltage = volts.get(positive, 0.0) - volts.get(negative, 0.0)
         if reason and voltage < -REVERSED_VOLTS:
@@ -142,9 +142,11 @@ def _reversed(subject: Subject) -> Iterator[Case]:
             yield Case(element.name, words)
 
 
-def _polarised_by(capacitor: Capacitor, settings: PathSettings | None) -> str:
+def polarised_by(capacitor: Capacitor, settings: PathSettings | None) -> str:
     """What says that it is polarised: its model or its class in the configuration; or nothing."""
     found = class_of(capacitor.name, settings.capacitors) if settings else None
+    if found is not None and found.polarised is not None:
+        return f"class {found.name}" if found.polarised else ""
     names = {"model": capacitor.model_name, "class": found.name if found else ""}
     for what, name in names.items():
         if _POLARISED.search(name) and not _UNPOLARISED.search(name):

@@ -6,7 +6,7 @@ from collections.abc import Callable, Iterator, Mapping
 from dataclasses import dataclass
 
 from tauledger.circuit.elements import Circuit
-from tauledger.review.attribution import Solve, attribute
+from tauledger.review.attribution import Figures, Solve, attribute, figures
 from tauledger.review.changes import Comparison, FigureChange, WordChange
 from tauledger.review.edits import find_edits, part_changes
 from tauledger.review.matching import Matching, match
@@ -28,7 +28,7 @@ class Revision:
 def compare(old: Revision, new: Revision, solve: Solve) -> Comparison:
     """Parts, figures and words that differ, and the edits to which the corners' moves belong.
 
-    ``solve`` analyses a circuit between the two along the old signal path.
+    ``solve`` finds the figures of a circuit between the two along the old signal path.
     """
     matching = match(old.circuit, new.circuit)
     names = _Names(matching)
@@ -50,7 +50,11 @@ def compare(old: Revision, new: Revision, solve: Solve) -> Comparison:
         parts=parts,
         figures=(*_path_figures(before, after), *_currents(old.review, new.review, names)),
         words=tuple(_words(old.review, new.review, names)),
-        attributions=attribute(old.circuit, edits, before, after, solve) if one_path else (),
+        attributions=(
+            attribute(old.circuit, edits, _figures(before), _figures(after), solve)
+            if one_path
+            else ()
+        ),
         notes=(*notes, *_missing_corners(before, after)),
     )
 
@@ -78,6 +82,10 @@ def _same_path(old: SignalPath, new: SignalPath, names: _Names, matching: Matchi
 
 
 # Figures ------------------------------------------------------------------------------------------
+
+
+def _figures(row: PathRow) -> Figures:
+    return figures(row.gain_db, _exact(row.low), _exact(row.high))
 
 
 def _path_figures(old: PathRow, new: PathRow) -> Iterator[FigureChange]:

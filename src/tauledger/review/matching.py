@@ -238,12 +238,15 @@ def _settle(old: Circuit, new: Circuit, nodes: Mapping[str, str]) -> list[Pair]:
 def _with_edited(
     old: Circuit, new: Circuit, nodes: Mapping[str, str], settled: Sequence[Pair]
 ) -> Matching:
-    """Pair what is left by name, then by place alone; the rest was removed or added."""
+    """Pair what is left by name, then by place alone, then by value and one end; what is left
+    then was removed or added."""
     pairs = list(settled)
     removed, added = _left(old, new, pairs)
     pairs += _namesakes(removed, added)
     removed, added = _left(old, new, pairs)
     pairs += _in_one_place(Wires(old), Wires(new), removed, added, nodes)
+    removed, added = _left(old, new, pairs)
+    pairs += _with_one_end_in_place(removed, added, nodes)
     removed, added = _left(old, new, pairs)
     order = {element.name: index for index, element in enumerate(old.elements)}
     pairs.sort(key=lambda pair: order[pair[0].name])
@@ -280,3 +283,26 @@ def _in_one_place(
         for key in gone
         if len(gone[key]) == 1 and len(come.get(key, ())) == 1
     ]
+
+
+def _with_one_end_in_place(
+    removed: Iterable[Element], added: Iterable[Element], nodes: Mapping[str, str]
+) -> list[Pair]:
+    """Parts of one kind and value that kept one end: another part was put in series, say."""
+    gone: dict[Hashable, list[Element]] = defaultdict(list)
+    come: dict[Hashable, list[Element]] = defaultdict(list)
+    for element in removed:
+        for node in element.nodes:
+            gone[signature(element), node].append(element)
+    for element in added:
+        for node in element.nodes:
+            come[signature(element), nodes.get(node)].append(element)
+    pairs: dict[str, Pair] = {}
+    taken: set[str] = set()
+    for key, group in gone.items():
+        others = come.get(key, [])
+        lone = len(group) == 1 and len(others) == 1
+        if lone and group[0].name not in pairs and others[0].name not in taken:
+            pairs[group[0].name] = group[0], others[0]
+            taken.add(others[0].name)
+    return list(pairs.values())

@@ -64,8 +64,8 @@ class FormulaPrinter:
         raise FormulaError("a parameter was left in the expression")
 
     def _call(self, function: str, given: tuple[Expression, ...]) -> str:
-        if function == "table":
-            return self._table(given)
+        if function in ("table", "pwl"):
+            return self._points(given, level=function == "table")
         arguments = []
         for argument in given:  # a loop, not a comprehension: one frame a level
             arguments.append(self.text(argument))
@@ -94,14 +94,15 @@ class FormulaPrinter:
         self.helpers.append((node, text))
         return f"v({node})"
 
-    def _table(self, given: tuple[Expression, ...]) -> str:
+    def _points(self, given: tuple[Expression, ...], *, level: bool) -> str:
         points = [point.value for point in given[1:] if isinstance(point, Number)]
         if len(points) != len(given) - 1:
             raise FormulaError("the points of a table must be constant")
-        # One more point at either end makes it level there.
-        first, last = points[0], points[-2]
-        points = [first - 1 - abs(first), points[1], *points]
-        points += [last + 1 + abs(last), points[-1]]
+        if level:
+            # One more point at either end makes it level there.
+            first, last = points[0], points[-2]
+            points = [first - 1 - abs(first), points[1], *points]
+            points += [last + 1 + abs(last), points[-1]]
         return f"pwl({','.join((self.text(given[0]), *map(number, points)))})"
 
 

@@ -1,0 +1,201 @@
+"""The test bench: gain and exact corners of many boards of one amplifier at once.
+
+Every board's bias is solved anew, its linear network follows from it, and its corners are the
+−3 dB frequencies of that whole network, found by search: no sum of time constants enters. The
+gain is taken at the midband frequency of the nominal board, as a specification fixes its test
+frequency.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass, replace
+
+import numpy as np
+from numpy.typing import NDArray
+
+from tauledger.analysis import Analysis
+from tauledger.bias import BiasSolution, solve_bias
+from tauledger.bias.equations import Variations
+from tauledger.circuit.elements import Circuit, IndependentSource
+from tauledger.corners.band import HALF_POWER
+from tauledger.decide.edges import find_edges
+from tauledger.decide.networks import Networks
+from tauledger.problems import Problem, ProblemError, Severity
+from tauledger.smallsignal import drive_vector, linear_network, sense_vector
+from tauledger.smallsignal.network import LinearNetwork
+
+FloatArray = NDArray[np.float64]
+IntArray = NDArray[np.intp]
+
+
+@dataclass(frozen=True, slots=True)
+class Bench:
+    """One amplifier with its signal path and what the nominal board does."""
+
+    circuit: Circuit
+    source: str
+    output: str
+    reference: str
+    midband_hz: float
+    gain: float
+    """|H| of the nominal board at ``midband_hz``."""
+    low_hz: float | None
+    high_hz: float | None
+
+
+@dataclass(frozen=True, slots=True)
+class Figures:
+    """What was measured, one entry a board; NaN where a figure does not exist."""
+
+    gain: FloatArray
+    """|H| at midband, V/V (or Ω when the input is a current)."""
+    low_hz: FloatArray
+    high_hz: FloatArray
+    low_leader: IntArray
+    """Index in ``parts`` of the one that moves the corner most; −1 for none."""
+    high_leader: IntArray
+    parts: tuple[str, ...]
+    """Capacitors and inductors, those inside devices included."""
+    low_peak: FloatArray
+    """Highest |H| between midband and the corner over |H| at midband, at least 1."""
+    high_peak: FloatArray
+
+    @property
+    def measured(self) -> NDArray[np.bool_]:
+        """Boards whose bias was found."""
+        return ~np.isnan(self.gain)
+
+    def figure(self, name: str) -> FloatArray:
+        """By name: ``gain``, ``low corner`` or ``high corner``."""
+        columns = {"gain": self.gain, "low corner": self.low_hz, "high corner": self.high_hz}
+        return columns[name]
+
+
+def bench_of(analysis: Analysis) -> Bench:
+    """The bench for the path of an analysis.
+
+    Raises ProblemError when the response has no flat passband, so that its edges mean nothing.
+    """
+    corners, path = analysis.corners, analysis.topology.path
+    if not corners.flat or corners.exact_gain == 0.0:
+        raise ProblemError(
+            Problem(
+                "passband-missing",
+                Severity.ERROR,
+                f"the path from {path.source} to {path.output_node} has no flat passband, so its "
+                "corners have no meaning",
+                None,
+                "Name another input or output, or remove what tunes the response.",
+            )
+        )
+    return Bench(
+        analysis.circuit,
+        path.source,
+        path.output_node,
+        path.output_reference,
+        corners.midband_hz,
+        corners.exact_gain,
+        corners.low.exact_hz,
+        corners.high.exact_hz,
+    )
+
+
+def measure(
+    bench: Bench,
+    variations: Variations | None = None,
+    temperature_c: float | FloatArray | None = None,
+    leaders: bool = False,
+) -> Figures:
+    """Figures of every board; ``leaders`` also finds which part sets each corner."""
+    return measure_solution(bench, solve(bench, variations, temperature_c), leaders)
+
+
+def solve(
+    bench: Bench,
+    variations: Variations | None = None,
+    temperature_c: float | FloatArray | None = None,
+) -> BiasSolution:
+    """The operating point of every board; boards that have none are marked, not raised."""
+    with np.errstate(all="ignore"):
+        return solve_bias(bench.circuit, variations, temperature_c)
+
+
+def measure_solution(bench: Bench, solution: BiasSolution, leaders: bool = False) -> Figures:
+    """Figures of every board of a bias solution."""
+    with np.errstate(all="ignore"):
+        network = linear_network(solution)
+    alive = np.flatnonzero(
+        solution.state.converged & np.isfinite(network.conductance).all(axis=(1, 2))
+    )
+    networks = Networks.of(network, alive, *_ends(bench, network))
+    found, unsure = _measure(bench, networks, network, leaders)
+    if unsure.any():
+        # Boards on which the common order of elimination lost digits get a pivoting solver.
+        redo = np.flatnonzero(unsure)
+        dense = Networks.of(network, alive[redo], *_ends(bench, network), dense=True)
+        again, _ = _measure(bench, dense, network, leaders)
+        for whole, part in zip(found, again, strict=True):
+            whole[redo] = part
+    boards = solution.equations.boards
+    return _figures([_spread_out(values, alive, boards) for values in found], network)
+
+
+def measure_values(
+    bench: Bench, network: LinearNetwork, varied: Mapping[str, FloatArray]
+) -> Figures:
+    """Figures of boards that differ from ``network`` only in the named capacitors, (boards,) each.
+
+    The bias does not depend on them, so it is not solved again.
+    """
+    boards = max(len(values) for values in varied.values())
+    networks = Networks.with_values(network, *_ends(bench, network), varied, boards)
+    found, unsure = _measure(bench, networks, network, leaders=False)
+    if unsure.any():
+        dense = replace(networks, plan=None)
+        found, _ = _measure(bench, dense, network, leaders=False)
+    return _figures(found, network)
+
+
+def _figures(found: Sequence[FloatArray], network: LinearNetwork) -> Figures:
+    gain, low, high, low_peak, high_peak, first, second = found
+    leaders = [np.nan_to_num(values, nan=-1.0).astype(np.intp) for values in (first, second)]
+    names = tuple(part.name for part in network.parts)
+    return Figures(gain, low, high, leaders[0], leaders[1], names, low_peak, high_peak)
+
+
+def _ends(bench: Bench, network: LinearNetwork) -> tuple[FloatArray, FloatArray]:
+    source = next(e for e in bench.circuit.elements if e.name == bench.source)
+    assert isinstance(source, IndependentSource)
+    return drive_vector(network, source), sense_vector(network, bench.output, bench.reference)
+
+
+def _measure(
+    bench: Bench, networks: Networks, network: LinearNetwork, leaders: bool
+) -> tuple[list[FloatArray], NDArray[np.bool_]]:
+    """Gain, corners and leaders of the boards alive, and which of them to solve again."""
+    gain, middle_moves, doubt = networks.probe(bench.midband_hz, network.parts, leaders)
+    target = np.log(gain * HALF_POWER)
+    edges, peaks, winners = [], [], []
+    for nominal, upward in ((bench.low_hz, False), (bench.high_hz, True)):
+        edge = np.full(networks.boards, np.nan)
+        peak = np.full(networks.boards, -np.inf)
+        winner = np.full(networks.boards, np.nan)
+        if nominal is not None and networks.boards:
+            edge, peak = find_edges(networks.level, target, bench.midband_hz, nominal, upward)
+            at = np.where(np.isnan(edge), nominal, edge)
+            _, moves, worse = networks.probe(at, network.parts, leaders)
+            doubt = np.maximum(doubt, worse)
+            if leaders and len(moves):
+                winner = np.argmax(np.abs(moves - middle_moves), axis=0).astype(float)
+                winner[np.isnan(edge)] = np.nan
+        edges.append(edge)
+        peaks.append(np.maximum(np.exp(peak) / gain, 1.0))
+        winners.append(winner)
+    return [gain, *edges, *peaks, *winners], doubt > 1e-8
+
+
+def _spread_out(values: FloatArray, alive: IntArray, boards: int) -> FloatArray:
+    whole = np.full(boards, np.nan)
+    whole[alive] = values
+    return whole

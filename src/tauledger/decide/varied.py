@@ -1,0 +1,455 @@
+"""What differs from board to board: tolerance tables and a circuit → independent draws.
+
+A *draw* is one independent quantity with its window. A *target* is one value of the circuit and
+the draws that move it: parts of a matched class share a draw and have a small one of their own.
+"""
+
+from __future__ import annotations
+
+import fnmatch
+from collections.abc import Callable, Iterable, Iterator, Mapping, Sequence
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from tauledger.circuit.elements import (
+    BipolarTransistor,
+    Capacitor,
+    Circuit,
+    Element,
+    Inductor,
+    JunctionFet,
+    MosFet,
+    Resistor,
+    SemiconductorDevice,
+    VoltageSource,
+)
+from tauledger.configuration.settings import PathSettings, TransistorClass
+from tauledger.configuration.tolerances import Window
+from tauledger.devices.interface import (
+    BOLTZMANN_J_PER_K,
+    ELEMENTARY_CHARGE_C,
+    ZERO_CELSIUS_K,
+)
+from tauledger.problems import Problem, ProblemError, Severity, SourceSpan
+
+FloatArray = NDArray[np.float64]
+
+VALUE, SUPPLY, TEMPERATURE = "value", "supply", "temperature"
+QUANTITIES = {
+    "current_gain": "current gain",
+    "base_emitter_voltage": "VBE",
+    "drain_current": "IDSS",
+    "pinch_off_voltage": "pinch-off",
+    "threshold_voltage": "threshold",
+}
+"""Key of a transistor's table → how its draw is called."""
+VOLTS = frozenset(("base_emitter_voltage", "threshold_voltage"))
+"""Shifts in volts; every other deviation is relative, except the temperature."""
+
+
+@dataclass(frozen=True, slots=True)
+class Asked:
+    """A window given by hand, which counts before the configuration."""
+
+    pattern: str
+    """Lower-case pattern of designators, or ``supply`` or ``temperature``."""
+    quantity: str
+    """``value`` or a key of :data:`QUANTITIES`."""
+    window: Window
+
+
+@dataclass(frozen=True, slots=True)
+class Draw:
+    """One independent quantity."""
+
+    label: str
+    low: float
+    high: float
+    unit: str
+    """Empty for a relative deviation, else ``V`` or ``°C`` for a shift."""
+
+
+@dataclass(frozen=True, slots=True)
+class Target:
+    """One value of the circuit; its deviation is the sum of its draws'."""
+
+    part: str
+    quantity: str
+    draws: tuple[int, ...]
+
+
+@dataclass(frozen=True, slots=True)
+class Variety:
+    """Everything that differs between boards of a circuit."""
+
+    draws: tuple[Draw, ...]
+    targets: tuple[Target, ...]
+    fixed: tuple[str, ...]
+    """Resistors, capacitors, inductors and transistors for which no tolerance is known."""
+
+
+def variety_of(
+    circuit: Circuit, source: str, settings: PathSettings | None, asked: Sequence[Asked] = ()
+) -> Variety:
+    """Collect the draws of a circuit whose signal source, which does not vary, is ``source``.
+
+    Raises ProblemError when no tolerance is known for anything, or one fits no part.
+    """
+    builder = _Builder()
+    fixed = []
+    used: set[Asked] = set()
+    for element in circuit.elements:
+        if element.name == source:
+            continue
+        windows = list(_windows(element, settings, asked, used))
+        if not windows and _is_part(element):
+            fixed.append(element.name)
+        for quantity, window, group, own in windows:
+            builder.add(element, quantity, window, group, own)
+    builder.add_temperature(_temperature(circuit, settings, asked, used))
+    if unused := [entry for entry in asked if entry not in used]:
+        raise ProblemError(*map(_unmatched, unused))
+    if not builder.draws:
+        raise ProblemError(_nothing_known())
+    return Variety(tuple(builder.draws), tuple(builder.targets), tuple(fixed))
+
+
+class _Builder:
+    def __init__(self) -> None:
+        self.draws: list[Draw] = []
+        self.targets: list[Target] = []
+        self._shared: dict[str, int] = {}
+
+    def add(
+        self, element: Element, quantity: str, window: Window, group: str, own: float
+    ) -> None:
+        label, unit = _label(element, quantity), "V" if quantity in VOLTS else ""
+        if not group:
+            indices = [self._draw(Draw(label, *window, unit))]
+        else:
+            what = QUANTITIES.get(quantity, "")
+            together = f"{group}: {what} of all" if what else f"{group}: all"
+            if together not in self._shared:
+                self._shared[together] = self._draw(Draw(together, *window, unit))
+            indices = [self._shared[together]]
+            if own > 0.0:
+                indices.append(self._draw(Draw(f"{label} apart", -own, own, unit)))
+        self.targets.append(Target(element.name, quantity, tuple(indices)))
+
+    def add_temperature(self, window: Window | None) -> None:
+        if window is not None:
+            index = self._draw(Draw(TEMPERATURE, *window, "°C"))
+            self.targets.append(Target("", TEMPERATURE, (index,)))
+
+    def _draw(self, draw: Draw) -> int:
+        self.draws.append(draw)
+        return len(self.draws) - 1
+
+
+def _label(element: Element, quantity: str) -> str:
+    if quantity == SUPPLY:
+        return f"supply {element.name}"
+    words = QUANTITIES.get(quantity, "")
+    return f"{element.name} {words}".strip()
+
+
+def _is_part(element: Element) -> bool:
+    return isinstance(
+        element, Resistor | Capacitor | Inductor | BipolarTransistor | JunctionFet | MosFet
+    )
+
+
+Found = tuple[str, Window, str, float]
+"""Quantity, window, matched group (or empty), own window within the group."""
+
+
+def _windows(
+    element: Element, settings: PathSettings | None, asked: Sequence[Asked], used: set[Asked]
+) -> Iterator[Found]:
+    quantities = _quantities(element)
+    by_hand = {}
+    for quantity in quantities:
+        for entry in asked:
+            if entry.quantity == quantity and _fits(element.name, (entry.pattern,)):
+                used.add(entry)
+                by_hand.setdefault(quantity, entry.window)
+            if quantity == SUPPLY and entry.pattern == SUPPLY:
+                used.add(entry)
+                by_hand.setdefault(quantity, entry.window)
+    for quantity, window in by_hand.items():
+        yield quantity, window, "", 0.0
+    if settings is not None:
+        for found in _configured(element, settings):
+            if found[0] not in by_hand and found[0] in quantities:
+                yield found
+
+
+def _quantities(element: Element) -> tuple[str, ...]:
+    match element:
+        case Resistor() | Capacitor() | Inductor():
+            return (VALUE,)
+        case VoltageSource(dc=dc) if dc != 0.0:
+            return (SUPPLY,)
+        case BipolarTransistor():
+            return ("current_gain", "base_emitter_voltage")
+        case JunctionFet():
+            return ("drain_current", "pinch_off_voltage")
+        case MosFet(model=model) if _threshold_key(model.parameters):
+            return ("threshold_voltage",)
+    return ()
+
+
+def _configured(element: Element, settings: PathSettings) -> Iterator[Found]:
+    if isinstance(element, VoltageSource):
+        if settings.spread and settings.spread.supply:
+            yield SUPPLY, settings.spread.supply, "", 0.0
+        return
+    if isinstance(element, Resistor | Capacitor):
+        classes = settings.resistors if isinstance(element, Resistor) else settings.capacitors
+        for entry in classes:
+            if _fits(element.name, entry.match):
+                if entry.tolerance:
+                    group = entry.name if entry.matched is not None else ""
+                    yield VALUE, entry.tolerance, group, entry.matched or 0.0
+                return
+    if isinstance(element, SemiconductorDevice):
+        for kind in settings.transistors:
+            if _fits(element.name, kind.match):
+                group = kind.name if kind.matched else ""
+                for quantity, window in _transistor_windows(kind).items():
+                    if window:
+                        yield quantity, window, group, 0.0
+                return
+
+
+def _transistor_windows(kind: TransistorClass) -> Mapping[str, Window | None]:
+    return {
+        "current_gain": kind.current_gain,
+        "base_emitter_voltage": kind.base_emitter_voltage_v,
+        "drain_current": kind.drain_current,
+        "pinch_off_voltage": kind.pinch_off,
+        "threshold_voltage": kind.threshold_voltage_v,
+    }
+
+
+def _temperature(
+    circuit: Circuit, settings: PathSettings | None, asked: Sequence[Asked], used: set[Asked]
+) -> Window | None:
+    """As a shift from the circuit's temperature."""
+    window = settings.spread.temperature_c if settings and settings.spread else None
+    for entry in asked:
+        if entry.pattern == TEMPERATURE:
+            used.add(entry)
+            window = entry.window
+    if window is None:
+        return None
+    return window[0] - circuit.temperature_c, window[1] - circuit.temperature_c
+
+
+def _fits(name: str, patterns: Iterable[str]) -> bool:
+    lower = name.lower()
+    return any(fnmatch.fnmatchcase(lower, pattern) for pattern in patterns)
+
+
+def _unmatched(entry: Asked) -> Problem:
+    what = entry.pattern if entry.quantity == VALUE else f"{entry.pattern}.{entry.quantity}"
+    return Problem(
+        "tolerance-unmatched",
+        Severity.ERROR,
+        f"the tolerance of {what!r} fits no part of this circuit",
+        None,
+        "Name a designator or pattern of the netlist, such as 'R*' or 'Q1.current_gain'.",
+    )
+
+
+def _nothing_known() -> Problem:
+    return Problem(
+        "tolerances-missing",
+        Severity.ERROR,
+        "no tolerance is known for any part, so there is nothing to vary",
+        None,
+        "Give them in tauledger.toml ([resistors.NAME], [capacitors.NAME], [transistors.NAME]) or "
+        "by hand: --tolerance 'R*=5%' --tolerance 'C*=20%' --tolerance 'Q*.current_gain=-50..+100%'"
+        ".",
+    )
+
+
+# Boards -------------------------------------------------------------------------------------------
+
+
+def board_values(
+    circuit: Circuit, variety: Variety, deviations: FloatArray
+) -> tuple[dict[str, FloatArray], FloatArray | None]:
+    """Variations and temperature for the bias solver from (draws, boards) deviations."""
+    elements = {element.name: element for element in circuit.elements}
+    varied: dict[str, FloatArray] = {}
+    temperature = None
+    for target in variety.targets:
+        shift = np.asarray(deviations[list(target.draws)].sum(axis=0))
+        if target.quantity == TEMPERATURE:
+            temperature = circuit.temperature_c + shift
+            continue
+        _apply(circuit, elements[target.part], target.quantity, shift, varied)
+    return varied, temperature
+
+
+def _apply(
+    circuit: Circuit,
+    element: Element,
+    quantity: str,
+    shift: FloatArray,
+    varied: dict[str, FloatArray],
+) -> None:
+    name = element.name.lower()
+    match element:
+        case Resistor(resistance_ohm=value) | Capacitor(capacitance_f=value):
+            varied[name] = value * (1.0 + shift)
+        case Inductor(inductance_h=value) | VoltageSource(dc=value):
+            varied[name] = value * (1.0 + shift)
+        case SemiconductorDevice(model=model):
+            _TRANSISTOR[quantity](circuit, name, model.parameters, shift, varied)
+
+
+Change = Callable[[Circuit, str, Mapping[str, float], FloatArray, dict[str, FloatArray]], None]
+
+
+def _current_gain(
+    circuit: Circuit,
+    name: str,
+    card: Mapping[str, float],
+    shift: FloatArray,
+    varied: dict[str, FloatArray],
+) -> None:
+    varied[f"{name}.bf"] = card.get("bf", 100.0) * (1.0 + shift)
+
+
+def _base_emitter_voltage(
+    circuit: Circuit,
+    name: str,
+    card: Mapping[str, float],
+    shift: FloatArray,
+    varied: dict[str, FloatArray],
+) -> None:
+    """VBE = n·(kT/q)·ln(IC/IS): a shift at constant current is a factor of IS."""
+    kelvin = circuit.temperature_c + ZERO_CELSIUS_K
+    thermal = card.get("nf", 1.0) * BOLTZMANN_J_PER_K * kelvin / ELEMENTARY_CHARGE_C
+    varied[f"{name}.is"] = card.get("is", 1e-16) * np.exp(-shift / thermal)
+
+
+def _drain_current(
+    circuit: Circuit,
+    name: str,
+    card: Mapping[str, float],
+    shift: FloatArray,
+    varied: dict[str, FloatArray],
+) -> None:
+    key = f"{name}.beta"
+    varied[key] = varied.get(key, np.full(shift.shape, card.get("beta", 1e-4))) * (1.0 + shift)
+
+
+def _pinch_off(
+    circuit: Circuit,
+    name: str,
+    card: Mapping[str, float],
+    shift: FloatArray,
+    varied: dict[str, FloatArray],
+) -> None:
+    """IDSS = β·VTO² stays, so β falls as VTO² grows."""
+    threshold = _threshold_key(card) or "vto"
+    varied[f"{name}.{threshold}"] = card.get(threshold, -2.0) * (1.0 + shift)
+    key = f"{name}.beta"
+    beta = varied.get(key, np.full(shift.shape, card.get("beta", 1e-4)))
+    varied[key] = beta / (1.0 + shift) ** 2
+
+
+def _threshold_voltage(
+    circuit: Circuit,
+    name: str,
+    card: Mapping[str, float],
+    shift: FloatArray,
+    varied: dict[str, FloatArray],
+) -> None:
+    key = _threshold_key(card)
+    varied[f"{name}.{key}"] = card[key] + shift
+
+
+_TRANSISTOR: Mapping[str, Change] = {
+    "current_gain": _current_gain,
+    "base_emitter_voltage": _base_emitter_voltage,
+    "drain_current": _drain_current,
+    "pinch_off_voltage": _pinch_off,
+    "threshold_voltage": _threshold_voltage,
+}
+
+
+def _threshold_key(card: Mapping[str, float]) -> str:
+    return next((key for key in ("vto", "vt0", "vth0") if key in card), "")
+
+
+# By hand ------------------------------------------------------------------------------------------
+
+
+def unparsable(text: str, reason: str, span: SourceSpan | None = None) -> ProblemError:
+    """The error for a tolerance given by hand."""
+    return ProblemError(
+        Problem(
+            "tolerance-unreadable",
+            Severity.ERROR,
+            f"{text[:60]!r}: {reason}",
+            span,
+            "Write it as 'R*=5%', 'C1=-20..+80%', 'C*=M', 'Q*.base_emitter_voltage=20mV', "
+            "'supply=5%' or 'temperature=0..50'.",
+        )
+    )
+
+
+def parse_asked(text: str) -> Asked:
+    """A tolerance given by hand; raises ProblemError with what was expected.
+
+    >>> parse_asked("C*=-20..+80%")
+    Asked(pattern='c*', quantity='value', window=(-0.2, 0.8))
+    """
+    from tauledger.configuration.tolerances import letter_window
+
+    left, equals, right = text.partition("=")
+    pattern, quantity = left.strip(), VALUE
+    head, dot, tail = pattern.rpartition(".")
+    if dot and tail in QUANTITIES:
+        pattern, quantity = head, tail
+    if pattern.lower() in (SUPPLY, TEMPERATURE):
+        pattern = quantity = pattern.lower()
+    if not equals or not pattern:
+        raise unparsable(text, "expected PATTERN=TOLERANCE")
+    window = letter_window(right) if quantity == VALUE else None
+    return Asked(pattern.lower(), quantity, window or _parse_window(text, right, quantity))
+
+
+def _parse_window(text: str, right: str, quantity: str) -> Window:
+    unit = "V" if quantity in VOLTS else "°C" if quantity == TEMPERATURE else "%"
+    ends = right.replace("…", "..").split("..")
+    if len(ends) > 2 or (len(ends) == 1 and quantity == TEMPERATURE):
+        raise unparsable(text, "expected two ends with .. between")
+    last_unit = _quantity(text, ends[-1], unit)[1]
+    numbers = [_quantity(text, end, last_unit)[0] for end in ends]
+    scaled = [number / 100.0 if unit == "%" else number for number in numbers]
+    low, high = (-abs(scaled[0]), abs(scaled[0])) if len(scaled) == 1 else scaled
+    if low > high or (unit == "%" and low <= -1.0):
+        raise unparsable(text, "expected a window from low to high, above −100 %")
+    return low, high
+
+
+def _quantity(text: str, written: str, unit: str) -> tuple[float, str]:
+    from tauledger.quantity import parse_si
+
+    bare = written.strip().removesuffix("C") if unit == "°C" else written.strip()
+    try:
+        value, found = parse_si(bare.removesuffix("°"))
+    except ValueError as error:
+        raise unparsable(text, str(error)) from None
+    if found not in ("", unit):
+        raise unparsable(text, f"the unit is {found}; expected {unit}")
+    if not found and unit == "V":
+        raise unparsable(text, "expected volts, such as 20mV")
+    return value, unit

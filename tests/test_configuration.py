@@ -41,6 +41,7 @@ tolerance = "10 %"
 
 [path.microphone]
 netlist = "boards/*.cir"
+midband = "1 kHz"
 input = { node = "IN", resistance = "150 Ω" }
 output = { node = ["OUT+", "OUT-"], load_resistance = "10 kΩ", load_capacitance = "220pF" }
 models = ["models/*.lib"]
@@ -101,6 +102,8 @@ def test_quantities_are_read_with_their_units(board: Path) -> None:
     path = _path(board)
     assert path.temperature is not None
     assert path.temperature.value == 35.0
+    assert path.midband is not None
+    assert path.midband.value == 1e3
     assert path.input is not None
     assert (path.input.nodes, path.input.resistance_ohm) == (("IN",), 150.0)
     assert path.output is not None

@@ -51,6 +51,8 @@ class Analysis:
     topology: Topology
     corners: Corners
     review: Review
+    asked_midband_hz: float | None = None
+    """Where the gain was asked to be judged; None when that was left to the response."""
 
     @property
     def point(self) -> OperatingPoint:
@@ -98,7 +100,7 @@ def analyze(
         :mod:`tauledger.configuration.choice` gives it; ``input`` and ``output`` count before it.
     midband_hz
         Where the gain is meant to be judged, for a path that is not flat by intent; left out,
-        the middle of the flat stretch.
+        what ``settings`` say, or else the middle of the flat stretch.
 
     Raises
     ------
@@ -106,6 +108,8 @@ def analyze(
         With every problem that stops the analysis, each with its place and what to do.
     """
     circuit, input, output = _completed(netlist, settings, input, output)
+    if midband_hz is None and settings is not None and settings.midband is not None:
+        midband_hz = settings.midband.value
     return analyze_circuit(netlist, circuit, input, output, midband_hz)
 
 
@@ -137,7 +141,8 @@ def analyze_circuit(
         stage_formulas(bench, network, topology, corners),
     )
     review = review_of(circuit, solution.point, topology, (row,), VERSION)
-    return Analysis(netlist, circuit, solution, network, topology, corners, review)
+    stages = netlist, circuit, solution, network, topology, corners, review
+    return Analysis(*stages, asked_midband_hz=midband_hz)
 
 
 def corners_of(

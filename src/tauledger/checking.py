@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 import glob
-import multiprocessing
 import os
 import sys
 from collections.abc import Callable, Iterator, Sequence
@@ -41,6 +40,7 @@ def check_on_all_cores(targets: Sequence[Target], stream: TextIO) -> list[Netlis
 def _check_in_workers(
     targets: Sequence[Target], workers: int, show: Callable[[int], None] | None
 ) -> list[NetlistCheck]:
+    import multiprocessing
     from concurrent.futures import ProcessPoolExecutor
 
     # Not "fork", which copies whatever threads the numeric library has started.

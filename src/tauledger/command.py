@@ -22,8 +22,10 @@ from tauledger.version import VERSION
 if TYPE_CHECKING:
     from tauledger.analysis import Analysis
     from tauledger.configuration.settings import PathSettings
+    from tauledger.review.decisions import Choice, Spread, Stress, TemperatureSweep
     from tauledger.review.rows import Review
     from tauledger.revisions import Aim
+    from tauledger.simulate.simulation import Simulation
 
 FINE = 0
 FINDING = 1
@@ -32,10 +34,15 @@ INTERNAL = 3
 INTERRUPTED = 130
 PIPE_CLOSED = 141
 
+PICTURES = ("html", "svg", "png")
+"""The forms of a report that hold drawings."""
+
 
 def main(argv: Sequence[str] | None = None) -> int:
     """Run one command and return its exit code; only the SystemExit of ``--help`` leaves."""
     given = sys.argv[1:] if argv is None else list(argv)
+    # The matrices are small: threads of the linear algebra would only wait for each other.
+    os.environ.setdefault("OPENBLAS_NUM_THREADS", "1")
     try:
         try:
             return _run(given)
@@ -65,7 +72,9 @@ def report(arguments: argparse.Namespace) -> int:
     netlist = read(arguments.netlist)
     settings = _settings(arguments, Path(arguments.netlist))
     analysis = analyze(netlist, arguments.input, arguments.output, settings, arguments.midband)
-    review = _simulated(analysis) if arguments.simulate else analysis.review
+    review, simulation = analysis.review, None
+    if arguments.simulate:
+        review, simulation = _simulated(analysis)
     if arguments.against:
         from tauledger.revisions import compare_against
 
@@ -75,13 +84,20 @@ def report(arguments: argparse.Namespace) -> int:
     if arguments.format == "json":
         from tauledger.report.json_report import json_report
 
-        text = json_report(review)
-        _deliver(lambda: sys.stdout.write(text))
+        _hand_over(json_report(review).encode(), arguments.save)
     elif arguments.format == "markdown":
         from tauledger.checking import markdown_of
 
-        page = markdown_of(analysis.circuit, review, settings)
-        _deliver(lambda: _write_utf8(page))
+        _hand_over(markdown_of(analysis.circuit, review, settings).encode(), arguments.save)
+    elif arguments.format in PICTURES:
+        from tauledger.illustrating import picture
+
+        drawn = picture(arguments.format, analysis, review, settings, simulation)
+        _hand_over(drawn, arguments.save)
+    elif arguments.save:
+        from tauledger.report.terminal import text_report
+
+        _hand_over(text_report(review).encode(), arguments.save)
     else:
         from tauledger.report.terminal import write_text_report
 
@@ -145,6 +161,105 @@ def _annotate_one(arguments: argparse.Namespace) -> int:
     stale = check_files(targets, results)
     _explain(stale)
     return FINDING if stale else FINE
+
+
+def spread(arguments: argparse.Namespace) -> int:
+    """Print how gain and corners spread over boards within tolerances."""
+    from tauledger.deciding import run_spread
+
+    analysis, settings = _analysis(arguments)
+    result = run_spread(arguments, analysis, settings)
+    _explain(result.problems)
+    if arguments.format == "json":
+        _deliver_decision(result)
+    else:
+        from tauledger.report.decision import spread_page
+        from tauledger.report.terminal import write_page
+
+        _deliver(lambda: write_page(lambda page: spread_page(page, result), sys.stdout))
+    return FINE
+
+
+def choose(arguments: argparse.Namespace) -> int:
+    """Print which standard values meet a corner."""
+    from tauledger.deciding import patch_of, run_choose
+
+    analysis, settings = _analysis(arguments)
+    result = run_choose(arguments, analysis, settings)
+    _explain(result.problems)
+    if arguments.patch is not None:
+        change = patch_of(arguments, analysis, result)
+        _deliver(lambda: _write_bytes(change))
+        return FINE
+    if arguments.format == "json":
+        _deliver_decision(result)
+    else:
+        from tauledger.report.decision_parts import choice_page
+        from tauledger.report.terminal import write_page
+
+        _deliver(lambda: write_page(lambda page: choice_page(page, result), sys.stdout))
+    return FINDING if result.infeasible else FINE
+
+
+def stress(arguments: argparse.Namespace) -> int:
+    """Print what voltage and heat the parts stand."""
+    from tauledger.deciding import run_stress
+
+    analysis, settings = _analysis(arguments)
+    result = run_stress(arguments, analysis, settings)
+    _explain(result.problems)
+    if arguments.format == "json":
+        _deliver_decision(result)
+    else:
+        from tauledger.report.decision_parts import stress_page
+        from tauledger.report.terminal import write_page
+
+        _deliver(lambda: write_page(lambda page: stress_page(page, result), sys.stdout))
+    return FINDING if any(p.severity is Severity.ERROR for p in result.problems) else FINE
+
+
+def temperature(arguments: argparse.Namespace) -> int:
+    """Print gain, corners and bias over a range of temperatures."""
+    from tauledger.deciding import run_temperature
+
+    analysis, settings = _analysis(arguments)
+    result = run_temperature(arguments, analysis, settings)
+    _explain(result.problems)
+    if arguments.format == "json":
+        _deliver_decision(result)
+    else:
+        from tauledger.report.decision_parts import temperature_page
+        from tauledger.report.terminal import write_page
+
+        _deliver(lambda: write_page(lambda page: temperature_page(page, result), sys.stdout))
+    return FINE
+
+
+def _analysis(arguments: argparse.Namespace) -> tuple[Analysis, PathSettings | None]:
+    from tauledger.analysis import analyze, read
+
+    netlist = read(arguments.netlist)
+    settings = _settings(arguments, Path(arguments.netlist))
+    analysis = analyze(netlist, arguments.input, arguments.output, settings, arguments.midband)
+    return analysis, settings
+
+
+def _deliver_decision(decision: Spread | Choice | Stress | TemperatureSweep) -> None:
+    from tauledger.report.decision_json import decision_json
+
+    text = decision_json(decision)
+    _deliver(lambda: sys.stdout.write(text))
+
+
+def _write_bytes(content: bytes) -> None:
+    """A patch as it is, which may hold any bytes of the netlist; harmless on a terminal."""
+    if sys.stdout.isatty() or not hasattr(sys.stdout, "buffer"):
+        from tauledger.report.inert import inert
+
+        for line in content.decode("utf-8", "replace").splitlines():
+            sys.stdout.write(inert(line) + "\n")
+    else:
+        sys.stdout.buffer.write(content)
 
 
 def _annotated(arguments: argparse.Namespace) -> list[bytes]:
@@ -211,12 +326,12 @@ def start(arguments: argparse.Namespace) -> int:
     return FINE
 
 
-def _simulated(analysis: Analysis) -> Review:
+def _simulated(analysis: Analysis) -> tuple[Review, Simulation]:
     from tauledger.simulate import beside, simulate
 
     midband_hz = analysis.corners.midband_hz
     simulation = simulate(analysis.circuit, analysis.topology.path, midband_hz)
-    return beside(analysis.review, simulation)
+    return beside(analysis.review, simulation), simulation
 
 
 def _aim(arguments: argparse.Namespace) -> Aim:
@@ -253,18 +368,18 @@ def _report_arguments(parser: argparse.ArgumentParser) -> None:
     parser.add_argument("netlist", metavar="NETLIST", help="SPICE netlist of the amplifier")
     _path_arguments(parser)
     _midband_argument(parser)
-    result = parser.add_argument_group("result")
-    result.add_argument("--against", metavar="REV", help="add the changes since a revision in git")
-    result.add_argument(
+    parser.add_argument("--against", metavar="REV", help="add the changes since a revision in git")
+    parser.add_argument(
         "--simulate", action="store_true", help="add figures from ngspice, run beside"
     )
-    result.add_argument(
+    parser.add_argument(
         "--format",
         metavar="FORMAT",
-        choices=("text", "json", "markdown"),
+        choices=("text", "json", "markdown", *PICTURES),
         default="text",
-        help="text (default), json or markdown",
+        help="text (default), json, markdown, html; svg, png: plot",
     )
+    parser.add_argument("--save", metavar="FILE", help="write there, not to standard output")
 
 
 def _compare_arguments(parser: argparse.ArgumentParser) -> None:
@@ -368,6 +483,30 @@ def _start_arguments(parser: argparse.ArgumentParser) -> None:
     )
 
 
+def _decision_arguments(name: str) -> Callable[[argparse.ArgumentParser], None]:
+    """The options of a decision on one amplifier: its own, then those all share."""
+
+    def add(parser: argparse.ArgumentParser) -> None:
+        parser.usage = "%(prog)s [OPTIONS] NETLIST"
+        parser.add_argument("netlist", metavar="NETLIST", help="SPICE netlist of the amplifier")
+        from tauledger import deciding
+
+        adders = {
+            "spread": deciding.spread_arguments,
+            "choose": deciding.choose_arguments,
+            "stress": deciding.stress_arguments,
+            "temperature": deciding.temperature_arguments,
+        }
+        adders[name](parser)
+        parser.add_argument(
+            "--format", choices=("text", "json"), default="text", help="text (default) or json"
+        )
+        _path_arguments(parser)
+        _midband_argument(parser)
+
+    return add
+
+
 @dataclass(frozen=True, slots=True)
 class Command:
     """One subcommand: how it reads in the help, what it takes, what it does."""
@@ -408,6 +547,30 @@ COMMANDS = {
         "tauledger start preamp.cir --output tauledger.toml",
         _start_arguments,
         start,
+    ),
+    "spread": Command(
+        "Print how gain and corners spread over boards within tolerances.",
+        "tauledger spread preamp.cir --tolerance 'R*=5%' --tolerance 'C*=20%'",
+        _decision_arguments("spread"),
+        spread,
+    ),
+    "choose": Command(
+        "Print which standard values meet a corner, verified exactly.",
+        "tauledger choose preamp.cir --low-corner 20Hz --only C1,C3",
+        _decision_arguments("choose"),
+        choose,
+    ),
+    "stress": Command(
+        "Print voltages and polarity of capacitors, heat, start-up.",
+        "tauledger stress preamp.cir --margin 30%",
+        _decision_arguments("stress"),
+        stress,
+    ),
+    "temperature": Command(
+        "Print gain, corners and bias over a range of temperatures.",
+        "tauledger temperature preamp.cir --range 0..60",
+        _decision_arguments("temperature"),
+        temperature,
     ),
 }
 
@@ -527,10 +690,26 @@ def _deliver(write: Callable[[], object]) -> None:
         _refuse("output-unwritable", message, "Check the disk or send the output elsewhere.")
 
 
+def _hand_over(content: bytes, path: str | None) -> None:
+    """Put a report into a file, all or nothing, or write its bytes to stdout."""
+    if path:
+        from tauledger.annotate.files import replace_file
+
+        replace_file(Path(path), content)
+        return
+    if content.startswith(b"\x89PNG") and sys.stdout.isatty():
+        _refuse("usage", "a PNG is nothing for a terminal", "Give --save FILE.")
+    _deliver(lambda: _write_raw(content))
+
+
 def _write_utf8(text: str) -> None:
     """For formats that are UTF-8 wherever they are read, whatever the stream's own encoding."""
+    _write_raw(text.encode())
+
+
+def _write_raw(content: bytes) -> None:
     sys.stdout.flush()
-    sys.stdout.buffer.write(text.encode())
+    sys.stdout.buffer.write(content)
     sys.stdout.buffer.flush()
 
 

@@ -9,7 +9,6 @@ from __future__ import annotations
 import os
 import traceback
 from collections.abc import Callable, Iterator, Sequence
-from concurrent.futures import Executor
 from dataclasses import dataclass
 from pathlib import Path
 from typing import TYPE_CHECKING
@@ -22,6 +21,8 @@ from tauledger.review.check import Finding, NetlistCheck, check, note
 from tauledger.version import VERSION
 
 if TYPE_CHECKING:
+    from concurrent.futures import Executor
+
     from tauledger.configuration.settings import Configuration, PathSettings
     from tauledger.netlist import Netlist
 

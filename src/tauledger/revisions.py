@@ -36,13 +36,13 @@ class Aim:
         return analyze(netlist, self.input, self.output, added, self.midband_hz)
 
 
-def compare(old: Analysis, new: Analysis, midband_hz: float | None = None) -> Comparison:
+def compare(old: Analysis, new: Analysis) -> Comparison:
     """What differs between two analyses, and which edit moved each corner.
 
-    For every edit, up to 40, two circuits between the old and the new one are solved;
-    ``midband_hz`` is as it was for both analyses.
+    For every edit, up to 40, two circuits between the old and the new one are solved, with the
+    gain judged where it was asked to be for the new one.
     """
-    return _compare(old, new, old.circuit.path, new.circuit.path, midband_hz)
+    return _compare(old, new, old.circuit.path, new.circuit.path)
 
 
 def compare_netlists(old: str, new: str, aim: Aim, where: Path | None = None) -> Comparison:
@@ -52,7 +52,7 @@ def compare_netlists(old: str, new: str, aim: Aim, where: Path | None = None) ->
     """
     with opened(old, where) as before, opened(new, where) as after:
         sides = aim.analysed(before), aim.analysed(after)
-        comparison = _compare(*sides, before.name, after.name, aim.midband_hz)
+        comparison = _compare(*sides, before.name, after.name)
         return _renamed(comparison, before, after)
 
 
@@ -61,13 +61,11 @@ def compare_against(revision: str, new: Analysis, aim: Aim) -> Comparison:
     netlist = Path(new.circuit.path)
     with opened(name_in(revision, netlist), netlist.parent) as before:
         names = before.name, new.circuit.path
-        comparison = _compare(aim.analysed(before), new, *names, aim.midband_hz)
+        comparison = _compare(aim.analysed(before), new, *names)
         return _renamed(comparison, before, None)
 
 
-def _compare(
-    old: Analysis, new: Analysis, old_name: str, new_name: str, midband_hz: float | None
-) -> Comparison:
+def _compare(old: Analysis, new: Analysis, old_name: str, new_name: str) -> Comparison:
     path = old.topology.path
     output = path.output_node
     if path.output_reference != GROUND:
@@ -75,7 +73,7 @@ def _compare(
 
     def solve(circuit: Circuit) -> Figures | None:
         try:
-            corners = corners_of(circuit, path.source, output, midband_hz)
+            corners = corners_of(circuit, path.source, output, new.asked_midband_hz)
         except ProblemError:
             return None
         gain = corners.exact_gain

@@ -111,6 +111,21 @@ def test_a_part_on_two_sheets_of_one_file_is_marked_on_both() -> None:
     assert len(places(TEXT + second)) == 8
 
 
+def test_what_is_on_one_of_several_sheets_is_not_missing() -> None:
+    names = ["C1", "CE", "C2", "Q1"]
+    sheets = [
+        Drawing(f"{name}.svg", f"{SVG}>{TEXT.replace('C1', name)}</svg>".encode()) for name in names
+    ]
+    review = replace(ONE_STAGE, transistors=(replace(ONE_STAGE.transistors[0], name="Q1"),))
+    rows = tuple(replace(ONE_STAGE.paths[0].time_constants[0], name=n) for n in names[:3])
+    review = replace(review, paths=(replace(ONE_STAGE.paths[0], time_constants=rows),))
+    after, problems = annotate_drawings(sheets, review)
+    assert problems == ()
+    assert not any(b"not on the drawing" in drawing.content for drawing in after)
+    _, problems = annotate_drawings(sheets[1:], review)
+    assert "CE.svg or C2.svg or Q1.svg: C1" in problems[0].message
+
+
 @pytest.mark.parametrize(
     ("names", "label", "found"),
     [

@@ -2,10 +2,14 @@
 
 from __future__ import annotations
 
+import subprocess
+import sys
+from pathlib import Path
+
 import numpy as np
 import pytest
 
-from tauledger.bias import solve_bias
+from tauledger.bias import newton, solve_bias
 from tauledger.circuit import flatten
 from tauledger.circuit.elements import Circuit
 from tauledger.netlist import parse
@@ -104,17 +108,106 @@ def test_nodeset_chooses_the_state_of_a_latch(held: str, low: str, high: str) ->
 
 
 @pytest.mark.parametrize(
-    ("body", "code", "named"),
+    ("body", "code", "named", "line"),
     [
-        ("V1 a 0 5\nV2 a 0 6\nR1 a 0 1k", "voltage-loop", "V2"),
-        ("V1 a 0 5\nL1 a 0 1m\nR1 a 0 1k", "voltage-loop", "L1"),
-        ("V1 a 0 5\nR1 a 0 1k\nG1 0 b a 0 1m\nC1 b 0 1n", "node-undetermined", "b"),
+        ("V1 a 0 5\nV2 a 0 6\nR1 a 0 1k", "voltage-loop", ["V1 (line 2)", "V2 (line 3)"], 3),
+        ("V1 a 0 5\nL1 a b 1m\nR1 b 0 1k\nL2 b 0 1u", "voltage-loop", ["V1", "L1", "L2"], 5),
+        ("V1 a 0 5\nR1 a 0 1k\nE1 b 0 a 0 2\nL1 b 0 1m", "voltage-loop", ["E1", "L1"], 5),
+        ("V1 a 0 5\nR1 a 0 1k\nL1 b b 1m\nR2 b 0 1", "voltage-loop", ["L1 (line 4)"], 4),
+        ("V1 a 0 5\nR1 a 0 1k\nG1 0 b a 0 1m\nC1 b 0 1n", "current-cutset", ["G1", "'b'"], 4),
+        ("V1 a 0 5\nC1 a b 1n\nI1 b 0 1m\nR1 b c 1k", "current-cutset", ["I1", "'b'"], 4),
+        ("V1 a 0 5\nR1 a 0 1k\nC1 a b 1n\nC2 b 0 1n", "node-floating", ["C1", "'b'"], 4),
+        ("V1 a 0 5\nR1 a 0 1k\nR2 b 0 1k\nG1 b 0 0 b 1m", "node-undetermined", ["b", "R2"], 4),
     ],
 )
-def test_impossible_circuits_name_what_is_at_fault(body: str, code: str, named: str) -> None:
+def test_impossible_circuits_name_what_is_at_fault(
+    body: str, code: str, named: list[str], line: int
+) -> None:
     with pytest.raises(ProblemError) as caught:
         solve_bias(circuit(f"impossible\n{body}\n.end\n"))
     problem = caught.value.problems[0]
     assert problem.code == code
-    assert named in problem.message
+    assert [name for name in named if name not in problem.message] == []
+    assert problem.span is not None
+    assert problem.span.line == line
     assert problem.advice
+
+
+def test_no_solution_names_the_devices_that_moved_most() -> None:
+    """The current of B1 rises faster than R1 takes it away: no voltage of a satisfies both."""
+    with pytest.raises(ProblemError) as caught:
+        solve_bias(
+            circuit(
+                """no solution
+VCC vcc 0 12
+R1 a 0 10k
+B1 0 a I=1m*(v(a)^2+1)
+Q1 a x 0 qx
+RX x 0 1k
+R2 vcc c 1k
+R3 c 0 1k
+Q2 vcc c 0 qx
+.model qx npn
+.end
+"""
+            )
+        )
+    [problem] = caught.value.problems
+    assert problem.code == "bias-not-found"
+    assert "Q1 (line 5)" in problem.message
+    assert problem.span is not None
+    assert problem.span.line == 5
+
+
+def ladder(stages: int) -> str:
+    """Direct-coupled followers in a row, three unknowns each."""
+    lines = ["ladder", "VCC vcc 0 15", "RS vcc b0 10k"]
+    for i in range(stages):
+        kind = "qn" if i % 2 else "qp"
+        rail, other = ("vcc", "0") if i % 2 else ("0", "vcc")
+        lines += [f"Q{i} {rail} b{i} e{i} {kind}", f"RE{i} e{i} {other} 4.7k"]
+        lines += [f"RB{i} e{i} b{i + 1} 1k"]
+    lines += [f"RL b{stages} 0 1meg", ".model qn npn rb=50", ".model qp pnp rb=50", ".end"]
+    return "\n".join(lines)
+
+
+def test_sparse_and_dense_solutions_agree(monkeypatch: pytest.MonkeyPatch) -> None:
+    text = ladder(60)
+    dense = solve_bias(circuit(text)).point
+    monkeypatch.setattr(newton, "SPARSE_ABOVE", 100)
+    assert len(dense.nodes) > 100
+    sparse = solve_bias(circuit(text)).point
+    assert sparse.voltages == pytest.approx(dense.voltages, rel=1e-9, abs=1e-9)
+
+
+def test_a_singular_matrix_is_found_by_the_sparse_solver_too(
+    monkeypatch: pytest.MonkeyPatch,
+) -> None:
+    monkeypatch.setattr(newton, "SPARSE_ABOVE", 1)
+    with pytest.raises(ProblemError, match="loop of voltage sources"):
+        solve_bias(circuit("loop\nV1 a 0 5\nV2 a 0 6\nR1 a 0 1k\n.end\n"))
+
+
+def test_a_small_circuit_loads_no_sparse_solver() -> None:
+    script = (
+        "import sys; from tauledger.bias import solve_bias; from tauledger.circuit import flatten;"
+        "from tauledger.netlist import parse; solve_bias(flatten(parse(sys.stdin.read())));"
+        "print([name for name in sys.modules if name.partition('.')[0] == 'scipy'])"
+    )
+    done = subprocess.run(
+        [sys.executable, "-c", script], input=STAGE, capture_output=True, text=True, check=True
+    )
+    assert done.stdout.strip() == "[]"
+
+
+def test_a_report_loads_no_scipy_matplotlib_or_pyspice(tmp_path: Path) -> None:
+    netlist = tmp_path / "stage.cir"
+    netlist.write_text(STAGE.replace("R1 vcc", "VIN in 0 AC 1\nC1 in b 1u\nR1 vcc"))
+    script = (
+        "import sys; from tauledger.command import main; status = main();"
+        "heavy = {'scipy', 'matplotlib', 'PySpice'} & {n.partition('.')[0] for n in sys.modules};"
+        "sys.exit(f'loaded {heavy}' if heavy else status)"
+    )
+    command = [sys.executable, "-c", script, "report", str(netlist), "--output", "c"]
+    done = subprocess.run(command, capture_output=True, text=True, check=False)
+    assert (done.returncode, done.stderr) == (0, "")

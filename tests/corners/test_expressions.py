@@ -41,7 +41,7 @@ def row(analysis: Analysis, name: str) -> TimeConstantRow:
         ("CE", "RE‖(rπ + RS‖R1‖R2)/(β+1)"),
         ("C2", "RC + RL"),
         ("Q1.Cπ", "rπ‖RS‖R1‖R2"),
-        ("Q1.Cμ", "R1 + R2 + gm·R1·R2 [Miller: R1·(1 + gm·R2) + R2]"),
+        ("Q1.Cμ", "R_in + R_out + gm·R_in·R_out [Miller: R_in·(1 + gm·R_out) + R_out]"),
     ],
 )
 def test_common_emitter_by_the_rules_of_the_trade(name: str, expression: str) -> None:
@@ -125,8 +125,8 @@ RL out 0 100k
     analysis = run(text)
     assert terms(row(analysis, "C1").expression) == {"RS", "RG"}
     assert {"RSS", "gm"} <= terms(row(analysis, "CS").expression)
-    assert row(analysis, "J1.Cgd").expression.startswith("R1 + R2 + gm·R1·R2")
-    assert "R1 = RS" in row(analysis, "J1.Cgd").expression
+    assert row(analysis, "J1.Cgd").expression.startswith("R_in + R_out + gm·R_in·R_out")
+    assert "R_in = RS" in row(analysis, "J1.Cgd").expression
 
 
 PAIR = f"""two stages with feedback to the first emitter

@@ -64,7 +64,9 @@ def _reference(row: type, definitions: dict[str, Any]) -> dict[str, Any]:
 
 
 def _row(row: Any, definitions: dict[str, Any]) -> dict[str, Any]:
-    hints = typing.get_type_hints(row, vars(inspect.getmodule(row)))
+    # The rows name Comparison for type checkers only.
+    names_at_hand = {**vars(inspect.getmodule(row)), "Comparison": Comparison}
+    hints = typing.get_type_hints(row, names_at_hand)
     notes = _descriptions(row)
     names = [field.name for field in dataclasses.fields(row)]
     properties = {name: _value(hints[name], definitions) for name in names}

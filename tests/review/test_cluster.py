@@ -21,8 +21,8 @@ def test_a_cluster_gives_what_this_process_gives(tmp_path: Path) -> None:
     with (
         distributed.LocalCluster(
             n_workers=1,
-            threads_per_worker=2,
-            processes=False,
+            threads_per_worker=1,
+            processes=True,
             dashboard_address=None,
             local_directory=str(tmp_path),
         ) as cluster,

@@ -32,7 +32,7 @@ def find_places(labels: Sequence[Label], names: Iterable[str]) -> dict[str, list
     for label in labels:
         if (name := _part(label.text, keys)) is not None:
             found.setdefault(name, []).append(label)
-    return {name: _distinct(same)[:MOST_PLACES] for name, same in found.items()}
+    return {name: _distinct(same) for name, same in found.items()}
 
 
 def _part(text: str, keys: Mapping[str, str]) -> str | None:
@@ -80,4 +80,6 @@ def _distinct(labels: Sequence[Label]) -> list[Place]:
         reach = _SAME_PLACE * label.size or max(label.box.width, label.box.height)
         if all(place.box.gap(label.box) > reach for place in places):
             places.append(Place(label.box, label.size))
+        if len(places) == MOST_PLACES:
+            break
     return places

@@ -13,7 +13,7 @@ from tauledger.annotate.drawing import Drawing, remove_marks
 from tauledger.netlist.source import read_bytes
 from tauledger.problems import Problem, ProblemError, Severity
 
-MAXIMUM_DRAWING_BYTES = 32 * 1024 * 1024
+MAXIMUM_DRAWING_BYTES = 16 * 1024 * 1024
 
 
 def read_drawings(paths: Sequence[str]) -> list[Drawing]:

@@ -29,6 +29,8 @@ _PIXELS = {
     "mm": 96 / 25.4,
 }
 _FARTHEST = 1e12
+_LONGEST_PATH = 1_000_000
+"""Characters of a path that are read; what lies behind is taken for free space."""
 _RELATIVE = {"em": 1.0, "ex": 0.5, "rem": 1.0, "%": 0.01}
 
 
@@ -206,7 +208,7 @@ _TAKES = {"M": 2, "L": 2, "T": 2, "H": 1, "V": 1, "C": 6, "S": 4, "Q": 4, "A": 7
 
 def path_points(text: str) -> Iterator[Point | None]:
     """The points of a path, curves as their control polygons; None before each new subpath."""
-    tokens = _PATH.findall(text)
+    tokens = _PATH.findall(text[:_LONGEST_PATH])
     at: Point = (0.0, 0.0)
     start = at
     command, index = "", 0

@@ -56,6 +56,8 @@ class Mark:
         front, back = (PAPER, INK) if note.sets else (INK, PAPER)
         parts = [_leader(label, box, size)] if self.named else []
         parts.append(_plate(box, back, 1.0 if note.sets else 0.82))
+        if note.sets:
+            parts.append(_frame(box, 0.08 * size, PAPER))
         if note.transistor and not note.sets:
             parts.append(_plate(Box(box.left, box.top, box.left + 0.12 * size, box.bottom), INK))
         left, top = box.left + _PAD * size, box.top + _PAD * 0.6 * size
@@ -183,9 +185,9 @@ def _plate(box: Box, fill: str, opacity: float = 1.0) -> str:
     return _path(data, f"fill:{fill};fill-opacity:{_n(opacity)};stroke:none")
 
 
-def _frame(box: Box, width: float) -> str:
+def _frame(box: Box, width: float, colour: str = INK) -> str:
     data = f"M{_n(box.left)} {_n(box.top)}h{_n(box.width)}v{_n(box.height)}h{_n(-box.width)}z"
-    return _path(data, _stroke(INK, width))
+    return _path(data, _stroke(colour, width))
 
 
 def _stroke(colour: str, width: float) -> str:
@@ -207,7 +209,9 @@ def _bar(
 
 def _leader(label: Box, box: Box, size: float) -> str:
     (x1, y1), (x2, y2) = label.link(box)
-    return _path(f"M{_n(x1)} {_n(y1)}L{_n(x2)} {_n(y2)}", _stroke(INK, 0.07 * size))
+    data = f"M{_n(x1)} {_n(y1)}L{_n(x2)} {_n(y2)}"
+    # Light beside dark, so that the line shows on a sheet of either.
+    return _path(data, _stroke(PAPER, 0.15 * size)) + _path(data, _stroke(INK, 0.07 * size))
 
 
 def escape(content: str) -> str:

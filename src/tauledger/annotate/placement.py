@@ -25,7 +25,7 @@ _FAR_COST = 0.6
 """For each em between a designator and its mark."""
 _BESIDE = 1.6
 """Em between the two up to which no line need tie them."""
-_LEADER_COST, _ACROSS_TEXT, _ACROSS_LINE = 1.0, 2.5, 1.6
+_LEADER_COST, _ACROSS_TEXT, _ACROSS_LINE = 1.0, 6.0, 1.6
 """Of that line: for itself, and for each half em of text or lines it crosses."""
 _STEPS = (0.3, 0.55, 0.85, 1.3, 1.8, 2.4, 3.1, 3.8, 4.6, 5.5, 6.5, 8.0, 10.0, 13.0, 17.0)
 """Em from a designator at which places are tried."""

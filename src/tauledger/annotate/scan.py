@@ -30,7 +30,7 @@ from tauledger.problems import Problem, ProblemError, Severity
 MAXIMUM_DEPTH = 500
 MAXIMUM_ELEMENTS = 500_000
 MAXIMUM_LABELS = 50_000
-MAXIMUM_POINTS = 2_000_000
+MAXIMUM_POINTS = 1_000_000
 MAXIMUM_NAMES = 20
 """Labels that one element may carry in attributes and titles."""
 LONGEST_LABEL = 200

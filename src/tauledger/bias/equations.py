@@ -52,11 +52,13 @@ class Scatter:
 
     positions: IntArray
     layers: tuple[tuple[IntArray, IntArray], ...]
-    """Targets and where their values stand; no target repeats within a layer."""
+    """Targets and where their values stand, no target twice in a layer; for batches only."""
 
     @classmethod
-    def onto(cls, positions: IntArray, kept: BoolArray | None = None) -> Scatter:
+    def onto(cls, positions: IntArray, boards: int, kept: BoolArray | None = None) -> Scatter:
         """``kept`` marks the values worth adding to a batch: those outside the ground row."""
+        if boards == 1:
+            return cls(positions, ())
         sources = np.arange(positions.size) if kept is None else np.flatnonzero(kept)
         order = sources[np.argsort(positions[sources], kind="stable")]
         targets, starts, counts = np.unique(positions[order], return_index=True, return_counts=True)
@@ -144,7 +146,7 @@ class _Triplets:
         result = np.zeros((boards, (size + 1) ** 2))
         rows = np.asarray(self.rows, dtype=np.intp) % (size + 1)
         columns = np.asarray(self.columns, dtype=np.intp) % (size + 1)
-        Scatter.onto(rows * (size + 1) + columns).add(result, _columns(self.values, boards))
+        Scatter.onto(rows * (size + 1) + columns, boards).add(result, _columns(self.values, boards))
         return result.reshape(boards, size + 1, size + 1)
 
 
@@ -188,11 +190,11 @@ def build_equations(
     conductance, reactance, sources, values = _stamp_linear(
         circuit, varied, node_index, branch_index, size
     )
-    groups = tuple(_group(*item, size) for item in prepared)
     boards = max(
         [conductance.shape[0], reactance.shape[0], sources.shape[0], np.size(temperature)]
         + [np.size(v) for v in varied.values()]
     )
+    groups = tuple(_group(*item, size, boards) for item in prepared)
     return Equations(
         circuit=circuit,
         nodes=nodes,
@@ -302,6 +304,7 @@ def _group(
     parameters: Any,
     terminals: IntArray,
     size: int,
+    boards: int,
 ) -> DeviceGroup:
     position = {name: k for k, name in enumerate(device.terminals)}
     plus = np.array([position[p] for p, _ in device.branches])
@@ -322,9 +325,9 @@ def _group(
         minus=terminals[:, minus],
         incidence=incidence,
         matrix_scatter=Scatter.onto(
-            pairs.ravel(), (inside[:, :, None] & inside[:, None, :]).ravel()
+            pairs.ravel(), boards, (inside[:, :, None] & inside[:, None, :]).ravel()
         ),
-        vector_scatter=Scatter.onto(wrapped.ravel(), inside.ravel()),
+        vector_scatter=Scatter.onto(wrapped.ravel(), boards, inside.ravel()),
     )
 
 
@@ -379,7 +382,7 @@ def _stamp_linear(
             _stamp_coupling(reactance, element, varied, values, branch_index)
     sources = np.zeros((_boards(right_values), size + 1))
     wrapped = np.asarray(right_rows, dtype=np.intp) % (size + 1)
-    Scatter.onto(wrapped).add(sources, _columns(right_values, sources.shape[0]))
+    Scatter.onto(wrapped, sources.shape[0]).add(sources, _columns(right_values, sources.shape[0]))
     return conductance.matrix(size), reactance.matrix(size), sources, values
 
 

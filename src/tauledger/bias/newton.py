@@ -16,7 +16,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-from tauledger.bias.equations import DeviceGroup, Equations
+from tauledger.bias.equations import Equations
 from tauledger.circuit.elements import BehaviouralSource
 from tauledger.circuit.evaluate import evaluate_with_derivatives, leaves_of
 from tauledger.devices.interface import BoolArray, FloatArray
@@ -101,18 +101,21 @@ def solve_newton(
     work, old, old_voltages = equations, unknowns.copy(), [array.copy() for array in voltages]
     for _ in range(maximum_iterations):
         new, new_voltages, settled = _iterate(work, old, old_voltages, helps)
-        kept = rows[going]
-        movement[kept] = np.abs(new[going] - old[going])
-        unknowns[kept] = new[going]
-        for array, fresh in zip(voltages, new_voltages, strict=True):
-            array[kept] = fresh[going]
+        kept = rows if going.all() else rows[going]
+        fresh = new if kept is rows else new[going]
+        movement[kept] = np.abs(fresh - (old if kept is rows else old[going]))
+        unknowns[kept] = fresh
+        for array, limited in zip(voltages, new_voltages, strict=True):
+            array[kept] = limited if kept is rows else limited[going]
         done = settled & _still(new, old, len(equations.nodes)) & going
         converged[rows[done]] = True
         going = going & ~done & np.isfinite(new).all(axis=1)
         left = int(np.count_nonzero(going))
         if not left:
             break
-        old, old_voltages = np.where(going[:, None], new, 0.0), new_voltages
+        old, old_voltages = new, new_voltages
+        if left < rows.size:
+            old = np.where(going[:, None], new, 0.0)
         # Copying the equations costs about as much as an iteration: worth it only for many.
         if left < COMPACT_BELOW * rows.size:
             old, old_voltages = old[going], [array[going] for array in new_voltages]
@@ -159,12 +162,6 @@ def _take_helps(helps: Helps, boards: BoolArray) -> Helps:
     return dataclasses.replace(helps, pull_targets=helps.pull_targets[boards])
 
 
-def branch_voltages(group: DeviceGroup, unknowns: FloatArray) -> FloatArray:
-    """(boards, n, U) from the unknowns."""
-    padded = np.concatenate([unknowns, np.zeros((unknowns.shape[0], 1))], axis=1)
-    return np.asarray(padded[:, group.plus] - padded[:, group.minus])
-
-
 def linearise(
     equations: Equations, unknowns: FloatArray, voltages: Sequence[FloatArray]
 ) -> tuple[FloatArray, FloatArray]:
@@ -173,8 +170,9 @@ def linearise(
     The right-hand side already holds ``s − (i(u) − J u)``, with sources at full scale.
     """
     boards, order = equations.boards, equations.size + 1
-    matrix = np.array(np.broadcast_to(equations.conductance, (boards, order, order)))
-    right = np.array(np.broadcast_to(equations.sources, (boards, order)))
+    matrix, right = np.empty((boards, order, order)), np.empty((boards, order))
+    matrix[...] = equations.conductance
+    right[...] = equations.sources
     for group, u in zip(equations.groups, voltages, strict=True):
         evaluation = group.device.evaluate(group.parameters, u, equations.circuit.gmin)
         stamp = evaluation.jacobian @ group.incidence
@@ -197,8 +195,11 @@ def _iterate(
     new = solve_boards(matrix[:, :size, :size], right[:, :size])
     limited = []
     settled = np.ones(equations.boards, dtype=bool)
+    finite = np.isfinite(new)
+    padded = np.zeros((new.shape[0], size + 1))  # with ground
+    padded[:, :size] = new if finite.all() else np.where(finite, new, 0.0)
     for group, previous in zip(equations.groups, voltages, strict=True):
-        proposed = branch_voltages(group, np.where(np.isfinite(new), new, 0.0))
+        proposed = padded[:, group.plus] - padded[:, group.minus]
         allowed = group.device.limit(group.parameters, proposed, previous)
         limited.append(allowed)
         gap = np.abs(allowed - proposed) <= VOLTAGE_TOLERANCE_V + RELATIVE_TOLERANCE * np.abs(

@@ -56,7 +56,7 @@ SHARED_KEYS = (
 )  # fmt: skip
 """May stand at the top, for all paths, or in a path, which then counts first."""
 TOP_KEYS = ("path", *SHARED_KEYS)
-PATH_KEYS = ("netlist", "input", "output", *SHARED_KEYS, "limits")
+PATH_KEYS = ("netlist", "input", "output", "midband", *SHARED_KEYS, "limits")
 INPUT_KEYS = ("source", "node", "resistance")
 OUTPUT_KEYS = ("node", "load_resistance", "load_capacitance")
 FIGURE_UNITS = {
@@ -156,6 +156,7 @@ def _path(name: str, table: Table, folder: Path, shared: PathSettings) -> PathSe
         netlist=netlist or "",
         input=_input(table),
         output=_output(table),
+        midband=table.quantity("midband", "Hz", above=0.0),
         supplies=(*own.supplies, *(s for s in shared.supplies if s.node.casefold() not in nets)),
         models=(*shared.models, *own.models),
         temperature=own.temperature or shared.temperature,

@@ -189,6 +189,8 @@ class PathSettings:
     transistors: tuple[TransistorClass, ...] = ()
     """The first class that matches counts."""
     spread: SpreadSettings | None = None
+    midband: Quantity | None = None
+    """Where the gain is judged; None for the middle of the flat stretch."""
 
 
 @dataclass(frozen=True, slots=True)

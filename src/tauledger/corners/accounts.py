@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Iterable, Sequence
+from collections.abc import Sequence
 from dataclasses import replace
 
 import numpy as np
@@ -25,6 +25,7 @@ def summands(model: EndModel) -> FloatArray:
 
 
 def total(model: EndModel) -> float:
+    """Σ 1/τ in rad/s at the low end, Σ τ in s at the high end."""
     return float(summands(model).sum())
 
 
@@ -34,6 +35,10 @@ def part_accounts(
     looped: Sequence[ReactivePart],
     groups: Sequence[tuple[ReactivePart, ...]],
 ) -> list[PartAccount]:
+    """A row for every part of both ends, in-band and without effect included.
+
+    ``groups`` are the capacitors that were counted as one, ``looped`` those that close a loop.
+    """
     accounts = []
     for model in (ends.low, ends.high):
         whole = total(model)
@@ -50,37 +55,35 @@ def part_accounts(
     return [one for a in accounts for one in _split_parallel(a, members_of[a.part.name])]
 
 
-def _split_parallel(account: PartAccount, members: Sequence[ReactivePart]) -> Iterable[PartAccount]:
-    """Give each of several capacitors in parallel a row of its own.
-
-    Open-circuit time constants add, so each has its own; at the low end they act together, and
-    the largest stands for all.
-    """
+def _split_parallel(account: PartAccount, members: Sequence[ReactivePart]) -> list[PartAccount]:
+    """Give each of several capacitors in parallel a row of its own."""
     if len(members) == 1:
         return [account]
-    whole = float(account.part.value[0])
-    additive = account.end == "high"
     rows = []
     for i, part in enumerate(members):
-        part_of = float(part.value[0]) / whole
-        others = ", ".join(m.name for m in members if m is not part)
-        rows.append(
-            replace(
-                account,
-                part=part,
-                tau_s=account.tau_s * part_of if additive and account.tau_s else account.tau_s,
-                corner_hz=account.corner_hz / part_of
-                if additive and account.corner_hz and part_of
-                else account.corner_hz,
-                share=account.share * part_of
-                if additive and account.share is not None
-                else (account.share if i == 0 else None),
-                reason=account.reason + (f"; counted together with {others}" if i == 0 else "")
-                if i == 0 or additive
-                else f"in parallel with {members[0].name}, counted there",
-            )
-        )
+        if account.end == "high":
+            rows.append(_own_part(account, part))
+        elif i == 0:
+            others = ", ".join(member.name for member in members[1:])
+            reason = f"{account.reason}; counted together with {others}"
+            rows.append(replace(account, part=part, reason=reason))
+        else:
+            reason = f"in parallel with {members[0].name}, counted there"
+            rows.append(replace(account, part=part, share=None, reason=reason))
     return rows
+
+
+def _own_part(account: PartAccount, part: ReactivePart) -> PartAccount:
+    """One capacitor's part of a parallel group: open-circuit time constants add."""
+    fraction = float(part.value[0] / account.part.value[0])
+    tau, corner, share = account.tau_s, account.corner_hz, account.share
+    return replace(
+        account,
+        part=part,
+        tau_s=tau * fraction if tau is not None else None,
+        corner_hz=corner / fraction if corner is not None and fraction else None,
+        share=share * fraction if share is not None else None,
+    )
 
 
 def _account(
@@ -124,4 +127,5 @@ def _reason(model: EndModel, i: int, end: str, midband_hz: float) -> str:
 
 
 def idle_account(part: ReactivePart, reason: str) -> PartAccount:
+    """A row for a part that counts nowhere, with the reason."""
     return PartAccount(part, "no effect", None, None, None, None, None, 0.0, reason)

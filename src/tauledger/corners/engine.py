@@ -37,6 +37,7 @@ from tauledger.smallsignal.network import ReactivePart
 from tauledger.smallsignal.response import (
     ComplexArray,
     Response,
+    condensed,
     edge_sensitivity,
     natural_frequencies,
 )
@@ -124,8 +125,9 @@ class _Path:
 
 
 def _survey(response: Response, parts: Sequence[ReactivePart], midband_hz: float | None) -> _Path:
-    natural = natural_frequencies(response.conductance, response.reactance)
-    sweep = sweep_response(response, natural)
+    short = condensed(response)
+    natural = natural_frequencies(short.conductance, short.reactance)
+    sweep = sweep_response(short, natural)
     passband = (
         _transistor_passband(response, parts, sweep)
         if midband_hz is None
@@ -133,7 +135,7 @@ def _survey(response: Response, parts: Sequence[ReactivePart], midband_hz: float
     )
     exact_gain = response.magnitude(passband.midband_hz)
     low, high = (
-        find_edge(response, sweep, passband.midband_hz, upward=up) if exact_gain > 0 else None
+        find_edge(short, sweep, passband.midband_hz, upward=up) if exact_gain > 0 else None
         for up in (False, True)
     )
     return _Path(response, tuple(parts), natural, sweep, passband, (low, high), exact_gain)

@@ -2,8 +2,9 @@
 
 from __future__ import annotations
 
+import functools
 import math
-from collections.abc import Iterable, Mapping, Sequence
+from collections.abc import Callable, Iterable, Mapping, Sequence
 from dataclasses import dataclass
 
 import numpy as np
@@ -37,8 +38,14 @@ AGREEMENT = 0.05
 """An expression is shown only when it reproduces the exact resistance this well."""
 IDEAL = 0.03
 """So well must it do to leave out the devices' own series resistances."""
-MOST_TRIALS = 4
+MOST_EXPRESSIONS = 60
+"""Capacitors looked at, largest share first."""
+MOST_TRIALS = 3
 """Feedback loops tried for one capacitor."""
+
+
+NetworkOf = Callable[[tuple[tuple[int, int], ...], str, bool], SignalNetwork]
+"""Node pairs tied, name of the dead device, whether series resistances are left out."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -74,7 +81,7 @@ class Workbench:
     """Ends of the devices' own series resistances."""
 
     def network(
-        self, shorted: Iterable[tuple[int, int]], dead: str = "", *, ideal: bool = False
+        self, shorted: tuple[tuple[int, int], ...], dead: str = "", ideal: bool = False
     ) -> SignalNetwork:
         """The signal network with these node pairs tied as well.
 
@@ -170,33 +177,38 @@ def hand_expressions(
     midband = corners.midband
     if midband is None:
         return {}
-    coils = [_pair(p) for p in midband.high.parts if p.is_inductor]
+    coils = tuple(_pair(p) for p in midband.high.parts if p.is_inductor)
+    # All capacitors of the high end look at one network, so each is built once.
+    network = functools.cache(bench.network)
     result = {}
-    for account in corners.accounts:
+    leading = sorted(corners.accounts, key=lambda account: -(account.share or 0.0))
+    for account in leading[:MOST_EXPRESSIONS]:
         if account.share is None or account.resistance_ohm is None or account.part.is_inductor:
             continue
         others: Sequence[ReactivePart] = midband.low.parts
         if account.end == "low" and corners.low.model is not None:
             own = {*_pair(account.part)}
             others = [p for p in corners.low.model.parts if {*_pair(p)} != own]
-        shorted = coils + [_pair(p) for p in others if not p.is_inductor]
-        expression = _by_rules(bench, shorted, account)
+        shorted = coils + tuple(_pair(p) for p in others if not p.is_inductor)
+        expression = _by_rules(network, shorted, account)
         if not expression.text:
             inverse = midband.inverse
             if account.end == "low":
                 inverse = midband_network(response, others, midband.high.parts).inverse
-            expression = _with_feedback(bench, shorted, account, inverse) or expression
+            expression = (
+                _with_feedback(network, bench.transactors, shorted, account, inverse) or expression
+            )
         result[account.part.name] = expression
     return result
 
 
 def _by_rules(
-    bench: Workbench, shorted: Sequence[tuple[int, int]], account: PartAccount
+    network: NetworkOf, shorted: tuple[tuple[int, int], ...], account: PartAccount
 ) -> HandExpression:
     """By the rules alone; without the devices' series resistances where they hardly count."""
     exact = account.resistance_ohm or 0.0
     for ideal in (True, False):
-        found = _attempt(bench.network(shorted, ideal=ideal), account, exact)
+        found = _attempt(network(shorted, "", ideal), account, exact)
         if found.deviation is not None and abs(found.deviation) <= (IDEAL if ideal else AGREEMENT):
             return found
     return found if not found.text else HandExpression("", None, found.reason)
@@ -219,8 +231,9 @@ def _attempt(signal: SignalNetwork, account: PartAccount, exact: float) -> HandE
 
 
 def _with_feedback(
-    bench: Workbench,
-    shorted: Sequence[tuple[int, int]],
+    network: NetworkOf,
+    transactors: Sequence[Transactor],
+    shorted: tuple[tuple[int, int], ...],
     account: PartAccount,
     inverse: FloatArray,
 ) -> HandExpression | None:
@@ -232,7 +245,7 @@ def _with_feedback(
     exact = account.resistance_ohm or 0.0
     port = _vector(_pair(account.part), inverse.shape[0])
     candidates = []
-    for source in bench.transactors:
+    for source in transactors:
         control, output = (_vector(v, inverse.shape[0]) for v in (source.control, source.output))
         loop = source.transconductance * float(control @ inverse @ output)
         if loop >= 1.0:
@@ -244,7 +257,7 @@ def _with_feedback(
             candidates.append((abs(math.log(exact / dead)), source.name, dead, one_plus_open))
     for _, name, dead, one_plus_open in sorted(candidates, reverse=True)[:MOST_TRIALS]:
         for ideal in (True, False):
-            found = _attempt(bench.network(shorted, name, ideal=ideal), account, dead)
+            found = _attempt(network(shorted, name, ideal), account, dead)
             if found.deviation is None or abs(found.deviation) > AGREEMENT:
                 continue
             one_plus_short = exact * one_plus_open / dead

@@ -9,7 +9,7 @@ source; S. Franco ch. 6 and references D1, D2 use the same):
 * into a collector: ro·(1 + gm·(R_E‖(rπ + R_B)));
 * into a gate: open;  into a source: 1/gm, or (ro + R_D)/(1 + gm·ro) above a large load;
 * into a drain: ro·(1 + gm·R_S);
-* Cμ or Cgd: R1 + R2 + Gm·R1·R2;  Cπ or Cgs: rπ‖(R_B + R_E)/(1 + gm·R_E).
+* Cμ or Cgd: R_in + R_out + Gm·R_in·R_out;  Cπ or Cgs: rπ‖(R_B + R_E)/(1 + gm·R_E).
 
 The walk is a tree: a branch that leads back to a node already passed is taken for open, as one
 does by hand. Where that matters there is a bridge or feedback; the caller finds out by comparing
@@ -37,7 +37,7 @@ from tauledger.corners.symbols import (
 )
 
 MAXIMUM_DEPTH = 24
-MAXIMUM_STEPS = 600
+MAXIMUM_STEPS = 300
 """The walk tries every way out of a node, so that a mesh of resistors must be bounded."""
 LARGEST_COLLECTOR_RATIO = 0.5
 """Up to here a load on the collector raises the emitter's resistance by 1 + R_C/ro."""
@@ -120,6 +120,16 @@ class SignalNetwork:
                 self._resistors.setdefault(a, []).append((branch, b))
                 self._resistors.setdefault(b, []).append((branch, a))
         self.devices = tuple(devices)
+        # Where each device stands, and the devices at each node: the walk asks at every step.
+        self._places = {
+            d.name: (self._node(d.control), self._node(d.common), self._node(d.output))
+            for d in self.devices
+        }
+        self._attached: dict[int, list[ActiveDevice]] = {}
+        for device in self.devices:
+            for node in dict.fromkeys(self._places[device.name]):
+                self._attached.setdefault(node, []).append(device)
+        self._ground = self._node(-1)
         self._steps = 0
 
     def _node(self, node: int) -> int:
@@ -157,9 +167,7 @@ class SignalNetwork:
 
     def _around_device(self, device: ActiveDevice, a: int, b: int) -> Term | None:
         ends = {self._node(a), self._node(b)}
-        control, common, output = (
-            self._node(node) for node in (device.control, device.common, device.output)
-        )
+        control, common, output = self._places[device.name]
         own = frozenset({device.name})
         if ends == {control, common} and control != common:
             outer_control = self._side(control, own, {common})
@@ -209,8 +217,8 @@ class SignalNetwork:
         depth: int = 0,
     ) -> Term:
         """Resistance from a node to AC ground through all that is attached and not ``used``."""
-        here = self._node(node)
-        if self.is_ground(here):
+        here = self._merged.get(node, node)
+        if here == self._ground:
             return GROUND
         self._steps += 1
         if depth > MAXIMUM_DEPTH or self._steps > MAXIMUM_STEPS:
@@ -227,9 +235,8 @@ class SignalNetwork:
         ]
         branches += [
             self._into(device, here, used | {device.name}, seen, depth)
-            for device in self.devices
+            for device in self._attached.get(here, ())
             if device.name not in used
-            and here in {self._node(n) for n in (device.control, device.common, device.output)}
         ]
         return parallel(*branches)
 
@@ -252,9 +259,7 @@ class SignalNetwork:
         seen: frozenset[int],
         depth: int,
     ) -> Term:
-        control, common, output = (
-            self._node(node) for node in (device.control, device.common, device.output)
-        )
+        control, common, output = self._places[device.name]
         if here == control == output:
             # Diode-connected: base and collector together.
             below = self.see(common, used, seen, depth + 1)

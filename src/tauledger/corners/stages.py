@@ -38,7 +38,7 @@ def stage_formulas(
     short = [(p.positive, p.negative) for p in midband.low.parts if not p.is_inductor]
     short += [(p.positive, p.negative) for p in midband.high.parts if p.is_inductor]
     devices = {d.name: d for d in bench.devices if d.transconductance > 0.0}
-    plain, full = (bench.network(short, ideal=ideal) for ideal in (True, False))
+    plain, full = (bench.network(tuple(short), "", ideal) for ideal in (True, False))
     formulas = []
     for stage in topology.stages:
         found = _formula(plain, devices, network, stage, topology, corners, IDEAL)
@@ -145,4 +145,9 @@ def _pair_gain(
     )
     sign = -1.0 if signal.same(device.output, leaving) else 1.0
     text, value = _transconductance_stage(signal, device, leaving, sign)
-    return (f"2·({text})", 2.0 * value) if mirrored else (text, value)
+    if not mirrored:
+        return text, value
+    # Twice each side of the equation, a minus kept in front.
+    sides = text.split(" = ")
+    doubled = [f"−2·{side[1:]}" if side.startswith("−") else f"2·{side}" for side in sides]
+    return " = ".join(doubled), 2.0 * value

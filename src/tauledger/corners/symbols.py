@@ -21,7 +21,7 @@ class Term:
     text: str
     binding: int = _FACTOR
     where: tuple[str, ...] = ()
-    """Abbreviations the text uses, such as ``R1 = RS‖R2``."""
+    """Abbreviations the text uses, such as ``R_in = RS‖R2``."""
 
     def within(self, binding: int) -> str:
         """The text, in parentheses where it binds more loosely than its surroundings."""
@@ -97,7 +97,7 @@ def boosted(resistance: Term, conductance: float, text: str, degeneration: Term)
 
 
 def bridging(first: Term, second: Term, conductance: Term) -> Term:
-    """``R1 + R2 + gm·R1·R2``, what a capacitor from input to inverted output sees.
+    """``R_in + R_out + gm·R_in·R_out``, what a capacitor from input to inverted output sees.
 
     ``conductance`` is the effective transconductance in S. The Miller form stands beside it.
     """
@@ -107,12 +107,12 @@ def bridging(first: Term, second: Term, conductance: Term) -> Term:
     total = first.value + second.value + product
     if product < NEGLIGIBLE * total:
         return series(first, second)
-    where = [f"R1 = {first.text}", f"R2 = {second.text}"]
+    where = [f"R_in = {first.text}", f"R_out = {second.text}"]
     gain = conductance.text
     if conductance.binding != _FACTOR:
         where.append(f"gm' = {conductance.text}")
         gain = "gm'"
-    text = f"R1 + R2 + {gain}·R1·R2 [Miller: R1·(1 + {gain}·R2) + R2]"
+    text = f"R_in + R_out + {gain}·R_in·R_out [Miller: R_in·(1 + {gain}·R_out) + R_out]"
     return Term(total, text, _SUM, tuple(where))
 
 

@@ -35,6 +35,10 @@ class Stock:
         start = max(0, min(at - count // 2, len(self.values_f) - count))
         return list(self.values_f[start : start + count])
 
+    def nearest(self, value_f: float) -> float:
+        """The value nearest in ratio."""
+        return min(self.values_f, key=lambda v: max(v / value_f, value_f / v))
+
 
 def stock_of(part: str, settings: PathSettings | None, series: str = "") -> Stock:
     """The stock of a capacitor: its class's values, its class's series, ``series``, the usual."""

@@ -8,115 +8,33 @@ from __future__ import annotations
 
 import itertools
 import math
-from collections.abc import Callable, Iterator, Mapping, Sequence
+from collections.abc import Callable, Iterator, Sequence
 from dataclasses import dataclass, replace
 
 import numpy as np
-from numpy.typing import NDArray
 
-from tauledger import __version__
-from tauledger.analysis import Analysis
+from tauledger.analysis import Analysis, corners_of
 from tauledger.circuit.elements import Capacitor, Circuit
 from tauledger.configuration.settings import PathSettings
-from tauledger.decide.available import Stock, common_values, stock_of
-from tauledger.decide.bench import Bench, bench_of, measure_values
-from tauledger.decide.rows import Alternative, Choice, FittedRow
+from tauledger.decide.asked import Asked
+from tauledger.decide.available import ELECTROLYTIC_F, stock_of
+from tauledger.decide.bench import Bench, bench_of
+from tauledger.decide.search import HIGHEST_PEAK, FloatArray, Search, Wish
 from tauledger.decide.settling import settling_time, slowest_pole
 from tauledger.decide.sizing import by_shares, least_total
-from tauledger.decide.varied import Asked, variety_of
+from tauledger.decide.stress import CAUTION_REVERSED
+from tauledger.decide.varied import variety_of
+from tauledger.decide.ways import ways
 from tauledger.decide.worst import each_alone, worst_cases
 from tauledger.problems import Problem, ProblemError, Severity
-from tauledger.smallsignal.network import LinearNetwork
+from tauledger.quantity import format_quantity
+from tauledger.review.check import REVERSED_VOLTS
+from tauledger.review.decisions import Alternative, Choice, FittedRow
+from tauledger.version import VERSION
 
-FloatArray = NDArray[np.float64]
-
-LEAST_TOTAL = "least total capacitance"
-FEWEST_VALUES = "fewest different values"
-FEWEST_CHANGES = "fewest changes"
-CLOSEST = "closest to the target"
-_MOST_COMBINATIONS = 4096
-_VALUES_EACH = 6
-_BLOCK = 1000
-HIGHEST_PEAK = 10.0 ** (0.5 / 20.0)
-"""Half a decibel; more only where the netlist as it stands has more."""
-GAIN_KEPT = 0.1
-"""Largest change of the midband gain, in nepers."""
+_ROUNDS = 6
 _HUGE = 1e6
 """A capacitor so many times larger (smaller, at the high end) is out of the way."""
-
-
-@dataclass(frozen=True, slots=True)
-class Wish:
-    """What is asked for."""
-
-    end: str
-    target_hz: float
-    only: tuple[str, ...] = ()
-    """Designators that may change; empty for all that count at this end."""
-    shares: Mapping[str, float] | None = None
-    """Share of the corner each capacitor is to have, in place of the least total."""
-    series: str = ""
-    margin: float = 0.0
-    """How far the corner is to keep from the target, relative."""
-    with_tolerance: bool = False
-    """Whether the worst case of all tolerances is to meet it."""
-
-
-@dataclass(frozen=True, slots=True)
-class _Search:
-    """The bench, the capacitors that may change, and what they may become."""
-
-    bench: Bench
-    network: LinearNetwork
-    parts: tuple[Capacitor, ...]
-    stocks: tuple[Stock, ...]
-    ideal_f: tuple[float, ...] | None
-    end: str
-    limit_hz: float
-    """What the nominal exact corner has to meet."""
-
-    def corner(self, values_f: FloatArray) -> FloatArray:
-        """(boards,): exact corners with (parts, boards) capacitances; NaN where there is none."""
-        return self._measured(values_f)[0]
-
-    def met(self, values_f: FloatArray) -> NDArray[np.bool_]:
-        """(boards,): whether the corner meets the limit (no corner at all does) with a band that
-        is still the amplifier's: no more peak than allowed, and the gain as it was."""
-        corner, peak, gain = self._measured(values_f)
-        good = corner <= self.limit_hz if self.end == "low" else corner >= self.limit_hz
-        _, now_peak, _ = self._measured(self.now_f[:, None])
-        calm = peak <= np.maximum(now_peak * 1.01, HIGHEST_PEAK)
-        same = np.abs(np.log(gain / self.bench.gain)) <= GAIN_KEPT
-        return np.asarray((good | np.isnan(corner)) & calm & same)
-
-    def peak(self, values_f: FloatArray) -> float:
-        """Of one board, as a ratio to midband."""
-        return float(self._measured(values_f[:, None])[1][0])
-
-    def _measured(self, values_f: FloatArray) -> tuple[FloatArray, FloatArray, FloatArray]:
-        """Corner, peak towards it, and midband gain."""
-        found = []
-        for start in range(0, values_f.shape[1], _BLOCK):
-            block = values_f[:, start : start + _BLOCK]
-            varied = {part.name: block[i] for i, part in enumerate(self.parts)}
-            f = measure_values(self.bench, self.network, varied)
-            low = self.end == "low"
-            found.append((f.low_hz if low else f.high_hz, f.low_peak if low else f.high_peak, f.gain))
-        corner, peak, gain = (np.concatenate(columns) for columns in zip(*found, strict=True))
-        return corner, peak, gain
-
-    @property
-    def now_f(self) -> FloatArray:
-        return np.array([part.capacitance_f for part in self.parts])
-
-    def only(self, indices: Sequence[int]) -> _Search:
-        """The same with fewer parts that may change, the others as they stand."""
-        return replace(
-            self,
-            parts=tuple(self.parts[i] for i in indices),
-            stocks=tuple(self.stocks[i] for i in indices),
-            ideal_f=None,
-        )
 
 
 def choose(
@@ -140,23 +58,18 @@ def choose(
     names = _candidates(analysis, wish)
     search = _search(analysis, bench, names, wish, settings)
     worst = _worst_ratio(analysis, bench, wish, settings, asked)
+    truth = _whole_analysis(analysis, wish)
     search = replace(search, limit_hz=_limit(wish, worst(bench.circuit)))
-    found: list[tuple[str, FloatArray]] = []
-    reason = _obstacle(analysis, search, wish)
-    if not reason:
-        for _ in range(4):
-            found = list(_ways(search, wish))
-            # The ratio of worst to nominal corner moves a little with the values.
-            ratios = [worst(_with_values(bench.circuit, search.parts, v)) for _, v in found]
-            strictest = max([_limit(wish, r) for r in ratios], key=lambda x: abs(x - wish.target_hz))
-            if not wish.with_tolerance or _keeps(search, wish, found, ratios):
-                break
-            search = replace(search, limit_hz=strictest)
     current = bench.low_hz if wish.end == "low" else bench.high_hz
+    reason = _obstacle(analysis, search, wish) if current is not None else ""
+    found: list[tuple[str, FloatArray]] = []
+    if not reason and current is not None:
+        search, found = _settled(search, wish, worst, truth)
+        reason = "" if found else _no_way(search)
     return Choice(
         title=analysis.circuit.title,
         netlist=analysis.circuit.path,
-        version=__version__,
+        version=VERSION,
         end=wish.end,
         target_hz=wish.target_hz,
         margin_asked=wish.margin or None,
@@ -164,11 +77,71 @@ def choose(
         now_hz=current,
         now_settling_s=_settling(search, search.now_f),
         alternatives=tuple(
-            _alternative(search, wish, rule, values, worst) for rule, values in _distinct(found)
+            _alternative(search, wish, rule, values, _judged(search, values, worst, truth))
+            for rule, values in _distinct(found)
         ),
         infeasible=reason,
-        notes=tuple(_notes(search, wish, current)),
+        notes=(*_notes(search, wish, current), *_polarity(analysis, search, found)),
         problems=analysis.circuit.problems,
+    )
+
+
+def _settled(
+    search: Search, wish: Wish, worst: Ratio, truth: Truth
+) -> tuple[Search, list[tuple[str, FloatArray]]]:
+    """Search until what was found keeps the target in the whole analysis and its worst case.
+
+    The ratio of worst to nominal corner, which sets the limit of the search, moves a little with
+    the values; so does the midband frequency, which the search holds still.
+    """
+    found = list(ways(search, wish))
+    for _ in range(_ROUNDS):
+        judged = [_judged(search, values, worst, truth) for _, values in found]
+        if all(_keeps(wish, entry.worst_hz) for entry in judged):
+            break
+        limits = [
+            _limit(wish, entry.worst_hz / entry.searched_hz)
+            for entry in judged
+            if not _keeps(wish, entry.worst_hz) and 0.0 < entry.searched_hz < math.inf
+        ]
+        if not limits:
+            break
+        limit = min(limits) * (1 - 1e-6) if wish.end == "low" else max(limits) * (1 + 1e-6)
+        search = replace(search, limit_hz=limit)
+        found = list(ways(search, wish))
+    return search, [
+        way for way in found if _keeps(wish, _judged(search, way[1], worst, truth).worst_hz)
+    ]
+
+
+@dataclass(frozen=True, slots=True)
+class _Judged:
+    """One corner three ways; no corner at all counts as 0 Hz (infinite, at the high end)."""
+
+    searched_hz: float
+    exact_hz: float
+    worst_hz: float
+
+
+def _judged(search: Search, values: FloatArray, worst: Ratio, truth: Truth) -> _Judged:
+    circuit = _with_values(search.bench.circuit, search.parts, values)
+    none = 0.0 if search.end == "low" else math.inf
+    searched = float(np.nan_to_num(search.corner(values[:, None])[0], nan=none))
+    exact = truth(circuit)
+    exact = none if exact is None else exact
+    return _Judged(searched, exact, exact * worst(circuit))
+
+
+def _keeps(wish: Wish, corner_hz: float) -> bool:
+    limit = _limit(wish, 1.0)
+    return corner_hz <= limit if wish.end == "low" else corner_hz >= limit
+
+
+def _no_way(search: Search) -> str:
+    names = ", ".join(part.name for part in search.parts)
+    return (
+        f"no values of {names} meet it without a peak in the response or a change of the midband "
+        "gain: feedback through capacitors, or a midband too near the corner, binds"
     )
 
 
@@ -223,19 +196,28 @@ def _search(
     names: Sequence[str],
     wish: Wish,
     settings: PathSettings | None,
-) -> _Search:
+) -> Search:
     by_name = {e.name: e for e in analysis.circuit.elements}
     parts = tuple(e for name in names if isinstance(e := by_name[name], Capacitor))
     stocks = tuple(stock_of(part.name, settings, wish.series) for part in parts)
     ideal = _ideal(analysis, parts, wish) if wish.end == "low" else None
-    # Only this end is searched: the other costs as much and decides nothing.
-    one = replace(bench, high_hz=None) if wish.end == "low" else replace(bench, low_hz=None)
-    return _Search(one, analysis.network, parts, stocks, ideal, wish.end, wish.target_hz)
+    one = _one_end(bench, wish)
+    search = Search(one, analysis.network, parts, stocks, ideal, wish.end, wish.target_hz)
+    if not parts:
+        return search
+    # What peaks already may go on peaking.
+    return replace(search, highest_peak=max(HIGHEST_PEAK, 1.01 * search.peak(search.now_f)))
 
 
-def _ideal(
-    analysis: Analysis, parts: Sequence[Capacitor], wish: Wish
-) -> tuple[float, ...] | None:
+def _one_end(bench: Bench, wish: Wish) -> Bench:
+    """Searched at this end only, and past the target as well as past where the corner is now."""
+    low, high = bench.low_hz, bench.high_hz
+    if wish.end == "low":
+        return replace(bench, high_hz=None, low_hz=low and min(low, wish.target_hz))
+    return replace(bench, low_hz=None, high_hz=high and max(high, wish.target_hz))
+
+
+def _ideal(analysis: Analysis, parts: Sequence[Capacitor], wish: Wish) -> tuple[float, ...] | None:
     """By closed form, after what the other capacitors take of the corner."""
     accounts = {a.part.name: a for a in analysis.corners.accounts}
     names = {part.name for part in parts}
@@ -256,6 +238,21 @@ def _ideal(
 # Tolerances and margin ----------------------------------------------------------------------------
 
 Ratio = Callable[[Circuit], float]
+Truth = Callable[[Circuit], float | None]
+
+
+def _whole_analysis(analysis: Analysis, wish: Wish) -> Truth:
+    """The corner that a report on a circuit shows, whose midband is its own."""
+    path = analysis.topology.path
+    output = path.output_node
+    if path.output_reference != "0":
+        output = f"{output},{path.output_reference}"
+
+    def truth(circuit: Circuit) -> float | None:
+        corners = corners_of(circuit, path.source, output, wish.midband_hz)
+        return corners.low.exact_hz if wish.end == "low" else corners.high.exact_hz
+
+    return truth
 
 
 def _worst_ratio(
@@ -288,18 +285,7 @@ def _limit(wish: Wish, ratio: float) -> float:
     return wish.target_hz * kept / ratio
 
 
-def _keeps(
-    search: _Search, wish: Wish, found: Sequence[tuple[str, FloatArray]], ratios: Sequence[float]
-) -> bool:
-    corners = search.corner(np.stack([values for _, values in found], axis=1))
-    limits = np.array([_limit(wish, ratio) for ratio in ratios])
-    good = corners <= limits if wish.end == "low" else corners >= limits
-    return bool((good | np.isnan(corners)).all())
-
-
-def _with_values(
-    circuit: Circuit, parts: Sequence[Capacitor], values_f: FloatArray
-) -> Circuit:
+def _with_values(circuit: Circuit, parts: Sequence[Capacitor], values_f: FloatArray) -> Circuit:
     new = {part.name: float(value) for part, value in zip(parts, values_f, strict=True)}
     elements = tuple(
         replace(e, capacitance_f=new[e.name]) if isinstance(e, Capacitor) and e.name in new else e
@@ -311,16 +297,18 @@ def _with_values(
 # Feasibility --------------------------------------------------------------------------------------
 
 
-def _obstacle(analysis: Analysis, search: _Search, wish: Wish) -> str:
+def _obstacle(analysis: Analysis, search: Search, wish: Wish) -> str:
     """Which constraint makes the target infeasible; empty when none does."""
     if not search.parts:
         return (
             f"no capacitor of the netlist limits the {wish.end} end; what does is inside the "
             "transistors or missing"
         )
+    if bool(search.met(search.now_f[:, None])[0]):
+        return ""
     extreme = -1 if wish.end == "low" else 0
     best = np.array([[stock.values_f[extreme]] for stock in search.stocks])
-    if bool(search.met(best)[0]):
+    if search.reaches(search.corner(best))[0]:
         return ""
     best_hz = float(search.corner(best)[0])
     away = search.now_f * (_HUGE if wish.end == "low" else 1.0 / _HUGE)
@@ -342,7 +330,7 @@ def _obstacle(analysis: Analysis, search: _Search, wish: Wish) -> str:
     )
 
 
-def _others(analysis: Analysis, search: _Search, wish: Wish) -> str:
+def _others(analysis: Analysis, search: Search, wish: Wish) -> str:
     free = {part.name for part in search.parts}
     held = [
         account
@@ -351,144 +339,6 @@ def _others(analysis: Analysis, search: _Search, wish: Wish) -> str:
     ]
     held.sort(key=lambda account: -(account.share or 0.0))
     return ", ".join(account.part.name for account in held[:3])
-
-
-# Ways to meet it ----------------------------------------------------------------------------------
-
-
-def _ways(search: _Search, wish: Wish) -> Iterator[tuple[str, FloatArray]]:
-    if wish.end == "high":
-        yield from _closest(search)
-        return
-    values = _least_total(search)
-    if values is not None:
-        yield LEAST_TOTAL if wish.shares is None else "shares as asked", values
-    if len(search.parts) > 1 and wish.shares is None:
-        values = _fewest_values(search)
-        if values is not None:
-            yield FEWEST_VALUES, values
-        values = _fewest_changes(search)
-        if values is not None:
-            yield FEWEST_CHANGES, values
-
-
-def _closest(search: _Search) -> Iterator[tuple[str, FloatArray]]:
-    """One capacitor at a time: the largest value that keeps the high corner."""
-    for i in range(min(len(search.parts), 3)):
-        one = search.only([i])
-        table = np.array([one.stocks[0].values_f])
-        good = one.met(table)
-        # From the smallest value on: far beyond the first failure the band is another one.
-        count = int(np.argmin(good)) if not good.all() else good.size
-        if count:
-            values = search.now_f
-            values[i] = table[0, count - 1]
-            yield CLOSEST, values
-
-
-def _least_total(search: _Search) -> FloatArray | None:
-    """By the closed form scaled to the exact corner, then every combination of values near."""
-    ideal = np.array(search.ideal_f) if search.ideal_f else search.now_f
-    scales = np.logspace(-3.0, 3.0, 121)
-    good = search.met(ideal[:, None] * scales)
-    first = int(np.argmax(good)) if good.any() else len(scales) - 1
-    each = _VALUES_EACH
-    while each > 2 and each ** len(ideal) > _MOST_COMBINATIONS:
-        each -= 1
-    for scale in scales[first::5]:
-        near = [
-            stock.near(value * scale, each)
-            for stock, value in zip(search.stocks, ideal, strict=True)
-        ]
-        table = _combinations(near)
-        met = search.met(table)
-        if met.any():
-            totals = np.where(met, table.sum(axis=0), np.inf)
-            return _descend(search, table[:, int(np.argmin(totals))])
-    return None
-
-
-def _combinations(choices: Sequence[Sequence[float]]) -> FloatArray:
-    """(parts, combinations), cut to the first :data:`_MOST_COMBINATIONS`."""
-    rows = itertools.islice(itertools.product(*choices), _MOST_COMBINATIONS)
-    return np.array(list(rows)).T
-
-
-def _descend(search: _Search, values: FloatArray) -> FloatArray:
-    """Take single steps down, the one that saves most, while the target is met."""
-    while True:
-        trials = []
-        for i, stock in enumerate(search.stocks):
-            below = [v for v in stock.values_f if v < values[i] * (1.0 - 1e-9)]
-            if below:
-                trial = values.copy()
-                trial[i] = below[-1]
-                trials.append(trial)
-        if not trials:
-            return values
-        table = np.stack(trials, axis=1)
-        met = search.met(table)
-        if not met.any():
-            return values
-        values = table[:, int(np.argmin(np.where(met, table.sum(axis=0), np.inf)))]
-
-
-def _fewest_values(search: _Search) -> FloatArray | None:
-    """One value for all; where that cannot be, two."""
-    shared = common_values(search.stocks)
-    if shared:
-        table = np.repeat(np.array([shared]), len(search.parts), axis=0)
-        met = search.met(table)
-        if met.any():
-            return np.asarray(table[:, int(np.argmax(met))])
-    return _two_values(search)
-
-
-def _two_values(search: _Search) -> FloatArray | None:
-    """A larger value for those whose closed form is larger, a smaller for the others."""
-    ideal = np.array(search.ideal_f) if search.ideal_f else search.now_f
-    order = np.argsort(-ideal)
-    best: FloatArray | None = None
-    for count in range(1, len(order)):
-        first, second = order[:count], order[count:]
-        above = common_values([search.stocks[i] for i in first])
-        below = common_values([search.stocks[i] for i in second])
-        pairs = [pair for pair in itertools.product(above, below) if pair[0] > pair[1]]
-        if not pairs:
-            continue
-        table = np.empty((len(order), len(pairs)))
-        table[first], table[second] = np.array(pairs).T[:, None, :]
-        totals = table.sum(axis=0)
-        keep = np.argsort(totals, kind="stable")
-        for start in range(0, len(keep), _BLOCK):
-            part = table[:, keep[start : start + _BLOCK]]
-            met = search.met(part)
-            if met.any():
-                values = part[:, int(np.argmax(met))]
-                if best is None or values.sum() < best.sum():
-                    best = values
-                break
-    return best
-
-
-def _fewest_changes(search: _Search) -> FloatArray | None:
-    """As few capacitors changed as will do, the others as they stand; of those, the least total."""
-    if bool(search.met(search.now_f[:, None])[0]):
-        return search.now_f
-    for count in range(1, min(len(search.parts), 4)):
-        best: FloatArray | None = None
-        for indices in itertools.combinations(range(len(search.parts)), count):
-            part = search.only(indices)
-            found = _least_total(part)
-            if found is None:
-                continue
-            values = search.now_f
-            values[list(indices)] = found
-            if best is None or values.sum() < best.sum():
-                best = values
-        if best is not None:
-            return best
-    return None
 
 
 # Rows ---------------------------------------------------------------------------------------------
@@ -505,17 +355,15 @@ def _distinct(found: Sequence[tuple[str, FloatArray]]) -> list[tuple[str, FloatA
 
 
 def _alternative(
-    search: _Search, wish: Wish, rule: str, values: FloatArray, worst: Ratio
+    search: Search, wish: Wish, rule: str, values: FloatArray, found: _Judged
 ) -> Alternative:
-    corner = float(search.corner(values[:, None])[0])
-    worst_hz = corner * worst(_with_values(search.bench.circuit, search.parts, values))
-    judged = worst_hz if wish.with_tolerance else corner
+    judged = found.worst_hz if wish.with_tolerance else found.exact_hz
     margin = 1.0 - judged / wish.target_hz if wish.end == "low" else judged / wish.target_hz - 1.0
     return Alternative(
         rule=rule,
         parts=tuple(_fitted(search, i, float(value)) for i, value in enumerate(values)),
-        corner_hz=corner,
-        worst_hz=worst_hz if wish.with_tolerance else None,
+        corner_hz=found.exact_hz,
+        worst_hz=found.worst_hz if wish.with_tolerance else None,
         margin=margin,
         peak_db=20.0 * math.log10(search.peak(values)),
         settling_s=_settling(search, values),
@@ -524,7 +372,7 @@ def _alternative(
     )
 
 
-def _fitted(search: _Search, index: int, value: float) -> FittedRow:
+def _fitted(search: Search, index: int, value: float) -> FittedRow:
     part, stock = search.parts[index], search.stocks[index]
     unchanged = abs(value - part.capacitance_f) <= 1e-9 * value
     ideal = search.ideal_f[index] if search.ideal_f else None
@@ -532,7 +380,7 @@ def _fitted(search: _Search, index: int, value: float) -> FittedRow:
     return FittedRow(part.name, part.capacitance_f, value, ideal, series)
 
 
-def _settling(search: _Search, values: FloatArray) -> float | None:
+def _settling(search: Search, values: FloatArray) -> float | None:
     reactance = search.network.reactance[0].copy()
     new = {part.name: value for part, value in zip(search.parts, values, strict=True)}
     for part in search.network.parts:
@@ -543,14 +391,41 @@ def _settling(search: _Search, values: FloatArray) -> float | None:
     return settling_time(slowest_pole(search.network.conductance[0], reactance))
 
 
-def _notes(search: _Search, wish: Wish, now_hz: float | None) -> Iterator[str]:
-    met = now_hz is not None and (
-        now_hz <= search.limit_hz if wish.end == "low" else now_hz >= search.limit_hz
-    )
-    if met or now_hz is None:
+def _notes(search: Search, wish: Wish, now_hz: float | None) -> Iterator[str]:
+    if now_hz is None:
+        yield f"there is no {wish.end} corner to set: the gain holds beyond every frequency"
+        return
+    if now_hz <= search.limit_hz if wish.end == "low" else now_hz >= search.limit_hz:
         yield "the netlist meets the target as it stands"
     if any(not stock.source for stock in search.stocks):
         yield (
             "values from E6 from 1 µF up, as electrolytics come, and E12 below; --series or the "
             "classes of tauledger.toml choose others"
+        )
+
+
+def _polarity(
+    analysis: Analysis, search: Search, found: Sequence[tuple[str, FloatArray]]
+) -> Iterator[str]:
+    """Which way round the large ones go, when they are electrolytics."""
+    if not found:
+        return
+    largest = np.max([values for _, values in found], axis=0)
+    ways, either = [], []
+    for part, value in zip(search.parts, largest, strict=True):
+        if value < ELECTROLYTIC_F:
+            continue
+        first, second = part.nodes
+        voltage = analysis.point.voltage(first) - analysis.point.voltage(second)
+        if abs(voltage) <= REVERSED_VOLTS:
+            either.append(part.name)
+        else:
+            plus = first if voltage > 0.0 else second
+            ways.append(f"{part.name} at {plus} ({format_quantity(abs(voltage), 'V')})")
+    if ways:
+        yield f"plus side of an electrolytic: {', '.join(ways)}. {CAUTION_REVERSED}"
+    if either:
+        yield (
+            f"next to no direct voltage across {', '.join(either)}: the signal would reverse an "
+            "electrolytic there, so take one without polarity"
         )

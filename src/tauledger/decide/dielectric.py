@@ -39,7 +39,7 @@ def code_limits(code: str) -> CodeLimits | None:
     letters = code.strip().upper()
     if len(letters) != 3:
         return None
-    low, high, change = letters
+    low, high, change = letters[0], letters[1], letters[2]
     if low not in _LOWEST_C or high not in _HIGHEST_C or change not in _CHANGE:
         return None
     return CodeLimits(_LOWEST_C[low], _HIGHEST_C[high], _CHANGE[change])

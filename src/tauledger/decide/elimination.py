@@ -2,7 +2,8 @@
 
 The matrices of all boards have their non-zero entries in the same places, so the order of
 elimination is found once (rows and columns with the fewest entries first, by Markowitz's product,
-among pivots large enough) and carried out on arrays of one entry a board. An entry that is zero on every board
+among pivots large enough) and carried out on arrays of one entry a board. An entry that is zero on
+every board
 costs nothing. Nodal matrices have three to four entries a row, so this does some hundred array
 operations where a dense solver does thousands of scalar ones for each board.
 

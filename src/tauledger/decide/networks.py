@@ -40,7 +40,8 @@ class Networks:
     plan: Plan | None
     """None for the dense solver."""
     size: int
-    conductance: Mapping[tuple[int, int], FloatArray]
+    conductance: Mapping[tuple[int, int], ComplexArray]
+    """Complex from the start, so that no sum converts them again at every frequency."""
     reactance: Mapping[tuple[int, int], FloatArray]
     drive: Mapping[int, complex]
     sense: Mapping[int, complex]
@@ -63,7 +64,7 @@ class Networks:
             len(boards),
             None if dense or not len(boards) else plan_elimination(_sizes(g, c)),
             g.shape[-1],
-            _entries(g),
+            {place: value.astype(complex) for place, value in _entries(g).items()},
             _entries(c),
             _sparse(drive),
             _sparse(sense),
@@ -134,17 +135,16 @@ class Networks:
         self, frequency_hz: FloatArray | float
     ) -> tuple[Factors | _Dense, Mapping[tuple[int, int], ComplexArray]]:
         s = 2j * math.pi * np.asarray(frequency_hz)
-        entries: dict[tuple[int, int], ComplexArray] = {
-            place: value.astype(complex) for place, value in self.conductance.items()
-        }
+        entries: dict[tuple[int, int], ComplexArray] = dict(self.conductance)
         for place, value in self.reactance.items():
             entries[place] = entries[place] + s * value if place in entries else s * value
         if self.plan is not None:
             return Factors.of(self.plan, entries), entries
         matrix = np.zeros((self.boards, self.size, self.size), dtype=complex)
-        for (i, j), value in entries.items():
-            matrix[:, i, j] = value
-        return _Dense(np.linalg.inv(matrix)), entries
+        for (i, j), entry in entries.items():
+            matrix[:, i, j] = entry
+        inverse: ComplexArray = np.asarray(np.linalg.inv(matrix), dtype=np.complex128)
+        return _Dense(inverse), entries
 
     def _residual(
         self, entries: Mapping[tuple[int, int], ComplexArray], x: Sequence[Column]

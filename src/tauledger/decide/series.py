@@ -62,12 +62,9 @@ def nearest(value: float, series: str) -> float:
 
 def within(low: float, high: float, series: str) -> tuple[float, ...]:
     """Every value of the series from ``low`` to ``high``, ascending."""
-    found = []
-    value = ceiling(low, series)
-    while value <= high * (1.0 + 1e-9):
-        found.append(value)
-        value = ceiling(value * 1.0001, series)
-    return tuple(found)
+    powers = range(math.floor(math.log10(low)) - 1, math.floor(math.log10(high)) + 1)
+    ladder = (_decimal(m, power) for power in powers for m in mantissas(series))
+    return tuple(v for v in ladder if low * (1.0 - 1e-9) <= v <= high * (1.0 + 1e-9))
 
 
 def _neighbours(value: float, series: str) -> tuple[float, float]:

@@ -16,8 +16,13 @@ from numpy.typing import NDArray
 
 from tauledger.analysis import Analysis
 from tauledger.configuration.settings import Limit, PathSettings, Quantity
+from tauledger.decide.asked import Asked
 from tauledger.decide.bench import Bench, bench_of, measure
-from tauledger.decide.rows import (
+from tauledger.decide.sampling import deviations, latin_hypercube, standard_deviation
+from tauledger.decide.statistics import Sums, histogram, percentiles, wilson_interval
+from tauledger.decide.varied import Variety, board_values, variety_of
+from tauledger.decide.worst import FIGURES, Alone, each_alone, worst_cases
+from tauledger.review.decisions import (
     Contribution,
     DrawRow,
     FigureSpread,
@@ -28,10 +33,6 @@ from tauledger.decide.rows import (
     WorstCase,
     Yield,
 )
-from tauledger.decide.sampling import deviations, latin_hypercube, standard_deviation
-from tauledger.decide.statistics import Sums, histogram, percentiles, wilson_interval
-from tauledger.decide.varied import Asked, Variety, board_values, variety_of
-from tauledger.decide.worst import FIGURES, Alone, each_alone, worst_cases
 from tauledger.version import VERSION
 
 FloatArray = NDArray[np.float64]
@@ -103,9 +104,9 @@ def spread(
     alone = each_alone(bench, variety)
     blocks = list(_run(plan, executor, progress))
     found = {name: np.concatenate([block.figures[name] for block in blocks]) for name in FIGURES}
-    limits = {LIMITS[limit.figure]: limit for limit in _limits(settings)}
     nominal = {name: float(alone.nominal.figure(name)[0]) for name in FIGURES}
     unit = "Ω" if analysis.topology.path.source_is_current else "V/V"
+    limits = {LIMITS[limit.figure]: limit for limit in _limits(settings, unit)}
     rows = tuple(
         _figure(plan, alone, blocks, name, found[name], limits.get(name), unit)
         for name in FIGURES
@@ -124,7 +125,7 @@ def spread(
         figures=rows,
         leaders=tuple(_leaders(blocks)),
         total=_total(found, limits) if limits else None,
-        notes=tuple(_notes(settings)),
+        notes=tuple(_notes(settings, limits)),
         problems=analysis.circuit.problems,
     )
 
@@ -258,16 +259,20 @@ def _leaders(blocks: Sequence[Block]) -> Iterator[LeaderRow]:
 # Limits -------------------------------------------------------------------------------------------
 
 
-def _limits(settings: PathSettings | None) -> Iterator[Limit]:
+def _limits(settings: PathSettings | None, gain_unit: str) -> Iterator[Limit]:
+    """Those of figures that the boards have, in a unit these have."""
+    known = {"Hz", "V/V", "dB"} if gain_unit == "V/V" else {"Hz", gain_unit}
     for limit in settings.limits if settings else ():
-        if limit.figure in LIMITS:
+        ends = [end for end in (limit.minimum, limit.maximum) if end]
+        if limit.figure in LIMITS and all(end.unit in known for end in ends):
             yield limit
 
 
-def _notes(settings: PathSettings | None) -> Iterator[str]:
-    others = sorted({e.figure for e in settings.limits if e.figure not in LIMITS} if settings else ())
-    if others:
-        yield f"not judged over the boards: the limits of {', '.join(others).replace('_', ' ')}"
+def _notes(settings: PathSettings | None, judged: Mapping[str, Limit]) -> Iterator[str]:
+    left = [e for e in settings.limits if e not in judged.values()] if settings else []
+    if left:
+        names = ", ".join(sorted({limit.figure.replace("_", " ") for limit in left}))
+        yield f"not judged over the boards: the limits of {names}"
 
 
 def _kept(values: FloatArray, limit: Limit) -> NDArray[np.bool_]:

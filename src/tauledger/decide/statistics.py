@@ -13,7 +13,7 @@ FloatArray = NDArray[np.float64]
 PERCENTS = (1.0, 5.0, 25.0, 50.0, 75.0, 95.0, 99.0)
 NORMAL_95 = 1.959963984540054
 """Quantile 97.5 % of the normal."""
-BINS = 25
+BINS = 15
 
 
 def wilson_interval(passed: int, boards: int, z: float = NORMAL_95) -> tuple[float, float]:
@@ -30,7 +30,8 @@ def wilson_interval(passed: int, boards: int, z: float = NORMAL_95) -> tuple[flo
     centre = share + weight / 2.0
     half = z * math.sqrt(share * (1.0 - share) / boards + weight / (4.0 * boards))
     low, high = (centre - half) / (1.0 + weight), (centre + half) / (1.0 + weight)
-    return max(0.0, low), min(1.0, high)
+    # At the ends rounding leaves 1e-17 in place of nothing.
+    return (low if passed else 0.0), (high if passed < boards else 1.0)
 
 
 def percentiles(values: FloatArray) -> list[tuple[float, float]]:

@@ -10,19 +10,19 @@ from collections.abc import Iterator, Sequence
 
 import numpy as np
 
-from tauledger import __version__
 from tauledger.analysis import Analysis
 from tauledger.circuit.elements import Capacitor, Element, Resistor
 from tauledger.configuration.settings import PathSettings, ResistorClass
 from tauledger.decide.bench import bench_of, measure_values
 from tauledger.decide.dielectric import Effective, code_limits, effective
 from tauledger.decide.discharge import Discharge
-from tauledger.decide.rows import CapacitorStress, ResistorStress, Stress
 from tauledger.decide.settling import settling_time, slowest_pole
 from tauledger.problems import Problem, ProblemError, Severity
 from tauledger.quantity import format_quantity
 from tauledger.review.check import REVERSED_VOLTS, polarised_by
+from tauledger.review.decisions import CapacitorStress, ResistorStress, Stress
 from tauledger.review.limits import class_of
+from tauledger.version import VERSION
 
 MARGIN = 0.2
 """Of the rating, kept between it and the voltage (common practice, no source)."""
@@ -45,7 +45,8 @@ def stress(
 ) -> Stress:
     """Stress of every capacitor and resistor of the netlist, with findings."""
     network = analysis.network
-    capacitors, problems = [], []
+    capacitors: list[CapacitorStress] = []
+    problems: list[Problem] = []
     changed: dict[str, float] = {}
     discharge = Discharge(analysis.circuit, analysis.topology.path.source)
     for element in analysis.circuit.elements:
@@ -68,7 +69,7 @@ def stress(
     return Stress(
         title=analysis.circuit.title,
         netlist=analysis.circuit.path,
-        version=__version__,
+        version=VERSION,
         temperature_c=analysis.circuit.temperature_c,
         margin=margin,
         capacitors=tuple(capacitors),

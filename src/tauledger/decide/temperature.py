@@ -6,12 +6,12 @@ from collections.abc import Iterator, Sequence
 
 import numpy as np
 
-from tauledger import __version__
 from tauledger.analysis import Analysis
 from tauledger.bias.point import DevicePoint
 from tauledger.decide.bench import bench_of, measure_solution, solve
-from tauledger.decide.rows import TemperatureRow, TemperatureSweep, TransistorAt
 from tauledger.problems import Problem, ProblemError, Severity
+from tauledger.review.decisions import TemperatureRow, TemperatureSweep, TransistorAt
+from tauledger.version import VERSION
 
 STEPS = 9
 MOST_STEPS = 1000
@@ -59,7 +59,7 @@ def temperature_sweep(analysis: Analysis, temperatures_c: Sequence[float]) -> Te
     return TemperatureSweep(
         analysis.circuit.title,
         analysis.circuit.path,
-        __version__,
+        VERSION,
         unit,
         rows,
         tuple(_notes(rows)),
@@ -68,7 +68,7 @@ def temperature_sweep(analysis: Analysis, temperatures_c: Sequence[float]) -> Te
 
 
 def _keys(device: DevicePoint) -> tuple[str, str] | None:
-    return next((pair for pair in _CURRENTS if pair[0] in device.values), None)
+    return next((pair for pair in _CURRENTS if device.values.keys() >= set(pair)), None)
 
 
 def _transistor(device: DevicePoint, board: int) -> TransistorAt:

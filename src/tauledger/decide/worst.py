@@ -84,7 +84,7 @@ def worst_cases(
     deviations = np.take_along_axis(ends, chosen, axis=1)
     found = measure_deviations(bench, variety, deviations).figure(figure)
     count = sides[0].shape[1]
-    results = []
+    results: list[tuple[float, tuple[str, ...]]] = []
     for part, pick in ((slice(0, count), np.nanargmin), (slice(count, None), np.nanargmax)):
         values = found[part]
         if np.isnan(values).all():

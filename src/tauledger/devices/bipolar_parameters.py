@@ -164,6 +164,8 @@ class _Reader:
 
     def __init__(self, cards: Sequence[Card], kelvin: FloatArray, nominal: FloatArray) -> None:
         self.cards = cards
+        # A card states a dozen of the hundred names asked for: most questions end here.
+        self._stated = frozenset().union(*(card.model for card in cards))
         self.kelvin, self.nominal = kelvin, nominal
         self.difference = kelvin - nominal
         self.multiplier = junction.columns([c.instance.get("m", 1.0) for c in cards])
@@ -178,13 +180,17 @@ class _Reader:
         self.beta_growth = (kelvin / nominal) ** self.model("xtb", 0.0)
 
     def model(self, name: str, default: float, *aliases: str) -> FloatArray:
-        return junction.first_given(self.cards, (name, *aliases), default)
+        names = (name, *aliases)
+        if self._stated.isdisjoint(names):
+            return np.full((1, len(self.cards)), default)
+        return junction.first_given(self.cards, names, default)
 
     def scaled(self, name: str, prefix: str, default: float, *aliases: str) -> FloatArray:
         """A parameter times its quadratic in temperature."""
-        return self.model(name, default, *aliases) * junction.quadratic(
-            self.cards, prefix, self.difference
-        )
+        value = self.model(name, default, *aliases)
+        if self._stated.isdisjoint((prefix, prefix + "1", prefix + "2")):
+            return value
+        return value * junction.quadratic(self.cards, prefix, self.difference)
 
     def collector_area(self, lateral: FloatArray) -> FloatArray:
         """Area of the base-collector junction: areab, or areac for a lateral device."""

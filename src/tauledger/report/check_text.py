@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import re
 from collections import Counter
 from collections.abc import Sequence
 from pathlib import Path
@@ -12,8 +11,6 @@ from tauledger.report.inert import inert
 from tauledger.report.places import relative_path
 from tauledger.report.problems import format_problem
 from tauledger.review.check import Finding, NetlistCheck, distinct_findings
-
-_COMMAND_START = re.compile(r"^(\s*):(?=:)", re.MULTILINE)
 
 
 def check_findings(checks: Sequence[NetlistCheck], folder: Path) -> str:
@@ -50,12 +47,4 @@ def _shown(finding: Finding, folder: Path) -> str:
     if finding.limit is not None and finding.limit != finding.problem.span:
         place = inert(relative_path(finding.limit.path, folder))
         text += f"    The limit stands at {place}:{finding.limit.line}.\n"
-    return _unforgeable(text)
-
-
-def _unforgeable(text: str) -> str:
-    """No line that the runner of a workflow would take for one of its commands.
-
-    It looks for ``::`` at the first letter of a line, and for ``##[`` (from memory).
-    """
-    return _COMMAND_START.sub(r"\1: ", text).replace("##[", "# #[")
+    return text

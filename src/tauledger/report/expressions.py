@@ -23,7 +23,7 @@ _MILLER = re.compile(r" \[Miller: [^\[\]]*\]")
 _FEEDBACK = re.compile(
     r"\((?P<body>.*)\)·\(1 \+ (?P<short>[\d.e+-]+)\)/\(1 \+ (?P<open>[\d.e+-]+)\)"
 )
-_BRIDGE = re.compile(r"R1 \+ R2 \+ (?P<gm>gm[^\s·]*)·R1·R2")
+_BRIDGE = re.compile(r"R_in \+ R_out \+ (?P<gm>gm[^\s·]*)·R_in·R_out")
 
 
 @dataclass(frozen=True, slots=True)
@@ -106,10 +106,10 @@ def parse_hand(text: str) -> HandExpression | None:
 
 def _body(text: str, definitions: Mapping[str, Node]) -> Node | Bridge | None:
     bridge = _BRIDGE.fullmatch(text)
-    if bridge is None or not {"R1", "R2"} <= set(definitions):
+    if bridge is None or not {"R_in", "R_out"} <= set(definitions):
         return parse(text)
     gm = definitions.get(bridge["gm"]) or parse(bridge["gm"])
-    return None if gm is None else Bridge(definitions["R1"], definitions["R2"], gm)
+    return None if gm is None else Bridge(definitions["R_in"], definitions["R_out"], gm)
 
 
 class _Reader:

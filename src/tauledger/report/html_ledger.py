@@ -7,6 +7,7 @@ from collections.abc import Iterable, Iterator, Mapping
 from tauledger.quantity import format_quantity
 from tauledger.report.expressions import Bridge, HandExpression, parse_hand
 from tauledger.report.html_text import (
+    NAME_COLUMNS,
     Head,
     listing,
     name,
@@ -25,6 +26,10 @@ from tauledger.review.rows import CornerRow, PathRow, TimeConstantRow
 
 _ROWS_SHOWN = 200
 _DRAWN = 40
+_BROAD = 420.0
+"""A drawing wider than this takes a row for itself."""
+_FITS = 350.0
+"""A drawing no wider than this needs no scrolling on a telephone."""
 _CLOSE = 0.0005
 """An expression this near is not said to deviate."""
 _FAR = 100.0
@@ -42,9 +47,7 @@ def ledger(path: PathRow, end: str, symbols: Mapping[str, float]) -> str:
     rows = [row for row in path.time_constants if row.end == end]
     rows.sort(key=lambda row: -(row.share or 0.0))
     heading, aside = _ENDS[end]
-    body = (
-        _table(rows[:_ROWS_SHOWN], corner, end) if rows else f"<p>No part counts at this end.</p>"
-    )
+    body = _table(rows[:_ROWS_SHOWN], corner, end) if rows else "<p>No part counts at this end.</p>"
     body += _more(len(rows) - _ROWS_SHOWN, "parts")
     if corner is not None:
         body += _sums(corner) + listing(_notes(corner))
@@ -69,7 +72,7 @@ def _table(rows: Iterable[TimeConstantRow], corner: CornerRow | None, end: str) 
         Head("value", True),
         Head("sees", True),
         Head("τ", True),
-        Head("pull on the exact corner", True),
+        Head("pull on the<br>exact corner", True),
         Head("role"),
     )
     sets = corner.set_by if corner is not None else ()
@@ -162,13 +165,8 @@ def _seen(
         lines.append(f'<p class="small">no expression: {text(row.expression_reason)}</p>')
     if drawing is not None:
         lines += _key(drawing, row)
-    picture = (
-        f'<div class="sc" tabindex="0" role="group" aria-label="Circuit that {name(row.name)} '
-        f'sees">{drawing.svg}</div>'.replace("<wbr>", "")
-        if drawing is not None
-        else ""
-    )
-    broad = ' class="broad"' if drawing is not None and drawing.is_broad else ""
+    picture = _scrolled(drawing, row.name) if drawing is not None else ""
+    broad = ' class="broad"' if drawing is not None and drawing.width > _BROAD else ""
     return f"<figure{broad}>{picture}<figcaption>{''.join(lines)}</figcaption></figure>"
 
 
@@ -177,6 +175,14 @@ def _matters(zero_hz: float, corner: CornerRow | None) -> bool:
     if corner is None or not corner.exact_hz:
         return True
     return 1 / _FAR <= abs(zero_hz) / corner.exact_hz <= _FAR
+
+
+def _scrolled(drawing: Drawing, part: str) -> str:
+    """A drawing in a frame, which the keyboard reaches where it may need scrolling."""
+    if drawing.width <= _FITS:
+        return f'<div class="sc">{drawing.svg}</div>'
+    label = f"Circuit that {text(part, NAME_COLUMNS)} sees"
+    return f'<div class="sc" tabindex="0" role="group" aria-label="{label}">{drawing.svg}</div>'
 
 
 def _ends(row: TimeConstantRow) -> tuple[str, str]:

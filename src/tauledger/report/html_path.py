@@ -188,12 +188,13 @@ def response(path: PathRow, plot: BodePlot) -> str:
     """The Bode plot, wide and narrow, and the corners in a table beside."""
     ticks = "Triangles: the corner of each part, filled where it sets a corner"
     if plot.beyond:
-        ticks += f"; {plot.beyond} more lie outside"
-    hatched = " Hatched: where a limit does not let the curve go." if plot.regions else ""
+        ticks += f"; {plot.beyond} more are in the ledgers"
+    if plot.regions:
+        ticks += ". Hatched: along each limit, on the side where the curve may not be"
     body = (
         f'<figure class="plot"><div class="wide">{bode_svg(plot, WIDE, "bode-w")}</div>'
         f'<div class="narrow">{bode_svg(plot, NARROW, "bode-n")}</div>'
-        f'<figcaption class="small">{ticks}.{hatched}</figcaption></figure>'
+        f'<figcaption class="small">{ticks}.</figcaption></figure>'
     )
     heads = [Head(""), Head("estimate", True), Head("better", True), Head("exact", True)]
     corners = [corner for corner in (path.low, path.high) if corner is not None]
@@ -207,7 +208,7 @@ def response(path: PathRow, plot: BodePlot) -> str:
         ]
         for corner in corners
     ]
-    heads.append(Head("estimate against exact", True))
+    heads.append(Head("estimate<br>against exact", True))
     return section("response", "Response", body + table("Corners three ways", heads, rows, True))
 
 

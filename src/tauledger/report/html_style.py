@@ -60,7 +60,8 @@ svg .mk{{fill:var(--paper);stroke:var(--ink);stroke-width:2}}
 svg text.ml{{font-weight:600;paint-order:stroke;stroke:var(--paper);stroke-width:4px}}
 svg .ht{{stroke:var(--limit);stroke-width:1.6;opacity:.5}}
 svg .lm{{stroke:var(--limit);stroke-opacity:.6}}
-svg text.ll{{fill:var(--limit);font-weight:600;paint-order:stroke;stroke:var(--paper);stroke-width:5px}}
+svg text.ll{{fill:var(--limit);font-weight:600;paint-order:stroke;stroke:var(--paper);
+stroke-width:5px}}
 svg .ld{{stroke:var(--rule);fill:none}}
 svg .tr{{fill:var(--paper);stroke-width:1.4}}
 svg .low{{stroke:var(--low)}}
@@ -124,13 +125,12 @@ caption span{{display:inline-block;max-width:calc(100vw - 2rem);white-space:norm
 th,td{{padding:.36rem 1rem .36rem 0;text-align:left;vertical-align:baseline;white-space:nowrap}}
 .w{{white-space:normal;min-width:16rem}}
 thead th{{font-weight:400;color:var(--faint);border-bottom:1px solid var(--faint);
-vertical-align:bottom;line-height:1.25;max-width:8rem}}
+vertical-align:bottom;line-height:1.25}}
 thead td{{border-bottom:1px solid var(--faint)}}
 tbody th{{font-weight:600;white-space:nowrap}}
 tbody tr+tr>*{{border-top:1px solid var(--rule)}}
 .r{{text-align:right}}
 .n{{white-space:nowrap}}
-thead th{{white-space:normal}}
 .pc{{display:inline-block;max-width:100%}}
 tr:has(.sets)>*{{background:var(--inset)}}
 .sets::before{{content:"▸ ";font-weight:400}}
@@ -143,7 +143,8 @@ ol.stages{{list-style:none;margin:0;padding:0;display:flex;flex-wrap:wrap}}
 ol.stages>li{{flex:1 1 13rem;max-width:26rem;min-width:11rem;padding:0 0 1.2rem}}
 ol.stages>li.port{{flex:0 0 5rem;min-width:4rem}}
 .glyph{{position:relative;height:76px;display:flex;justify-content:center;align-items:center}}
-.glyph::before{{content:"";position:absolute;left:0;right:0;top:50%;border-top:1.6px solid var(--ink)}}
+.glyph::before{{content:"";position:absolute;left:0;right:0;top:50%;
+border-top:1.6px solid var(--ink)}}
 .port .glyph{{justify-content:flex-start}}
 .port.last .glyph{{justify-content:flex-end}}
 .glyph svg{{position:relative}}
@@ -211,19 +212,21 @@ ol.stages>li.port .glyph::before{{display:none}}
 }}
 @page{{size:A4;margin:14mm 13mm}}
 @media print{{
-body{{font-size:9.6pt}}
+:root{{--paper:#fff}}
+html{{font-size:13px}}
+body{{font-size:1rem}}
 main,header,footer,nav{{max-width:none;padding:0}}
 nav,.skip{{display:none}}
-h1{{margin-top:0;font-size:17pt}}
+h1{{margin-top:0}}
 section{{display:block;margin-top:13pt;padding-top:8pt}}
 .mg{{margin-bottom:6pt;break-after:avoid}}
 h2,h3,caption{{break-after:avoid}}
-tr,.plot,ol.stages>li,.problem{{break-inside:avoid}}
+tr,.sc,.plot,ol.stages>li,.problem{{break-inside:avoid}}
 thead{{display:table-header-group}}
 .sc{{overflow:visible}}
 .sch{{max-width:100%;height:auto}}
+.plot svg{{max-width:14.5cm}}
 th,td{{padding-right:8pt}}
-.big{{font-size:16pt}}
 }}
 """
 

@@ -89,7 +89,10 @@ def split_symbol(words: str) -> tuple[str, str]:
     found = _SYMBOL.fullmatch(words)
     if found is None or not (found["sub"] or found["base"] == "β"):
         return words, ""
-    return found["base"], ",".join(filter(None, (found["sub"], found["mark"])))
+    base, sub = found["base"], found["sub"]
+    if sub == "m'":
+        base, sub = "g\u2032", "m"
+    return base, ",".join(filter(None, (sub, found["mark"])))
 
 
 def symbol(words: str) -> str:

@@ -5,6 +5,7 @@ from __future__ import annotations
 import math
 from collections.abc import Iterable, Iterator, Sequence
 from dataclasses import dataclass
+from itertools import pairwise
 
 from tauledger.quantity import format_quantity, parse_si
 from tauledger.review.illustration import Curve, Illustration
@@ -14,7 +15,10 @@ from tauledger.review.rows import PathRow
 DEEPEST_DB = 80.0
 """So far below its top the plot reaches at most."""
 _HALF_POWER_DB = 10.0 * math.log10(2.0)
+_MOST_TICKS = 40
 _HEADROOM_DB = 5.0
+_STRIP = 0.13
+"""Height of a limit's strip over that of the plot."""
 
 Points = tuple[tuple[float, float], ...]
 
@@ -89,7 +93,7 @@ class BodePlot:
     marks: tuple[Mark, ...]
     regions: tuple[Region, ...]
     beyond: int
-    """Parts whose corner lies outside the plot."""
+    """Parts whose corner has no tick: it lies outside the plot, or there are too many."""
     summary: str
     """The plot in a sentence or two."""
 
@@ -106,10 +110,10 @@ def bode_plot(path: PathRow, shown: Illustration, limits: Sequence[LimitRow] = (
         traces.append(_measured("simulated", shown.simulator, shown.simulated))
     ticks = [
         Tick(row.name, row.corner_hz, row.end, _sets(path, row.end, row.name))
-        for row in path.time_constants
+        for row in sorted(path.time_constants, key=lambda row: -(row.share or 0.0))
         if row.corner_hz and row.end in ("low", "high")
     ]
-    inside = tuple(tick for tick in ticks if first <= tick.frequency_hz <= last)
+    inside = tuple(tick for tick in ticks if first <= tick.frequency_hz <= last)[:_MOST_TICKS]
     marks = tuple(_marks(path, exact))
     return BodePlot(
         route=f"{path.input} → {path.output}",
@@ -121,7 +125,13 @@ def bode_plot(path: PathRow, shown: Illustration, limits: Sequence[LimitRow] = (
         traces=tuple(traces),
         ticks=inside,
         marks=marks,
-        regions=tuple(_regions(path, shown, limits, gain_axis, first, last)),
+        regions=tuple(
+            region
+            for region in _regions(path, shown, limits, gain_axis, first, last)
+            if region.left_hz < region.right_hz
+            and region.bottom_db < gain_axis.last
+            and region.top_db > gain_axis.first
+        ),
         beyond=len(ticks) - len(inside),
         summary=_summary(path, marks, traces),
     )
@@ -221,7 +231,7 @@ def _marks(path: PathRow, exact: Trace) -> Iterator[Mark]:
 
 
 def _height_at(points: Points, frequency: float) -> float:
-    for (f1, y1), (f2, y2) in zip(points, points[1:], strict=False):
+    for (f1, y1), (f2, y2) in pairwise(points):
         if f1 <= frequency <= f2:
             return y1 + (y2 - y1) * math.log(frequency / f1) / math.log(f2 / f1)
     return points[0][1] if points else 0.0
@@ -235,39 +245,36 @@ def _regions(
     first: float,
     last: float,
 ) -> Iterator[Region]:
+    """A strip along the boundary of each limit, on the side where the curve may not be."""
     if not path.gain:
         return
     middle, edge = shown.midband_hz, 20.0 * math.log10(abs(path.gain)) - _HALF_POWER_DB
     low = path.low.exact_hz if path.low else None
     high = path.high.exact_hz if path.high else None
-    band = (low or first, high or last)
+    # The gain is judged in the middle of the band, half the way to each corner.
+    left, right = math.sqrt(middle * (low or first)), math.sqrt(middle * (high or last))
+    depth = _STRIP * (axis.last - axis.first)
     for row in limits:
         for words, is_least in ((row.minimum, True), (row.maximum, False)):
             limit = _limit(words, row.unit)
             if limit is None:
                 continue
-            label = f"{row.figure} {'≥' if is_least else '≤'} {words}"
+            place = (left, right)
+            height, hangs = edge, not is_least
             if row.figure == "low corner":
-                if is_least:
-                    yield Region(label, first, min(limit, middle), edge, axis.last, True)
-                else:
-                    yield Region(label, min(limit, middle), middle, axis.first, edge, False)
+                hangs = is_least
+                inner = left if limit < left else middle
+                place = (first, min(limit, middle)) if is_least else (min(limit, middle), inner)
             elif row.figure == "high corner":
-                if is_least:
-                    yield Region(label, middle, max(limit, middle), axis.first, edge, False)
-                else:
-                    yield Region(label, max(limit, middle), last, edge, axis.last, True)
+                inner = right if limit > right else middle
+                place = (inner, max(limit, middle)) if is_least else (max(limit, middle), last)
             elif row.figure == "midband gain":
                 height = limit if row.unit == "dB" else 20.0 * math.log10(limit)
-                if is_least:
-                    yield Region(label, *_around(middle, band), axis.first, height, False)
-                else:
-                    yield Region(label, *_around(middle, band), height, axis.last, True)
-
-
-def _around(middle: float, band: tuple[float, float]) -> tuple[float, float]:
-    """The stretch in which the gain is judged: half the way to each corner."""
-    return math.sqrt(middle * band[0]), math.sqrt(middle * band[1])
+            else:
+                continue
+            label = f"{row.figure} {'≥' if is_least else '≤'} {words}"
+            bottom, top = (height, height + depth) if hangs else (height - depth, height)
+            yield Region(label, *place, bottom, top, hangs)
 
 
 def _limit(words: str, unit: str) -> float | None:

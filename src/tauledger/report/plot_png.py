@@ -7,7 +7,7 @@ for it. Our own SVG would need a browser to become one.
 from __future__ import annotations
 
 import io
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Any
 
 from tauledger.problems import Problem, ProblemError, Severity
 from tauledger.report.inert import clip, inert
@@ -18,7 +18,7 @@ if TYPE_CHECKING:
 
 _INK, _FAINT, _GRID = "#1c2329", "#5a646d", "#dcd8cc"
 _LOW, _HIGH, _LIMIT = "#1d5a96", "#9c3d16", "#7a5a00"
-_STYLES = {
+_STYLES: dict[str, dict[str, Any]] = {
     "exact": {"color": _INK, "linewidth": 1.8},
     "estimate": {"color": _LOW, "linewidth": 1.3, "linestyle": (0, (5, 3))},
     "simulated": {"color": _HIGH, "linestyle": "none", "marker": "o", "markersize": 3.5},
@@ -29,7 +29,6 @@ _MOST_CIRCLES = 48
 def bode_png(plot: BodePlot) -> bytes:
     """1800 pixels wide; raises ProblemError where matplotlib is not installed."""
     try:
-        from matplotlib.backends.backend_agg import FigureCanvasAgg
         from matplotlib.figure import Figure
     except ImportError:
         raise ProblemError(
@@ -41,13 +40,12 @@ def bode_png(plot: BodePlot) -> bytes:
             )
         ) from None
     figure = Figure(figsize=(9.0, 6.0), dpi=200, layout="constrained", facecolor="white")
-    canvas = FigureCanvasAgg(figure)
     gain, phase = figure.subplots(2, 1, sharex=True, height_ratios=(2, 1))
     _gain(gain, plot)
     _phase(phase, plot)
     target = io.BytesIO()
     # Without the date and the library's version, so that equal plots are equal files.
-    canvas.print_png(target, metadata={"Software": None})
+    figure.savefig(target, format="png", metadata={"Software": None})
     return target.getvalue()
 
 
@@ -101,6 +99,7 @@ def _ticks(axes: Axes, plot: BodePlot) -> None:
             fontsize=7.5,
             fontweight="bold" if tick.sets else "normal",
             color=colour,
+            arrowprops={"arrowstyle": "-", "color": _GRID, "shrinkA": 0, "shrinkB": 0},
         )
         axes.axvline(tick.frequency_hz, 0.0, 0.03, color=colour, linewidth=1.6)
 

@@ -20,7 +20,7 @@ WIDE, NARROW = 900.0, 350.0
 _PREFIXES = {-15: "f", -12: "p", -9: "n", -6: "µ", -3: "m", 0: "", 3: "k", 6: "M", 9: "G", 12: "T"}
 _LANE = 17.0
 _MOST_LANES = 7
-_CHARACTER = 7.0
+_CHARACTER = 7.4
 _MOST_CIRCLES = 48
 
 
@@ -54,7 +54,7 @@ def _down(axis: Axis, value: float) -> float:
 
 
 def bode_svg(plot: BodePlot, width: float, anchor: str) -> str:
-    """The plot to stand in a page, whose style gives it colours; ``anchor`` makes its ids unique."""
+    """The plot to stand in a page with its style; ``anchor`` makes its ids unique."""
     content, height = _content(plot, width, anchor)
     return (
         f'<svg class="bode" viewBox="0 0 {width:g} {height:g}" width="{width:g}" '
@@ -71,7 +71,8 @@ def bode_file(plot: BodePlot, title: str) -> str:
     return (
         f'<svg xmlns="http://www.w3.org/2000/svg" viewBox="0 0 {WIDE:g} {height + head:g}" '
         f'width="{WIDE:g}" height="{height + head:g}" role="img" aria-labelledby="title summary">\n'
-        f'<title id="title">{escape(shown)}</title><desc id="summary">{escape(plot.summary)}</desc>\n'
+        f'<title id="title">{escape(shown)}</title>'
+        f'<desc id="summary">{escape(plot.summary)}</desc>\n'
         f"<style>{THEME}{PLOT_STYLE}</style>\n"
         f'<rect class="pg" width="{WIDE:g}" height="{height + head:g}"/>\n'
         f'<text class="hd" x="14" y="24">{escape(shown)}</text>\n'
@@ -81,12 +82,12 @@ def bode_file(plot: BodePlot, title: str) -> str:
 
 def _content(plot: BodePlot, width: float, anchor: str) -> tuple[str, float]:
     wide = width >= WIDE
-    left, right = (54.0, width - 62.0) if wide else (40.0, width - 34.0)
-    legend, legend_height = _legend(plot.traces, left, width)
+    left, right = (54.0, width - 62.0) if wide else (40.0, width - 46.0)
+    legend, legend_height = _legend(plot, left, width)
     gain_height = 270.0 if wide else 210.0
     top = legend_height + 30
     bare = _Frame(plot, left, right, top, gain_height, 0.0, 0.0)
-    ticks, ticks_height = _ticks(bare, plot.ticks)
+    ticks, ticks_height = _ticks(bare, plot.ticks, width)
     frame = _Frame(
         plot, left, right, top, gain_height, top + gain_height + ticks_height + 32, gain_height / 2
     )
@@ -96,7 +97,7 @@ def _content(plot: BodePlot, width: float, anchor: str) -> tuple[str, float]:
         _clip_paths(frame, anchor),
         legend,
         *_grid(frame, spacing),
-        *(_region(frame, region, anchor) for region in plot.regions),
+        *_regions(frame, plot.regions, anchor),
         *(_trace(frame, trace, anchor) for trace in plot.traces),
         *_marks(frame, plot.marks),
         ticks,
@@ -123,21 +124,26 @@ def _clip_paths(frame: _Frame, anchor: str) -> str:
     )
 
 
-def _legend(traces: Sequence[Trace], left: float, width: float) -> tuple[str, float]:
-    """A sample of each line with its name, in as many rows as they need."""
+def _legend(plot: BodePlot, left: float, width: float) -> tuple[str, float]:
+    """A sample of each line and each limit with its name, in as many rows as they need."""
     drawn, x, y = [], left, 14.0
-    for trace in traces:
-        label = clip(inert(trace.label), 40)
-        needed = 40 + _CHARACTER * len(label) + 16
+    entries = [(trace.kind, trace.label) for trace in plot.traces]
+    entries += [(_letter(n), region.label) for n, region in enumerate(plot.regions)]
+    for kind, words in entries:
+        label = clip(inert(words), 40)
+        indent = 36 if len(kind) > 1 else 16
+        needed = indent + _CHARACTER * len(label) + 18
         if x > left and x + needed > width:
             x, y = left, y + 20
-        drawn.append(_sample(trace.kind, x, y))
-        drawn.append(f'<text class="lg" x="{x + 36:g}" y="{y + 4:g}">{escape(label)}</text>')
+        drawn.append(_sample(kind, x, y))
+        drawn.append(f'<text class="lg" x="{x + indent:g}" y="{y + 4:g}">{escape(label)}</text>')
         x += needed
     return "".join(drawn), y + 8
 
 
 def _sample(kind: str, x: float, y: float) -> str:
+    if len(kind) == 1:
+        return f'<text class="ll" x="{x:g}" y="{y + 4:g}">{kind}</text>'
     if kind == "simulated":
         return "".join(
             f'<circle class="c-simulated" cx="{x + k:g}" cy="{y:g}" r="2.6"/>' for k in (6, 20)
@@ -156,7 +162,8 @@ def _grid(frame: _Frame, spacing: int) -> Iterator[str]:
         x = frame.x(10.0**power)
         yield "".join(f'<path class="gr" d="M{x:.1f} {a:g}V{b:g}"/>' for a, b in ends)
         if (power - first) % spacing == 0:
-            yield f'<text class="tk mid" x="{x:.1f}" y="{ends[1][1] + 17:g}">{_decade(power)}</text>'
+            y = ends[1][1] + 17
+            yield f'<text class="tk mid" x="{x:.1f}" y="{y:g}">{_decade(power)}</text>'
     axes = ((plot.gain_axis, frame.y_gain), (plot.phase_axis, frame.y_phase))
     for axis, place in axes:
         base = place(axis.first)
@@ -199,43 +206,52 @@ def _circles(frame: _Frame, points: Points, place: Callable[[float], float], kin
     )
 
 
-def _region(frame: _Frame, region: Region, anchor: str) -> str:
-    """Hatched, its words in the corner that the curve keeps away from."""
-    axis = frame.plot.gain_axis
-    left, right = frame.x(region.left_hz), frame.x(region.right_hz)
-    left, right = max(left, frame.left), min(right, frame.right)
-    top = frame.y_gain(min(max(region.top_db, axis.first), axis.last))
-    bottom = frame.y_gain(max(min(region.bottom_db, axis.last), axis.first))
-    if right - left < 1 or bottom - top < 1:
-        return ""
-    y = top + 15 if region.hangs else bottom - 8
-    label = clip(inert(region.label), 40)
-    needed = _CHARACTER * len(label)
-    middle = (left + right) / 2
-    middle = min(max(middle, frame.left + needed / 2 + 4), frame.right - needed / 2 - 4)
-    return (
-        f'<rect class="lm" x="{left:.1f}" y="{top:.1f}" width="{right - left:.1f}" '
-        f'height="{bottom - top:.1f}" fill="url(#{anchor}-h)"/>'
-        f'<text class="ll mid" x="{middle:.1f}" y="{y:.1f}">{escape(label)}</text>'
-    )
-
-
-def _marks(frame: _Frame, marks: Sequence[Mark]) -> Iterator[str]:
-    """The −3 dB points; their words stand inside the band, one lower where it is narrow."""
-    places = [frame.x(mark.frequency_hz) for mark in marks]
-    crowded = len(places) == 2 and places[1] - places[0] < 190
-    for number, (mark, x) in enumerate(zip(marks, places, strict=True)):
-        y = frame.y_gain(mark.gain_db)
-        is_low = mark.end == "low"
-        drop = y + 18 + (18 if crowded and number else 0)
-        yield f'<circle class="mk" cx="{x:.1f}" cy="{y:.1f}" r="4"/>'
+def _regions(frame: _Frame, regions: Sequence[Region], anchor: str) -> Iterator[str]:
+    """Hatched strips, each with the letter that the legend explains."""
+    axis, plot = frame.plot.gain_axis, frame.plot
+    middle = frame.x(math.sqrt(plot.first_hz * plot.last_hz))
+    for number, region in enumerate(regions):
+        left, right = frame.x(region.left_hz), frame.x(region.right_hz)
+        left, right = max(left, frame.left), min(right, frame.right)
+        top = frame.y_gain(min(max(region.top_db, axis.first), axis.last))
+        bottom = frame.y_gain(max(min(region.bottom_db, axis.last), axis.first))
+        if right - left < 1 or bottom - top < 1:
+            continue
+        # At the end towards midband, away from the curve.
+        x = right - 11 if abs(right - middle) < abs(left - middle) else left + 11
+        across = left < middle < right
+        if right - left < 24 or across:
+            x = (left + right) / 2
+        # Below a strip inside the band, whose top has the words at the corner.
+        y = (top + bottom) / 2 + 4 if region.hangs or across else bottom + 14
         yield (
-            f'<text class="ml{"" if is_low else " end"}" x="{x + (8 if is_low else -8):.1f}" '
-            f'y="{drop:.1f}">{escape(mark.label)}</text>'
+            f'<rect class="lm" x="{left:.1f}" y="{top:.1f}" width="{right - left:.1f}" '
+            f'height="{bottom - top:.1f}" fill="url(#{anchor}-h)"/>'
+            f'<text class="ll mid" x="{x:.1f}" y="{y:.1f}">'
+            f"{_letter(number)}</text>"
         )
 
 
-def _ticks(frame: _Frame, ticks: Sequence[Tick]) -> tuple[str, float]:
+def _letter(number: int) -> str:
+    return chr(ord("A") + number % 26)
+
+
+def _marks(frame: _Frame, marks: Sequence[Mark]) -> Iterator[str]:
+    """The −3 dB points; their words stand inside the band, the upper's outside a narrow one."""
+    places = [frame.x(mark.frequency_hz) for mark in marks]
+    crowded = len(places) == 2 and places[1] - places[0] < 190
+    for mark, x in zip(marks, places, strict=True):
+        y = frame.y_gain(mark.gain_db)
+        rightward = mark.end == "low" or crowded
+        side, place = ("", x + 8) if rightward else (" end", x - 8)
+        drop = 14 if crowded and mark.end == "high" else 18
+        yield f'<circle class="mk" cx="{x:.1f}" cy="{y:.1f}" r="4"/>'
+        yield (
+            f'<text class="ml{side}" x="{place:.1f}" y="{y + drop:.1f}">{escape(mark.label)}</text>'
+        )
+
+
+def _ticks(frame: _Frame, ticks: Sequence[Tick], width: float) -> tuple[str, float]:
     """A tick for each part's corner under the gain, named in lanes so that no word is crossed.
 
     From the right, a name that would run over the line of a later one goes a lane lower.
@@ -244,7 +260,8 @@ def _ticks(frame: _Frame, ticks: Sequence[Tick]) -> tuple[str, float]:
     placed: list[tuple[float, int, Tick, str]] = []
     for tick in sorted(ticks, key=lambda tick: -tick.frequency_hz):
         x = frame.x(tick.frequency_hz)
-        label = clip(inert(tick.name), 14)
+        room = int((width - x - 5) / _CHARACTER)
+        label = clip(inert(tick.name), min(14, max(room, 4)))
         reach = x + 12 + _CHARACTER * len(label)
         lane = max((lane + 1 for at, lane, _, _ in placed if at < reach), default=0)
         placed.append((x, lane, tick, label))

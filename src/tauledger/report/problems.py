@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import re
 from collections.abc import Iterable
 
 from tauledger.problems import Problem, SourceSpan
@@ -12,6 +13,7 @@ _LINE_COLUMNS = 92
 _MESSAGE_COLUMNS = 600
 """A message may quote a name as long as the file allows."""
 _INDENT = "    "
+_COMMAND_START = re.compile(r"^(\s*):(?=:)", re.MULTILINE)
 
 
 def format_problems(problems: Iterable[Problem]) -> str:
@@ -32,7 +34,15 @@ def format_problem(problem: Problem) -> str:
         lines += [_INDENT + line for line in _marked_line(problem.span)]
     if problem.advice:
         lines.append(_INDENT + clip(inert(problem.advice), _MESSAGE_COLUMNS))
-    return "\n".join(lines) + "\n"
+    return _unforgeable("\n".join(lines) + "\n")
+
+
+def _unforgeable(text: str) -> str:
+    """No line that the runner of a workflow would take for one of its commands.
+
+    It looks for ``::`` at the first letter of a line, and for ``##[`` (from memory).
+    """
+    return _COMMAND_START.sub(r"\1: ", text).replace("##[", "# #[")
 
 
 def _headline(problem: Problem) -> str:

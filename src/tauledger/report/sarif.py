@@ -95,7 +95,12 @@ def _result(finding: Finding, index: int, mark: str, folder: Path) -> dict[str, 
 
 
 def _artifact(path: str) -> dict[str, Any]:
-    uri = quote(path.encode("utf-8", "surrogateescape"), safe="/")
+    try:
+        # Bytes of a name that are no UTF-8 arrive as surrogates and go out as they were.
+        encoded = path.encode("utf-8", "surrogateescape")
+    except UnicodeEncodeError:
+        encoded = path.encode("utf-8", "backslashreplace")
+    uri = quote(encoded, safe="/")
     if PurePath(path).is_absolute():
         return {"artifactLocation": {"uri": f"file://{uri}"}}
     return {"artifactLocation": {"uri": uri, "uriBaseId": _ROOT}}

@@ -29,8 +29,6 @@ AGREES = 0.06
 """A drawing must reproduce the exact resistance this well; expressions are made to 5 %."""
 _MOST_RESISTORS = 16
 _WIDEST = 800.0
-BROAD = 420.0
-"""Wider than this a drawing takes a row for itself."""
 _LONGEST_LABEL = 16
 _CHARACTER = 7.4
 """Width of a character of a label."""
@@ -46,7 +44,7 @@ class Drawing:
 
     svg: str
     key: tuple[tuple[str, Node], ...]
-    is_broad: bool
+    width: float
 
 
 @dataclass(frozen=True, slots=True)
@@ -83,7 +81,7 @@ class _Maker:
             label = f"({letter})"
         shown = format_quantity(value_of(node, self.symbols), "Ω")
         own = split_symbol(label)[1] == "" and node.kind == "name"
-        lines = [_label(node if label == written(node) else None, label)]
+        words = _label(node if label == written(node) else None, label)
         width = _HALF + 7 + _CHARACTER * max(min(len(label), _LONGEST_LABEL + 6), len(shown))
 
         def draw(x: float, y: float) -> str:
@@ -93,7 +91,7 @@ class _Maker:
                 f"{_line(x, y, x, top)}{_line(x, top + _BODY, x, y + _CELL)}"
                 f'<rect class="rs{dashed}" x="{x - _HALF:g}" y="{top:g}" width="{2 * _HALF:g}" '
                 f'height="{_BODY:g}"/>'
-                f'<text class="lb" x="{x + _HALF + 7:g}" y="{y + _CELL / 2 - 3:g}">{lines[0]}</text>'
+                f'<text class="lb" x="{x + _HALF + 7:g}" y="{y + _CELL / 2 - 3:g}">{words}</text>'
                 f'<text class="vl" x="{x + _HALF + 7:g}" y="{y + _CELL / 2 + 12:g}">'
                 f"{escape(shown)}</text>"
             )
@@ -134,7 +132,7 @@ def draw_seen(
         f'height="{height:.0f}" role="img" aria-labelledby="{anchor}-t">'
         f'<title id="{anchor}-t">{escape(spoken)}</title>{content}</svg>'
     )
-    return Drawing(svg, tuple(maker.key), width > BROAD)
+    return Drawing(svg, tuple(maker.key), width)
 
 
 # Two arrangements ---------------------------------------------------------------------------------

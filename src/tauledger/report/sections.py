@@ -6,7 +6,6 @@ from collections import Counter
 from collections.abc import Iterable
 
 from tauledger.problems import Problem, Severity
-from tauledger.report.changes import comparison_section
 from tauledger.report.comparison import comparison
 from tauledger.report.layout import (
     BLANK,
@@ -23,6 +22,7 @@ from tauledger.report.ledger import end_ledger
 from tauledger.report.page import BOUND, Page
 from tauledger.review.rows import (
     CornerRow,
+    DividerRow,
     NodeRow,
     PathRow,
     Review,
@@ -47,10 +47,13 @@ def report_lines(page: Page, review: Review) -> list[Line]:
     lines = _title(page, review)
     for path in review.paths:
         lines += _verdict(page, path)
-    lines += comparison_section(page, review.comparison)
+    if review.comparison is not None:
+        from tauledger.report.changes import comparison_section
+
+        lines += comparison_section(page, review.comparison)
     for path in review.paths:
         lines += _path_sections(page, path, named=len(review.paths) > 1)
-    lines += _transistors(page, review.transistors)
+    lines += _transistors(page, review)
     lines += _nodes(page, review.nodes)
     lines += _problems(page, review.problems)
     return lines + _footer(page, review)
@@ -231,10 +234,12 @@ def _uncounted(page: Page, rows: tuple[TimeConstantRow, ...]) -> list[Line]:
     return [page.heading("Parts in neither sum"), *table(columns, shown, page.width), BLANK]
 
 
-def _transistors(page: Page, transistors: tuple[TransistorRow, ...]) -> list[Line]:
+def _transistors(page: Page, review: Review) -> list[Line]:
+    transistors = review.transistors
     if not transistors:
         return []
-    lines = [page.heading("Transistors: bias"), *_bias_table(page, transistors), BLANK]
+    lines = [page.heading("Transistors: bias"), *_bias_table(page, transistors)]
+    lines += [*_bias_checks(page, review), BLANK]
     lines.append(page.heading("Transistors: small signal"))
     families: dict[tuple[str, ...], list[TransistorRow]] = {}
     for transistor in transistors:
@@ -247,6 +252,44 @@ def _transistors(page: Page, transistors: tuple[TransistorRow, ...]) -> list[Lin
     return [*lines, BLANK]
 
 
+def _bias_checks(page: Page, review: Review) -> list[Line]:
+    """The dividers by hand, and how far each output can move."""
+    found = [_divider(page, row) for row in review.dividers]
+    found += [
+        _headroom(page, path, named=len(review.paths) > 1)
+        for path in review.paths
+        if path.headroom is not None
+    ]
+    lines = [line for text in found for line in paragraph(text, page.width, "   ", " - ")]
+    return [BLANK, *lines] if lines else []
+
+
+def _divider(page: Page, row: DividerRow) -> str:
+    text = (
+        f"{page.name(row.transistor)} by hand: divider {page.quantity(row.source_v, 'V')} behind "
+        f"{page.quantity(row.source_ohm, 'Ω')}, emitter resistor "
+        f"{page.quantity(row.emitter_ohm, 'Ω')}, VBE 0.65{BOUND}V: "
+        f"IE {page.quantity(row.hand_a, 'A')}, solved {page.quantity(row.solved_a, 'A')} "
+        f"({row.difference * 100.0:+.1f}{BOUND}%)"
+    )
+    return f"{text}: {page.text(row.reason)}" if row.reason else text
+
+
+def _headroom(page: Page, path: PathRow, named: bool) -> str:
+    row = path.headroom
+    assert row is not None
+    sides = [
+        f"{page.quantity(volts, 'V')} {way} ({page.text(limit)})" if volts is not None else ""
+        for way, volts, limit in (
+            ("up", row.up_v, row.up_limit),
+            ("down", row.down_v, row.down_limit),
+        )
+    ]
+    where = f" at {page.name(path.output)}" if named else ""
+    moves = ", ".join(side for side in sides if side)
+    return f"headroom{where}: {moves}; {page.text(row.method)}"
+
+
 def _small_signal(page: Page, row: TransistorRow) -> Iterable[str]:
     for value in row.values:
         yield page.quantity(value.value, value.unit)
@@ -254,6 +297,7 @@ def _small_signal(page: Page, row: TransistorRow) -> Iterable[str]:
 
 def _bias_table(page: Page, transistors: tuple[TransistorRow, ...]) -> list[Line]:
     field_effect = ["FET" in row.type for row in transistors]
+    with_power = any(row.power_w is not None for row in transistors)
     current, voltage = "IC or ID", "VCE or VDS"
     if all(field_effect):
         current, voltage = "ID", "VDS"
@@ -267,6 +311,7 @@ def _bias_table(page: Page, transistors: tuple[TransistorRow, ...]) -> list[Line
         Column("region", flexible=True),
         Column(current, right=True),
         Column(voltage, right=True),
+        *((Column("power", right=True),) if with_power else ()),
     )
     rows = [
         Row(
@@ -278,6 +323,7 @@ def _bias_table(page: Page, transistors: tuple[TransistorRow, ...]) -> list[Line
                 page.text(row.region),
                 page.quantity(row.current_a, "A"),
                 page.quantity(row.voltage_v, "V"),
+                *((page.quantity(row.power_w, "W"),) if with_power else ()),
             )
         )
         for row in transistors

@@ -30,6 +30,7 @@ from tauledger.review.rows import (
     TimeConstantRow,
     TransistorRow,
 )
+from tauledger.review.sanity import divider_checks, headroom, sanity_problems
 from tauledger.smallsignal import DeviceAdmittance, LinearNetwork, Response
 from tauledger.topology.model import SignalPath, StageOutline, Topology
 
@@ -114,6 +115,7 @@ def path_row(
         gain_by_formulas=_product(network, corners, topology.stages, formulas),
         gain_by_inspection=corners.gain if corners.midband is not None else None,
         response=_response_points(corners, exact),
+        headroom=headroom(circuit, point, network, admittances, topology, corners),
     )
 
 
@@ -150,8 +152,9 @@ def review_of(
         nodes=tuple(NodeRow(node, point.voltage(node)) for node in circuit.nodes),
         transistors=transistor_rows(circuit, point, topology),
         paths=tuple(paths),
-        problems=circuit.problems,
+        problems=(*circuit.problems, *sanity_problems(circuit, point, topology)),
         supply_power_w=_supply_power(circuit, point),
+        dividers=divider_checks(circuit, point),
     )
 
 
@@ -174,6 +177,8 @@ def _transistor_row(
             for symbol, name, unit in figures
             if name in values and not (name == "gmb" and values[name] == 0.0)
         ),
+        power_w=values["power"],
+        beta_dc=values["beta_dc"] if bipolar and math.isfinite(values["beta_dc"]) else None,
     )
 
 

@@ -19,7 +19,7 @@ from tauledger.problems import Problem, Severity, SourceSpan
 from tauledger.quantity import format_quantity
 from tauledger.review.limits import CODES as LIMIT_CODES
 from tauledger.review.limits import LimitRow, check_limits, class_of
-from tauledger.review.rows import PathRow, Review
+from tauledger.review.rows import REGION_CODE, PathRow, Review
 
 REVERSED_VOLTS = 0.1
 """Below this a polarised capacitor is not called reversed: offsets of a few millivolts round zero
@@ -244,7 +244,8 @@ def check(
     rows = check_limits(settings, review, path) if settings and path else ()
     limits = tuple(_placed(row, settings.name if settings else "", places) for row in rows)
     return limits, (
-        *(Finding(review.netlist, entry) for entry in review.problems),
+        # A check has its own rule for regions, with its own severity.
+        *(Finding(review.netlist, p) for p in review.problems if p.code != REGION_CODE),
         *(_found(rule, case, subject, places) for rule in RULES for case in rule.find(subject)),
         *(
             Finding(review.netlist, row.problem, row.part, given.problem.span)

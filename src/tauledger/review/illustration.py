@@ -42,7 +42,7 @@ class Illustration:
     simulated: Curve | None = None
     simulator: str = ""
     symbols: Mapping[str, float] = field(default_factory=dict)
-    """Symbol as the expressions write it → value in Ω, S or 1: ``RC``, ``rπ(Q1)``, ``gm``, ``β``."""
+    """Symbol as the expressions write it (``RC``, ``rπ(Q1)``, ``β``) → value in Ω, S or 1."""
 
 
 def curve_range(path: PathRow, midband_hz: float) -> tuple[float, float]:

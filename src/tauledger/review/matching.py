@@ -123,7 +123,7 @@ def _by_structure(old: Circuit, new: Circuit) -> dict[str, str]:
     for old_colours, new_colours in reversed(history):
         before = _unique({n: c for n, c in old_colours.items() if n not in taken})
         after = _unique({n: c for n, c in new_colours.items() if n not in found})
-        for colour in before.keys() & after.keys():
+        for colour in (colour for colour in before if colour in after):
             found[after[colour]] = before[colour]
             taken.add(before[colour])
     return found
@@ -141,7 +141,8 @@ def _spread(old: Circuit, new: Circuit, nodes: dict[str, str]) -> dict[str, str]
         for valued in (True, False):
             here = _lone(old, {node: node for node in taken}, valued)
             there = _lone(new, found, valued)
-            for key in here.keys() & there.keys():
+            # In the order of the circuit, not of a set: which comes first can decide.
+            for key in (key for key in here if key in there):
                 for a, b in _open_ends(here[key], there[key], found, taken):
                     found[b] = a
                     taken.add(a)

@@ -7,9 +7,16 @@ note says why.
 from __future__ import annotations
 
 from dataclasses import dataclass
+from typing import TYPE_CHECKING
 
 from tauledger.problems import Problem
-from tauledger.review.changes import Comparison
+
+if TYPE_CHECKING:  # a comparison is rare, and its classes take a while to make
+    from tauledger.review.changes import Comparison
+
+
+REGION_CODE = "region-unsuited"
+"""Code of the warning about a transistor that is not where an amplifier needs it."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -42,6 +49,42 @@ class TransistorRow:
     """Collector-emitter or drain-source voltage."""
     values: tuple[NamedValue, ...]
     """gm, rπ, ro, β, Cπ, Cμ, or their FET equivalents, in that order."""
+    power_w: float | None = None
+    """Dissipated at the operating point, without signal."""
+    beta_dc: float | None = None
+    """Collector over base current; None for field-effect transistors."""
+
+
+@dataclass(frozen=True, slots=True)
+class DividerRow:
+    """The emitter current of one transistor by hand, beside the solved one."""
+
+    transistor: str
+    source_v: float
+    """Thévenin voltage of the divider at its base, against ground."""
+    source_ohm: float
+    emitter_ohm: float
+    hand_a: float
+    solved_a: float
+    difference: float
+    """hand/solved − 1."""
+    reason: str
+    """Why they differ by more than 10 %; empty when they do not."""
+    method: str
+
+
+@dataclass(frozen=True, slots=True)
+class HeadroomRow:
+    """How far the output of a path can move before a transistor leaves its region."""
+
+    up_v: float | None
+    """Upwards, V; None when nothing limits it."""
+    up_limit: str
+    """``Q2 cuts off`` …"""
+    down_v: float | None
+    """Downwards, V, as a positive number."""
+    down_limit: str
+    method: str
 
 
 @dataclass(frozen=True, slots=True)
@@ -189,6 +232,8 @@ class PathRow:
     """Filled when the user asked for a simulator beside."""
     response: tuple[ResponsePoint, ...] = ()
     """The exact response over the band and its edges, in equal steps of log frequency."""
+    headroom: HeadroomRow | None = None
+    """None without a transistor that the signal passes, or without a midband."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -207,3 +252,5 @@ class Review:
     supply_power_w: float | None
     comparison: Comparison | None = None
     """Filled when the user asked for the changes since another revision."""
+    dividers: tuple[DividerRow, ...] = ()
+    """Transistors biased by a divider and an emitter resistor, by hand."""

@@ -4,6 +4,7 @@ from tauledger.smallsignal.linearise import linear_network
 from tauledger.smallsignal.network import LinearNetwork, ReactivePart
 from tauledger.smallsignal.response import (
     Response,
+    condensed,
     drive_vector,
     edge_sensitivity,
     gain_sensitivity,
@@ -18,6 +19,7 @@ __all__ = [
     "LinearNetwork",
     "ReactivePart",
     "Response",
+    "condensed",
     "device_admittances",
     "drive_vector",
     "edge_sensitivity",

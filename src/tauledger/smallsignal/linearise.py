@@ -77,7 +77,7 @@ def _stamp_charges(reactance: FloatArray, group: DeviceGroup, figures: Operating
         rows = np.concatenate([plus, plus, minus, minus])
         columns = np.concatenate([control_plus, control_minus, control_plus, control_minus])
         value = values[:, :, k]
-        Scatter.onto(rows * order + columns).add(
+        Scatter.onto(rows * order + columns, boards).add(
             reactance.reshape(boards, -1),
             np.concatenate([value, -value, -value, value], axis=1),
         )

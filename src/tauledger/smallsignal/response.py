@@ -13,24 +13,31 @@ from tauledger.circuit.elements import CurrentSource, IndependentSource
 from tauledger.smallsignal.network import FloatArray, LinearNetwork, ReactivePart
 
 ComplexArray = NDArray[np.complex128]
+LARGEST_BATCH = 4_000_000
+"""Complex numbers held at once while a sweep is solved (64 MB)."""
 
 
 @dataclass(frozen=True, slots=True)
 class Response:
-    """``H(s) = senseᵀ (G + sC)⁻¹ drive`` on one board; matrices (N, N), vectors (N,)."""
+    """``H(s) = senseᵀ (G + sC)⁻¹ drive + direct`` on one board; (N, N) and (N,)."""
 
     conductance: FloatArray
     reactance: FloatArray
     drive: FloatArray
     sense: FloatArray
+    direct: float = 0.0
 
     def at(self, frequency_hz: FloatArray) -> ComplexArray:
         """H at each frequency, shape of ``frequency_hz`` (one axis)."""
-        s = 2j * math.pi * np.atleast_1d(frequency_hz)
+        s: ComplexArray = np.asarray(2j * math.pi * np.atleast_1d(frequency_hz), np.complex128)
+        at_once = max(1, LARGEST_BATCH // max(1, self.drive.size**2))
+        pieces = [self._solve(s[i : i + at_once]) for i in range(0, s.size, at_once)]
+        return np.concatenate(pieces) + self.direct
+
+    def _solve(self, s: ComplexArray) -> ComplexArray:
         matrices = self.conductance + s[:, None, None] * self.reactance
         right = np.broadcast_to(self.drive[:, None], (s.size, self.drive.size, 1))
-        solution = np.linalg.solve(matrices, right)[:, :, 0]
-        return np.asarray(solution @ self.sense)
+        return np.asarray(np.linalg.solve(matrices, right)[:, :, 0] @ self.sense)
 
     def magnitude(self, frequency_hz: float) -> float:
         """|H| at one frequency."""
@@ -61,6 +68,41 @@ def sense_vector(network: LinearNetwork, positive: str, negative: str = "0") -> 
 def response(network: LinearNetwork, drive: FloatArray, sense: FloatArray) -> Response:
     """The response on the first board."""
     return Response(network.conductance[0], network.reactance[0], drive, sense)
+
+
+def condensed(response: Response) -> Response:
+    """The same H and poles with fewer unknowns: those without reactance are eliminated.
+
+    With k the unknowns kept and e the rest, (G_kk − G_ke G_ee⁻¹ G_ek + s C_kk) x_k has no more
+    s in it. Returns the response itself where the rest cannot be eliminated.
+    """
+    reactance = response.reactance
+    kept = np.any(reactance != 0.0, axis=0) | np.any(reactance != 0.0, axis=1)
+    # A branch current is eliminated only together with a node of its own: where both nodes are
+    # kept its equation has nothing else to be solved for.
+    conductance = response.conductance
+    for row in np.flatnonzero(~kept & (np.diag(conductance) == 0.0)):
+        touched = np.flatnonzero(conductance[row])
+        kept[row] = bool(kept[touched].all())
+    rest = ~kept
+    if not rest.any() or not kept.any():
+        return response
+    g_ee = conductance[np.ix_(rest, rest)]
+    right = np.column_stack([conductance[np.ix_(rest, kept)], response.drive[rest]])
+    try:
+        solved = np.linalg.solve(g_ee, right)
+    except np.linalg.LinAlgError:
+        return response
+    if not np.isfinite(solved).all():
+        return response
+    g_ke, sense_e = conductance[np.ix_(kept, rest)], response.sense[rest]
+    return Response(
+        conductance=conductance[np.ix_(kept, kept)] - g_ke @ solved[:, :-1],
+        reactance=reactance[np.ix_(kept, kept)],
+        drive=response.drive[kept] - g_ke @ solved[:, -1],
+        sense=response.sense[kept] - sense_e @ solved[:, :-1],
+        direct=response.direct + float(sense_e @ solved[:, -1]),
+    )
 
 
 def gain_sensitivity(

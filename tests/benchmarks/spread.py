@@ -1,0 +1,103 @@
+"""Boards a second of the tolerance spread, beside ngspice looping over boards in one process.
+
+    python tests/benchmarks/spread.py [NETLIST]
+
+Every board has new values of all resistors and capacitors; both sides solve its bias anew. From
+ngspice a board takes ``alter`` for each part, ``op``, and one ``ac`` sweep from which gain and
+corners could be read; the reading is not counted.
+"""
+
+from __future__ import annotations
+
+import os
+import resource
+import shutil
+import subprocess
+import sys
+import tempfile
+import time
+from pathlib import Path
+
+# The work is spread over processes, where threads of the numeric library only get in the way.
+os.environ.setdefault("OPENBLAS_NUM_THREADS", "1")
+
+from concurrent.futures import ProcessPoolExecutor
+
+from tauledger.analysis import Analysis, analyze, read
+from tauledger.circuit.elements import Capacitor, Resistor
+from tauledger.decide.asked import parse_asked
+from tauledger.decide.spread import spread
+from tauledger.decide.varied import variety_of
+
+SAMPLE = Path(__file__).parents[2] / "samples/feedback-pair/feedback-pair.cir"
+BOARDS = (1_000, 10_000, 100_000)
+NGSPICE_BOARDS = 200
+SWEEP = "ac dec 20 0.01 100meg"
+MEMORY_BYTES = 2_000_000_000
+
+
+def ours(analysis: Analysis, boards: int, executor: ProcessPoolExecutor | None) -> float:
+    """Seconds for a whole spread, worst cases included."""
+    asked = [parse_asked("R*=5%"), parse_asked("C*=20%")]
+    start = time.perf_counter()
+    spread(analysis, None, asked, boards, executor=executor)
+    return time.perf_counter() - start
+
+
+def ngspice(netlist: Path, analysis: Analysis, boards: int) -> float:
+    """Seconds for a loop of boards, start-up left out."""
+    empty, full = (_ngspice(netlist, analysis, count) for count in (0, boards))
+    return full - empty
+
+
+def _ngspice(netlist: Path, analysis: Analysis, boards: int) -> float:
+    parts = [e for e in analysis.circuit.elements if isinstance(e, Resistor | Capacitor)]
+    text = netlist.read_text().lower().rpartition(".end")[0]
+    lines = [".control"]
+    for board in range(boards):
+        factor = 1.0 + 0.05 * ((board * 0.618) % 1.0)
+        for part in parts:
+            value = part.resistance_ohm if isinstance(part, Resistor) else part.capacitance_f
+            lines.append(f"alter {part.name.lower()} = {value * factor!r}")
+        lines += ["op", SWEEP, "destroy all"]
+    lines += ["quit", ".endc", ".end", ""]
+    with tempfile.TemporaryDirectory() as folder:
+        Path(folder, ".spiceinit").write_text("* nothing\n")
+        Path(folder, "deck.cir").write_text(text + "\n".join(lines))
+        start = time.perf_counter()
+        subprocess.run(
+            ["ngspice", "-b", "deck.cir"],
+            cwd=folder,
+            stdout=subprocess.DEVNULL,
+            stderr=subprocess.DEVNULL,
+            timeout=300,
+            check=False,
+            preexec_fn=lambda: resource.setrlimit(resource.RLIMIT_AS, (MEMORY_BYTES,) * 2),
+        )
+        return time.perf_counter() - start
+
+
+def main() -> None:
+    netlist = Path(sys.argv[1]) if len(sys.argv) > 1 else SAMPLE
+    analysis = analyze(read(netlist))
+    count = len(variety_of(analysis.circuit, "", None, [parse_asked("R*=5%")]).draws)
+    print(f"{netlist.name}: {analysis.solution.equations.size} unknowns, {count} resistors")
+    ratio_base = None
+    if shutil.which("ngspice"):
+        seconds = ngspice(netlist, analysis, NGSPICE_BOARDS)
+        ratio_base = NGSPICE_BOARDS / seconds
+        print(f"  ngspice, one process   {NGSPICE_BOARDS:>7} boards {ratio_base:10.0f} boards/s")
+    cores = len(os.sched_getaffinity(0))
+    with ProcessPoolExecutor(cores) as executor:
+        list(executor.map(abs, range(cores)))
+        for boards in BOARDS:
+            for who, pool in (("one process", None), (f"{cores} processes", executor)):
+                rate = boards / ours(analysis, boards, pool)
+                times = f", {rate / ratio_base:.1f} times ngspice" if ratio_base else ""
+                print(f"  tauledger, {who:<12} {boards:>7} boards {rate:10.0f} boards/s{times}")
+    peak = resource.getrusage(resource.RUSAGE_SELF).ru_maxrss / 1024
+    print(f"  peak memory of this process {peak:.0f} MB")
+
+
+if __name__ == "__main__":
+    main()

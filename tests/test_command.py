@@ -16,7 +16,7 @@ import pytest
 TESTS = Path(__file__).parent
 
 STAND_IN = """
-import os, signal, sys, types
+import os, signal, sys, types, warnings
 from report.fixtures import ONE_STAGE
 from tauledger.problems import Problem, ProblemError, Severity
 stand_in = types.ModuleType("tauledger.analysis")
@@ -27,6 +27,8 @@ def analyze(netlist, input=None, output=None, settings=None, midband_hz=None):
         raise ValueError("forged\\x1b[2J\\nline")
     if netlist == "interrupt":
         os.kill(os.getpid(), signal.SIGINT)
+    if netlist == "warn":
+        warnings.warn("overflow", RuntimeWarning)
     print(netlist, input, output, file=sys.stderr)
     return types.SimpleNamespace(review=ONE_STAGE)
 stand_in.read = lambda path: path
@@ -100,6 +102,10 @@ def test_help_fits_a_screen_and_shows_an_example(arguments: tuple[str, ...]) -> 
         (("report", "--outptu=x", "a.cir"), "Did you mean --output?"),
         (("report", "--form", "json", "a.cir"), "has no option --form"),
         (("report", "a.cir", "--format", "xml"), "invalid choice: 'xml'"),
+        (("report", "a.cir", "--midband", "1e99"), "from 1mHz to 1THz such as 1kHz, found '1e99'"),
+        (("report", "a.cir", "--midband", "-5"), "from 1mHz to 1THz such as 1kHz, found '-5'"),
+        (("report", "a.cir", "--midband", "x"), "'x' is not a quantity"),
+        (("report", "-5"), "has no option -5"),
         (("report", "a.cir", "b.cir"), "unrecognized arguments: b.cir"),
         (("report", "a.cir", "\x1b[2J"), "unrecognized arguments: \\x1b[2J"),
         (("--verson",), "Did you mean --version?"),
@@ -113,6 +119,13 @@ def test_unusable_input_is_one_message_and_code_2(arguments: tuple[str, ...], sa
     assert said in done.stderr
     assert "\x1b" not in done.stderr
     assert len(done.stderr.splitlines()) == 2
+
+
+@pytest.mark.parametrize("wish", ["", "once", "default"])
+def test_python_warns_only_who_asks(wish: str) -> None:
+    done = _tauledger("report", "warn", PYTHONWARNINGS=wish)
+    assert done.returncode == 0
+    assert ("RuntimeWarning: overflow" in done.stderr) == bool(wish)
 
 
 def test_internal_error_names_a_file_with_the_traceback(tmp_path: Path) -> None:

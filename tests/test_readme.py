@@ -114,7 +114,7 @@ def _environment(home: Path) -> dict[str, str]:
 
 def _run(block: Block, folder: Path, environment: dict[str, str]) -> Outcome:
     done = subprocess.run(
-        ["sh", "-c", block.script],
+        ["sh", "-ec", block.script],
         cwd=folder,
         env=environment,
         stdout=subprocess.PIPE,
@@ -122,7 +122,9 @@ def _run(block: Block, folder: Path, environment: dict[str, str]) -> Outcome:
         encoding="utf-8",
         timeout=120,
     )
-    return Outcome(done.returncode, done.stdout, done.stderr or "")
+    # An excerpt may end in the blank line that closed it.
+    stdout = done.stdout.rstrip() + "\n" if done.stdout.strip() else ""
+    return Outcome(done.returncode, stdout, done.stderr or "")
 
 
 @cache
@@ -161,6 +163,12 @@ def test_blocks_that_are_files_are_those_files() -> None:
     assert {match["file"] for match in found} >= {"samples/workflow/netlists.yml"}
     for match in found:
         assert match["text"] == (TOP / match["file"]).read_text(encoding="utf-8")
+
+
+def test_the_hooks_exist() -> None:
+    shown = re.findall(r"^ +- id: (\S+)$", README.read_text(encoding="utf-8"), re.MULTILINE)
+    offered = (TOP / ".pre-commit-hooks.yaml").read_text(encoding="utf-8")
+    assert shown == re.findall(r"^- id: (\S+)$", offered, re.MULTILINE)
 
 
 def test_the_python_passes(tmp_path: Path) -> None:
@@ -274,15 +282,19 @@ def refilled(text: str) -> str:
         outcome = next(outcomes)
         if outcome is None or match["shown"] is None:
             return match[0]
-        start, end = match.start("shown") - match.start(), match.end("shown") - match.start()
-        return match[0][:start] + outcome.stdout + match[0][end:]
+        return _with(match, "shown", outcome.stdout)
 
     def copy(match: re.Match[str]) -> str:
-        current = (TOP / match["file"]).read_text(encoding="utf-8")
-        return match[0].replace(match["text"], current) if match["text"] else match[0]
+        return _with(match, "text", (TOP / match["file"]).read_text(encoding="utf-8"))
 
     text = _COPY.sub(copy, _RUN.sub(output, text))
     return _KEYS.sub(lambda _: f"<!-- keys -->\n{reference()}<!-- end of keys -->\n", text)
+
+
+def _with(match: re.Match[str], group: str, text: str) -> str:
+    """The whole match with other text in this group."""
+    start, end = match.start(group) - match.start(), match.end(group) - match.start()
+    return match[0][:start] + text + match[0][end:]
 
 
 if __name__ == "__main__":

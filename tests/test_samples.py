@@ -10,6 +10,7 @@ import contextlib
 import io
 import math
 import os
+import subprocess
 import sys
 from collections.abc import Callable
 from pathlib import Path
@@ -129,6 +130,29 @@ def test_a_netlist_completed_by_its_configuration_against_ngspice() -> None:
     assert 20 * math.log10(abs(path.gain / found.gain)) == pytest.approx(0, abs=0.05)
     assert path.low.exact_hz == pytest.approx(found.low_hz, rel=5e-3)
     assert path.high.exact_hz == pytest.approx(found.high_hz, rel=5e-3)
+
+
+def test_nothing_depends_on_the_order_of_sets() -> None:
+    """Python scrambles it anew in every process, workers included."""
+    names = ("feedback-pair", "headphone-driver", "phono-stage")
+    program = (
+        "import sys; from tauledger.command import main\n"
+        "for name in sys.argv[1:]: main(['report', name, '--format', 'json'])"
+    )
+    command = [sys.executable, "-c", program, *(f"{name}/{name}.cir" for name in names)]
+    outputs = [
+        subprocess.run(
+            command,
+            cwd=SAMPLES,
+            env={**os.environ, "PYTHONHASHSEED": seed},
+            capture_output=True,
+            check=True,
+            timeout=60,
+        ).stdout
+        for seed in ("1", "2", "3")
+    ]
+    assert len(set(outputs)) == 1
+    assert outputs[0].count(b'"title"') >= len(names)
 
 
 if __name__ == "__main__":

@@ -43,6 +43,8 @@ def main(argv: Sequence[str] | None = None) -> int:
     given = sys.argv[1:] if argv is None else list(argv)
     # The matrices are small: threads of the linear algebra would only wait for each other.
     os.environ.setdefault("OPENBLAS_NUM_THREADS", "1")
+    if argv is None:
+        _silence_warnings()
     try:
         try:
             return _run(given)
@@ -60,6 +62,15 @@ def main(argv: Sequence[str] | None = None) -> int:
     except Exception as error:
         # The last resort: a user is never shown a traceback.
         return _report_internal(error, given)
+
+
+def _silence_warnings() -> None:
+    """Python's own warnings are for developers, here and in workers, unless the user asks."""
+    if not sys.warnoptions:
+        import warnings
+
+        warnings.simplefilter("ignore")
+        os.environ["PYTHONWARNINGS"] = "ignore"
 
 
 # Commands -----------------------------------------------------------------------------------------
@@ -427,9 +438,13 @@ def _midband_argument(parser: argparse.ArgumentParser) -> None:
 def _frequency(text: str) -> float:
     from tauledger.quantity import parse_si
 
-    value, unit = parse_si(text)
-    if unit not in ("", "Hz") or value <= 0:
-        raise argparse.ArgumentTypeError(f"expected a frequency such as 1kHz, found {text!r}")
+    try:
+        value, unit = parse_si(text)
+    except ValueError as error:
+        raise argparse.ArgumentTypeError(str(error)) from None
+    if unit not in ("", "Hz") or not 1e-3 <= value <= 1e12:
+        expected = "a frequency from 1mHz to 1THz such as 1kHz"
+        raise argparse.ArgumentTypeError(f"expected {expected}, found {text!r}")
     return value
 
 
@@ -519,13 +534,13 @@ class Command:
 
 COMMANDS = {
     "report": Command(
-        "Print bias, stages, gain and what sets each corner of an amplifier.",
+        "Print bias, stages, gain and what sets each corner.",
         "tauledger report preamp.cir --output out",
         _report_arguments,
         report,
     ),
     "compare": Command(
-        "Print what two revisions differ in and which edit moved each corner.",
+        "Print how two revisions differ and which edit moved each corner.",
         "tauledger compare HEAD~1:boards/preamp.cir boards/preamp.cir",
         _compare_arguments,
         compare,
@@ -543,7 +558,7 @@ COMMANDS = {
         check,
     ),
     "start": Command(
-        "Write a tauledger.toml to fill in, from what is found in a netlist.",
+        "Write a tauledger.toml to fill in, from what a netlist holds.",
         "tauledger start preamp.cir --output tauledger.toml",
         _start_arguments,
         start,
@@ -595,12 +610,26 @@ def _run(given: list[str]) -> int:
     if command is None:
         _refuse_command(name)
     parser = _command_parser(name, command)
+    rest = _joined_negatives(rest)
     _check_options(parser, rest)
     return command.run(parser.parse_args(rest))
 
 
+def _joined_negatives(given: Iterable[str]) -> list[str]:
+    """``--range -40..85`` as ``--range=-40..85``: no option here begins with a digit."""
+    joined: list[str] = []
+    for argument in given:
+        option = joined[-1] if joined and "--" not in joined else ""
+        if option[:2] == "--" and "=" not in option and re.match(r"-\.?\d", argument):
+            joined[-1] = f"{option}={argument}"
+        else:
+            joined.append(argument)
+    return joined
+
+
 def _top_parser() -> _Parser:
-    listing = "\n".join(f"  {name:<10}{command.summary}" for name, command in COMMANDS.items())
+    width = max(map(len, COMMANDS))
+    listing = "\n".join(f"  {name:<{width}}  {c.summary}" for name, c in COMMANDS.items())
     example = next(iter(COMMANDS.values())).example
     parser = _Parser(
         prog="tauledger",

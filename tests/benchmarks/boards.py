@@ -24,13 +24,11 @@ from pathlib import Path
 
 import numpy as np
 
-from tauledger.bias import solve_bias
+from tauledger.analysis import analyze
 from tauledger.circuit import flatten
-from tauledger.circuit.elements import Capacitor, Circuit, IndependentSource, Resistor
-from tauledger.corners import find_corners
-from tauledger.corners.batch import BoardCorners, board_corners
-from tauledger.netlist import parse
-from tauledger.smallsignal import drive_vector, linear_network, response, sense_vector
+from tauledger.circuit.elements import Capacitor, Circuit, Resistor
+from tauledger.decide.bench import Figures, bench_of, measure
+from tauledger.netlist import Netlist, parse
 
 AMPLIFIER = """Doorbell pickup: two-transistor amplifier
 VCC vcc 0 12
@@ -79,16 +77,9 @@ def boards_of(circuit: Circuit, count: int) -> Boards:
     return varied
 
 
-def solve_boards(circuit: Circuit, varied: Boards) -> BoardCorners:
-    """Everything from the flat circuit to the corners of every board, the nominal one included."""
-    drawn = linear_network(solve_bias(circuit))
-    source = next(e for e in circuit.elements if e.name == "VIN")
-    assert isinstance(source, IndependentSource)
-    drive, sense = drive_vector(drawn, source), sense_vector(drawn, "out")
-    nominal = find_corners(response(drawn, drive, sense), drawn.parts, [], [])
-    network = linear_network(solve_bias(circuit, varied))
-    low, high = nominal.low.exact_hz, nominal.high.exact_hz
-    return board_corners(network, drive, sense, nominal.midband_hz, low, high)
+def solve_boards(netlist: Netlist, varied: Boards) -> Figures:
+    """Everything from the netlist to the corners of every board, the nominal one included."""
+    return measure(bench_of(analyze(netlist, "VIN", "out")), varied)
 
 
 def ngspice_deck(varied: Boards, count: int) -> str:
@@ -137,13 +128,13 @@ def main() -> None:
     parser.add_argument("--repeat", type=int, default=3, help="runs of each, the fastest counts")
     parser.add_argument("--json", type=Path)
     options = parser.parse_args()
-    circuit = flatten(parse(AMPLIFIER + ".end\n"))
-    varied = boards_of(circuit, options.boards)
+    netlist = parse(AMPLIFIER + ".end\n")
+    varied = boards_of(flatten(netlist), options.boards)
     few = min(options.ngspice_boards, options.boards)
     ours, theirs = [], []
     for _ in range(options.repeat):
         begin = time.perf_counter()
-        found = solve_boards(circuit, varied)
+        found = solve_boards(netlist, varied)
         ours.append(time.perf_counter() - begin)
         theirs.append(ngspice_seconds(varied, few))
     per_board = min(ours) / options.boards
@@ -158,7 +149,6 @@ def main() -> None:
         "runs_s": ours,
         "runs_ngspice_s": theirs,
         "boards_failed": int(np.isnan(found.low_hz).sum()),
-        "boards_searched_alone": found.searched,
         "low_hz_5_50_95_percent": np.nanpercentile(found.low_hz, [5, 50, 95]).tolist(),
         "high_hz_5_50_95_percent": np.nanpercentile(found.high_hz, [5, 50, 95]).tolist(),
     }

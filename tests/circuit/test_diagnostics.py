@@ -243,6 +243,43 @@ def test_nothing_is_passed_over_in_silence(line: str, unused: str, tmp_path: Pat
     assert entry.span.text[start : start + entry.span.length] == unused
 
 
+@pytest.mark.parametrize(
+    ("line", "code", "said", "place"),
+    [
+        ("R1 a 0 -1k", "value-out-of-range", "-1.00 kΩ", (2, 1)),
+        ("R1 a 0 0", "value-zero", "1 mΩ", (2, 1)),
+        ("C1 a 0 0", "value-out-of-range", "0 F", (2, 1)),
+        ("C1 a 0 -10p", "value-unusable", "-10.0 pF", (2, 1)),
+        ("L1 a 0 0", "value-out-of-range", "0 H", (2, 1)),
+        ("L1 a 0 {-1m}", "value-unusable", "-1.00 mH", (2, 1)),
+        ("R1 a 0 1k temp=-300", "value-unusable", "absolute zero", (2, 16)),
+        ("Q1 a b 0 m temp=2000\n.model m npn", "value-out-of-range", "1000 °C", (2, 17)),
+        (".temp -273.15", "value-unusable", "absolute zero", (2, 7)),
+        (".temp 1e6", "value-out-of-range", "1000 °C", (2, 7)),
+        (".options tnom=-400", "value-unusable", "absolute zero", (2, 15)),
+        ("Q1 a b 0 m\n.model m npn(bf=0)", "value-out-of-range", "BF is 0", (3, 14)),
+        ("Q1 a b 0 m\n.model m pnp(vaf=80 bf=-5)", "value-out-of-range", "BF is -5", (3, 21)),
+        ("Q1 a b 0 m\n.model m npn(is=0)", "value-out-of-range", "IS is 0", (3, 14)),
+        ("Q1 a b 0 m\n.model m npn(is=-1f)", "value-unusable", "IS is -1e-15", (3, 14)),
+        ("Q1 a b 0 m\n.model m npn(va=-80)", "value-out-of-range", "VAF is -80", (3, 14)),
+        ("D1 a 0 m\n.model m d(n=0)", "value-out-of-range", "N is 0", (3, 12)),
+    ],
+)
+def test_values_that_make_no_sense_are_told_once(
+    line: str, code: str, said: str, place: tuple[int, int], tmp_path: Path
+) -> None:
+    found = problems_of(_written(tmp_path, f"title\n{line}\nR8 b 0 1\nR9 a 0 1\n".encode()))
+    (entry,) = found
+    assert (entry.code, entry.span and (entry.span.line, entry.span.column)) == (code, place)
+    assert entry.severity == CODES[code][0]
+    assert said in entry.message
+
+
+def test_limits_of_sense_are_not_warned_of(tmp_path: Path) -> None:
+    text = "t\n.temp -273\n.options tnom=1000\nQ1 a a 0 m\n.model m npn(vaf=0 var=0)\nR2 a 0 1p\n"
+    assert not problems_of(_written(tmp_path, text.encode()))
+
+
 def test_a_fault_in_a_subcircuit_counts_once_however_often_it_is_called(tmp_path: Path) -> None:
     calls = "".join(f"X{n} a s\n" for n in range(50))
     path = _written(

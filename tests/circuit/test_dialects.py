@@ -138,6 +138,12 @@ def test_farad_is_femto_and_says_so() -> None:
         ("R1 a b {c}", ".param a=1 b={a+1}\n.param c={b*d}\n.param d={a+2}", 6.0),
         ("R1 a b {x}", ".param x=1\n.param x=2", 2.0),
         ("R1 a b {x > 1 ? 10 : 20}", ".param x=2", 10.0),
+        ("R1 a b {3.3k}", "", 3.3e3),
+        ("R1 a b '4.7k'", "", 4.7e3),
+        ("R1 a b {x}", ".param x={3.3k}", 3.3e3),
+        ("R1 a b {x}", ".param y=1 x='4.7k'", 4.7e3),
+        ("R1 a b {x}", ".param x={ 2 }", 2.0),
+        ("R1 a b {x}", ".param x={y*2}\n.param y={3.3k}", 6.6e3),
     ],
 )
 def test_values_and_parameters(line: str, extra: str, expected: float) -> None:
@@ -236,6 +242,15 @@ def test_tolerance_fields_are_passed_over() -> None:
         "bf": 100.0,
         "is": 1e-15,
     }
+
+
+def test_numbers_in_braces_and_quotes_as_parameters_of_a_subcircuit() -> None:
+    circuit = flat(
+        "X1 a s\nX2 a s r={2.2k}\nX3 a s r='g' q={h}\n.param g={1k} h='1.5k'\n"
+        ".subckt s a params: r={3.3k} q='4.7k'\nR1 a 0 {r}\nR2 a 0 'q'\n.ends"
+    )
+    ohms = [e.resistance_ohm for e in circuit.elements]  # type: ignore[attr-defined]
+    assert ohms == [3.3e3, 4.7e3, 2.2e3, 4.7e3, 1e3, 1.5e3]
 
 
 def test_nested_subcircuits_with_parameters_and_scoped_models() -> None:

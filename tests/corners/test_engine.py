@@ -9,6 +9,7 @@ import pytest
 from tauledger.analysis import Analysis, analyze
 from tauledger.corners.model import PartAccount
 from tauledger.netlist import parse
+from tauledger.problems import ProblemError
 
 TRANSISTOR = ".model qx npn bf=200 vaf=100 cje=10p cjc=4p tf=0.3n"
 STAGE = f"""stage
@@ -229,3 +230,60 @@ CL out 0 330p"""
     )
     assert any("C1" in note and "CL" in note for note in analysis.corners.notes)
     assert analysis.corners.gain > 1.02 * analysis.corners.exact_gain
+
+
+def test_feedthrough_of_a_transistor_that_is_off_is_not_the_passband() -> None:
+    """Cμ passes the signal at very high frequency; the stage is used far below."""
+    weak = STAGE.replace("RC vcc c 4.7k", "RC vcc c 2")
+    corners = run(weak).corners
+    assert corners.midband_hz < 1e8
+    assert corners.low.set_by == ("CE",)
+
+
+def test_part_inside_a_loop_counts_when_it_moves_the_corner() -> None:
+    """Feedback holds the midband gain whatever C1 does, yet C1 alone makes the high corner."""
+    corners = run(
+        """loop
+VS in 0 AC 1
+RI in n 10k
+RF n out 100k
+G1 p 0 n 0 10m
+RP p 0 1Meg
+CP p 0 10n
+E1 out 0 p 0 1
+RL out 0 2k"""
+    ).corners
+    assert corners.high.set_by == ("CP",)
+    assert corners.high.estimate_hz == pytest.approx(corners.high.exact_hz, rel=0.02)
+
+
+def test_unstable_circuit_is_said_and_gets_no_consequences() -> None:
+    analysis = run(
+        """positive feedback
+VS in 0 AC 1
+RI in p 10k
+RF p out 30k
+CP p 0 1n
+E1 out 0 p 0 5
+RL out 0 2k"""
+    )
+    corners = analysis.corners
+    # One capacitor: (1/RI + 1/RF − 5/RF)/C, growing.
+    expected = abs(1 / 10e3 + 1 / 30e3 - 5 / 30e3) / 1e-9 / (2 * math.pi)
+    assert corners.unstable_hz == pytest.approx(expected, rel=1e-6)
+    assert "unstable" in corners.notes[0]
+    assert not corners.high.timing
+    assert corners.high.improved_hz is None
+    assert any(problem.code == "path-unstable" for problem in analysis.review.problems)
+
+
+@pytest.mark.parametrize("negative", ["RN out 0 -50k", "RN b 0 -40k"])
+def test_negative_resistors_end_in_a_report(negative: str) -> None:
+    assert run(STAGE + negative).review.paths
+
+
+def test_network_too_large_for_its_poles_is_refused() -> None:
+    ladder = "\n".join(f"R{i} n{i} n{i + 1} 1k\nC{i} n{i + 1} 0 1n" for i in range(400))
+    with pytest.raises(ProblemError) as caught:
+        run(f"ladder\nVS n0 0 AC 1\n{ladder}\nRL n400 0 1k", output="n400")
+    assert caught.value.problems[0].code == "circuit-too-large"

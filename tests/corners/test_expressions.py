@@ -220,3 +220,26 @@ def test_nine_in_ten_capacitors_of_the_samples_get_an_expression() -> None:
     assert len(written) >= 0.9 * len(rows)
     assert all(abs(t.expression_deviation or 0.0) <= 0.05 for t in written)
     assert all(t.expression_reason for t in rows if not t.expression)
+
+
+def test_body_effect_acts_on_the_source_and_not_on_the_gate() -> None:
+    model = ".model mx nmos(vto=1 kp=100u gamma=0.6 phi=0.7 lambda=0.02 cgso=200p cgdo=200p)"
+    text = f"""bulk at ground
+VDD vdd 0 12
+VS in 0 AC 1
+RS in g1 10k
+C1 g1 g 100n
+R1 vdd g 1Meg
+R2 g 0 470k
+RD vdd d 4.7k
+M1 d g s 0 mx W=100u L=2u
+RSS s 0 2.2k
+CS s 0 100u
+C2 d out 10u
+RL out 0 47k
+{model}"""
+    analysis = run(text)
+    assert "(gm+gmb)" in row(analysis, "CS").expression
+    (stage,) = analysis.review.paths[0].stages
+    assert stage.formula.startswith("−gm·(")
+    assert stage.formula_value == pytest.approx(stage.gain, rel=0.02)

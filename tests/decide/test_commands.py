@@ -42,6 +42,13 @@ def test_text_and_json(
     assert json.loads(capsys.readouterr().out)[key]
 
 
+def test_values_may_begin_with_a_minus(netlist: str, capsys: pytest.CaptureFixture[str]) -> None:
+    assert main(["temperature", netlist, "--range", "-40..85", "--steps", "2"]) == 0
+    assert "-40.0 °C" in capsys.readouterr().out
+    assert main(["choose", netlist, "--low-corner", "-5"]) == 2
+    assert "found '-5'; expected a frequency" in capsys.readouterr().err
+
+
 def test_workers_give_the_same_figures(
     tmp_path: Path, capsys: pytest.CaptureFixture[str], monkeypatch: pytest.MonkeyPatch
 ) -> None:

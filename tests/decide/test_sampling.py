@@ -6,7 +6,7 @@ import statistics
 
 import numpy as np
 import pytest
-from hypothesis import given
+from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from tauledger.decide.sampling import (
@@ -18,6 +18,7 @@ from tauledger.decide.sampling import (
 from tauledger.decide.statistics import wilson_interval
 
 
+@settings(deadline=None)
 @given(st.integers(1, 3000), st.integers(0, 2**40))
 def test_every_stratum_is_drawn_once(boards: int, seed: int) -> None:
     draws = latin_hypercube("R1", seed, boards, 0, boards)

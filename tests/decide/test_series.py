@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import pytest
-from hypothesis import given
+from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from tauledger.decide.series import SERIES, ceiling, floor, mantissas, nearest, within
@@ -26,6 +26,7 @@ def test_fine_series_have_the_one_exception() -> None:
     assert mantissas("E48")[:4] == (1.0, 1.05, 1.1, 1.15)
 
 
+@settings(deadline=None)
 @given(st.sampled_from(SERIES), st.floats(1e-13, 1e6))
 def test_neighbours_enclose_the_value_and_are_next_to_each_other(series: str, value: float) -> None:
     low, high = floor(value, series), ceiling(value, series)

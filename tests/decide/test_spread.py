@@ -15,8 +15,10 @@ from tauledger.analysis import Analysis
 from tauledger.configuration.reading import read_configuration
 from tauledger.configuration.settings import PathSettings
 from tauledger.decide.asked import Asked, parse_asked
-from tauledger.decide.spread import spread
+from tauledger.decide.bench import bench_of
+from tauledger.decide.spread import INSIDE, spread
 from tauledger.decide.varied import variety_of
+from tauledger.decide.worst import each_alone, worst_cases
 from tauledger.problems import ProblemError
 from tauledger.report.decision import spread_page
 from tauledger.report.decision_json import decision_json
@@ -136,6 +138,32 @@ def test_worst_cases_enclose_every_board_and_shares_add_up() -> None:
         # Independent draws: their shares make the whole but for curvature and chance.
         assert 0.9 < sum(c.share for c in found.contributions) < 1.1
     assert sum(row.share for row in result.leaders if row.end == "low") == pytest.approx(1.0)
+
+
+def test_worst_case_of_a_bridge_is_found_by_combination() -> None:
+    """Nearly balanced, every resistor alone moves the gain more one way than the other; all at
+    those ends together they unbalance it the wrong way, and only pairs of ends bring it down."""
+    text = """bridge
+VS in 0 AC 1
+R1 in a 10k
+R2 a 0 10.5k
+R3 in b 10k
+R4 b 0 10k
+C1 a b 1p
+.end
+"""
+    analysis = run(text, "a,b")
+    bench = bench_of(analysis)
+    variety = variety_of(analysis.circuit, "VS", None, asked("R*=10%"))
+    (lowest, _), _ = worst_cases(bench, variety, each_alone(bench, variety), "gain")
+    assert lowest < bench.gain
+    result = spread(analysis, None, asked("R*=10%"), 1000)
+    gain = figure(result, "gain")
+    # Balance itself lies between the ends, where only boards find it.
+    assert gain.worst_low.value < 0.1 * lowest
+    assert gain.worst_low.ends == (INSIDE,)
+    # All one way: 11.55/(9 + 11.55) − 9/(11 + 9).
+    assert gain.worst_high.value == pytest.approx(11.55 / 20.55 - 0.45, rel=1e-6)
 
 
 def test_the_dominating_capacitor_is_named() -> None:

@@ -141,6 +141,8 @@ temperature_curve = [
     assert row(result, "C2").effective_f == pytest.approx(0.5e-6)
     assert result.low_hz == pytest.approx(1 / (2 * math.pi * 10e3 * 1e-6), rel=1e-4)
     assert result.low_effective_hz == pytest.approx(2 * result.low_hz, rel=1e-4)
+    turned = stress(run(netlist.replace("C2 in out", "C2 out in")), settings_of(tmp_path, text))
+    assert row(turned, "C2").effective_f == pytest.approx(0.5e-6)
     far = stress(run(netlist.replace("dc 40", "dc 60")), settings_of(tmp_path, text))
     assert codes(far)["dielectric-beyond"] == {"C2"}
 

@@ -241,6 +241,21 @@ def test_another_output_is_said_and_nothing_is_attributed() -> None:
     assert "signal path" in comparison.notes[0]
 
 
+def test_circuits_that_have_little_in_common_are_not_attributed() -> None:
+    comparison = _compared(COMMON_EMITTER, (SAMPLES / "cascode-if/cascode-if.cir").read_text())
+    assert comparison.electrical
+    assert comparison.attributions == ()
+    assert "too different (7 of 18 parts keep their place)" in comparison.notes[0]
+
+
+def test_a_move_that_the_edits_one_by_one_do_not_explain_is_not_attributed() -> None:
+    """The nets of a bipolar and of a MOS stage are alike; each edit alone breaks the bias."""
+    comparison = _compared(COMMON_EMITTER, (SAMPLES / "mosfet-stage/mosfet-stage.cir").read_text())
+    assert "nothing is attributed of low corner" in comparison.notes[0]
+    for kept in comparison.attributions:
+        assert abs(kept.remainder) <= abs(kept.new - kept.old)
+
+
 def test_temperature_is_an_edit() -> None:
     new = COMMON_EMITTER.replace(".ac dec", ".temp 60\n.ac dec")
     comparison = _compared(COMMON_EMITTER, new)

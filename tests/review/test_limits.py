@@ -77,11 +77,13 @@ def test_a_missed_limit_names_figure_limit_distance_and_part(
     above = low.exact_hz - 50.0
     assert problem.message == (
         f"low corner {low.exact_hz:.1f} Hz is above the 50 Hz allowed, by {above:.1f} Hz "
-        f"({above * 2:.2g} %); set by CE"
+        f"({above * 2:.1f} %); set by CE"
     )
     assert problem.span is not None
     assert problem.span.text[problem.span.column - 1 :].startswith('"50 Hz"')
     assert "CE" in problem.advice
+    (row,) = _rows(tmp_path, review, 'low_corner.max = "30 Hz"')
+    assert f" ({100.0 * (low.exact_hz / 30.0 - 1.0):.0f} %)" in findings([row])[0].message
 
 
 @pytest.mark.parametrize(

@@ -382,8 +382,8 @@ Q2 out c1 e2 P
     )
 
 
-def test_series_resistors_between_stages_belong_to_the_next_stage() -> None:
-    """Gains between the stated nodes multiply to the whole: no divider is lost between them."""
+def test_series_resistors_between_stages_belong_to_neither() -> None:
+    """A stage begins at the base; only what stands behind the last device counts with it."""
     check(
         """
 VCC vcc 0 12
@@ -402,7 +402,7 @@ RL out 0 10k
 """,
         {"Q1": "common emitter", "Q2": "emitter follower"},
         {"C1": "input coupling", "C2": "interstage coupling"},
-        [("Q1", "common emitter", "b1", "c1"), ("Q2", "emitter follower", "x", "out")],
+        [("Q1", "common emitter", "b1", "c1"), ("Q2", "emitter follower", "b2", "out")],
     )
 
 

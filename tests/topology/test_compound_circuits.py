@@ -756,7 +756,7 @@ RL out 0 100
 """,
         dict.fromkeys(("Q1", "Q2", "Q3", "Q4"), "push-pull output"),
         {},
-        [("Q1 Q3", "push-pull output", "b", "m"), ("Q2 Q4", "push-pull output", "m", "out")],
+        [("Q1 Q3", "push-pull output", "u", "m"), ("Q2 Q4", "push-pull output", "m", "out")],
     )
 
 

@@ -303,5 +303,5 @@ RL out 0 47k
 """,
         {"J1": "series channel", "Q1": "common emitter"},
         {"C1": "input coupling", "CE": "emitter bypass", "C2": "output coupling"},
-        [("Q1", "common emitter", "src", "c")],
+        [("Q1", "common emitter", "b", "c")],
     )

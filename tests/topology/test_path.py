@@ -190,3 +190,35 @@ def test_parts_beside_a_collector_are_no_load() -> None:
     """A small capacitor from base to collector does not make the collector resistor a load."""
     netlist = "VIN in 0 AC 1\nRS in b 1k\nCM b out 2p\nG1 out 0 b 0 40m\nRC out 0 4.7k\n"
     assert choose_path(circuit_of(netlist), None, "out").load == ()
+
+
+@pytest.mark.parametrize(
+    ("hint", "reason"), [("vcc", "a voltage source holds it"), ("in", "the signal enters there")]
+)
+def test_a_hint_that_cannot_be_the_output_is_said_to_be_passed_over(hint: str, reason: str) -> None:
+    path = choose_path(circuit_of(LOADED + f".print ac v({hint})\n"), None, None)
+    assert path.output_node == "far"
+    (note,) = path.notes
+    assert f"v({hint})" in note
+    assert reason in note
+    assert "far" in note
+
+
+def test_hints_beside_a_good_one_and_an_asked_output_need_no_note() -> None:
+    assert choose_path(circuit_of(LOADED + ".print ac v(in) v(c)\n"), None, None).notes == ()
+    assert choose_path(circuit_of(LOADED + ".print ac v(vcc)\n"), None, "c").notes == ()
+
+
+def test_a_useless_hint_is_named_where_no_output_is_left() -> None:
+    problem = problem_of(STAGE + ".print ac v(vcc)\n")
+    assert problem.code == "output-ambiguous"
+    assert "v(vcc)" in problem.message
+    assert problem.span is not None
+
+
+def test_the_only_source_with_a_time_function_is_proposed_as_input() -> None:
+    problem = problem_of(LOADED.replace("AC 1", "SIN(0 5m 2k)"))
+    assert problem.code == "input-missing"
+    assert "--input VIN" in problem.advice
+    assert problem.span is not None
+    assert problem.span.text.startswith("VIN")

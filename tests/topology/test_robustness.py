@@ -256,8 +256,9 @@ RG fb 0 1k
 
 @pytest.mark.parametrize("name", AMPLIFIERS)
 def test_stage_gains_multiply_to_the_whole(name: str) -> None:
-    """Product of v(output)/v(input) over the stages against v(out)/v(input node), at midband.
+    """Stage gains and the passive divisions round them multiply to the whole, at midband.
 
+    Passive parts to ground divide: where a stage's nodes were wrong, gain would be left between.
     The frequency lies where the coupling capacitors above are shorts (4 ppm of 1 kΩ and less).
     """
     circuit = circuit_of(AMPLIFIERS[name])
@@ -274,9 +275,12 @@ def test_stage_gains_multiply_to_the_whole(name: str) -> None:
     def voltage(node: str) -> complex:
         return complex(x[network.index(node)])
 
-    product = 1.0 + 0j
+    product, here = 1.0 + 0j, voltage(path.input_node)
     for stage in found.stages:
-        product *= voltage(stage.output_node) / voltage(stage.input_node)
+        division = voltage(stage.input_node) / here
+        assert 0.3 < abs(division) < 1.002
+        here = voltage(stage.output_node)
+        product *= division * here / voltage(stage.input_node)
     whole = voltage(path.output_node) / voltage(path.input_node)
     assert abs(product / whole - 1.0) < 2e-3
     assert len(found.stages) >= 2

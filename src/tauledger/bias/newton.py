@@ -1,8 +1,9 @@
 """Newton's method on the nodal equations, batched over boards.
 
 Each iteration linearises every device at limited branch voltages ``u`` and solves
-``(G + J) x = s − (i(u) − J u)``. A board is finished when neither its unknowns nor its branch
-voltages move any more; it is then frozen, so that slower boards cannot disturb it.
+``(G + J) x = s − (i(u) − J u)``. A board is finished when a step taken from unlimited branch
+voltages moves neither them nor its unknowns; it is then frozen, so that slower boards cannot
+disturb it.
 """
 
 from __future__ import annotations
@@ -98,6 +99,9 @@ def solve_newton(
     converged = np.zeros(equations.boards, dtype=bool)
     rows = np.arange(equations.boards)  # which board each row of the work is
     going = np.ones(equations.boards, dtype=bool)
+    # A step is final only when it was taken from where the unknowns stood, not from voltages
+    # that a device had limited: those may leave the unknowns alone and still be far away.
+    trusted = np.zeros(equations.boards, dtype=bool)
     work, old, old_voltages = equations, unknowns.copy(), [array.copy() for array in voltages]
     for _ in range(maximum_iterations):
         new, new_voltages, settled = _iterate(work, old, old_voltages, helps)
@@ -107,7 +111,8 @@ def solve_newton(
         unknowns[kept] = fresh
         for array, limited in zip(voltages, new_voltages, strict=True):
             array[kept] = limited if kept is rows else limited[going]
-        done = settled & _still(new, old, len(equations.nodes)) & going
+        done = settled & trusted & _still(new, old, len(equations.nodes)) & going
+        trusted = settled
         converged[rows[done]] = True
         going = going & ~done & np.isfinite(new).all(axis=1)
         left = int(np.count_nonzero(going))
@@ -120,7 +125,7 @@ def solve_newton(
         if left < COMPACT_BELOW * rows.size:
             old, old_voltages = old[going], [array[going] for array in new_voltages]
             work, helps = take_boards(work, np.flatnonzero(going)), _take_helps(helps, going)
-            rows, going = rows[going], np.ones(left, dtype=bool)
+            rows, trusted, going = rows[going], trusted[going], np.ones(left, dtype=bool)
     return State(unknowns, tuple(voltages), converged, movement)
 
 

@@ -8,9 +8,10 @@ from dataclasses import dataclass, field
 
 from tauledger.circuit.expansion import Expansion
 from tauledger.circuit.operands import operands
+from tauledger.circuit.plausible import check_temperature
 from tauledger.circuit.scope import Scope
 from tauledger.netlist.codes import fault, problem
-from tauledger.netlist.statements import Statement, Word
+from tauledger.netlist.statements import Call, Item, Statement, Word
 from tauledger.problems import Problem, ProblemError
 
 OUTPUTS = frozenset(
@@ -63,16 +64,22 @@ def read_settings(run: Expansion, scope: Scope, statement: Statement, found: Dir
     """``.temp`` and ``.options``: needed before any element is built."""
     if statement.keyword == ".temp":
         if statement.items:
-            run.temperature_c = run.number(statement.items[0], scope, statement)
+            run.temperature_c = _temperature(run, scope, statement, statement.items[0])
         return
     named = operands(statement).named
     for name, item in named.items():
         if name == "temp":
-            run.temperature_c = run.number(item.value, scope, statement)
+            run.temperature_c = _temperature(run, scope, statement, item.value)
         elif name == "tnom":
-            run.nominal_temperature_c = run.number(item.value, scope, statement)
+            run.nominal_temperature_c = _temperature(run, scope, statement, item.value)
         elif name == "gmin":
             found.gmin = run.number(item.value, scope, statement)
+
+
+def _temperature(run: Expansion, scope: Scope, statement: Statement, item: Item | Call) -> float:
+    value = run.number(item, scope, statement)
+    check_temperature(run, statement, item, value)
+    return value
 
 
 def read_directive(run: Expansion, scope: Scope, statement: Statement, found: Directives) -> None:

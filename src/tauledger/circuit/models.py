@@ -8,6 +8,7 @@ from dataclasses import replace
 from tauledger.circuit.elements import Model
 from tauledger.circuit.expansion import Expansion
 from tauledger.circuit.model_parameters import canonical, is_known, is_rating, known_names
+from tauledger.circuit.plausible import check_model
 from tauledger.circuit.scope import ModelCard, Scope
 from tauledger.netlist.codes import fault
 from tauledger.netlist.statements import Assignment, Group, Item, Statement, Word
@@ -82,7 +83,9 @@ def _read(run: Expansion, card: ModelCard, depth: int) -> Model:
         for item in _flat(items)
         if isinstance(item, Assignment) and item.name.text.lower().split("/")[0] not in _TOLERANCES
     }
-    parameters = {**inherited, **_numbers(run, card, kind, given)}
+    numbers = _numbers(run, card, kind, given)
+    check_model(run, statement, kind, given, numbers)
+    parameters = {**inherited, **numbers}
     _report_unknown(run, statement, kind, parameters.get("level", 1.0), given)
     name = statement.items[0]
     assert isinstance(name, Word)

@@ -191,7 +191,9 @@ def free_names(expression: Expression, scope: Scope) -> Iterator[str]:
 def _evaluate(run: Expansion, scope: Scope, definition: Definition, quiet: bool) -> None:
     try:
         item = definition.item
-        if isinstance(item, Word) and _PLAIN_NUMBER.fullmatch(definition.text):
+        # A bare number may be written as no expression may, such as 1,5 or R47.
+        bare = isinstance(item, Word) and item.text == definition.text
+        if bare and _PLAIN_NUMBER.fullmatch(definition.text):
             value = run.number(item, scope, definition.statement)
         else:
             value = run.arithmetic(definition.text, item, scope, definition.statement)

@@ -14,10 +14,12 @@ from tauledger.circuit.elements import Capacitor, Coupling, Inductor, Model, Res
 from tauledger.circuit.expansion import Expansion, ignored
 from tauledger.circuit.models import find_model
 from tauledger.circuit.operands import is_word, node_words, operands
+from tauledger.circuit.plausible import check_temperature
 from tauledger.circuit.scope import Scope
 from tauledger.netlist.codes import fault
 from tauledger.netlist.statements import Item, Statement, Word
 from tauledger.problems import ProblemError
+from tauledger.quantity import format_quantity
 
 _KINDS = {"r": ("r", "res"), "c": ("c", "cap"), "l": ("l", "ind")}
 _VALUE_NAMES = {
@@ -49,6 +51,13 @@ def resistor(run: Expansion, scope: Scope, statement: Statement) -> None:
             "Join its two nodes, or give it a value.",
         )
         value = _OHMS_FOR_ZERO
+    elif value < 0.0:
+        run.warn(
+            "value-out-of-range",
+            f"{statement.name.text}: a negative resistance, {format_quantity(value, 'Ω')}",
+            statement.span(),
+            "The analysis goes on with it; take the minus sign away unless it is meant.",
+        )
     name = scope.prefix + statement.name.text
     run.add(Resistor(name, run.nodes(nodes, scope), statement.span(), value))
 
@@ -57,6 +66,7 @@ def capacitor(run: Expansion, scope: Scope, statement: Statement) -> None:
     nodes = node_words(statement, 2, "Cname node node value")
     reading = _Reading(run, scope, statement)
     value, initial = reading.value(), reading.named("ic")
+    _check_storage(run, statement, value, "capacitance", "F", "nothing at any frequency")
     model = "" if reading.model is None else reading.model.name
     name = scope.prefix + statement.name.text
     run.add(Capacitor(name, run.nodes(nodes, scope), statement.span(), value, initial, model))
@@ -65,8 +75,30 @@ def capacitor(run: Expansion, scope: Scope, statement: Statement) -> None:
 def inductor(run: Expansion, scope: Scope, statement: Statement) -> None:
     nodes = node_words(statement, 2, "Lname node node value")
     value = _Reading(run, scope, statement).value()
+    _check_storage(run, statement, value, "inductance", "H", "a short circuit at any frequency")
     name = scope.prefix + statement.name.text
     run.add(Inductor(name, run.nodes(nodes, scope), statement.span(), value))
+
+
+def _check_storage(
+    run: Expansion, statement: Statement, value: float, what: str, unit: str, zero: str
+) -> None:
+    """A negative one has no time constant; one of zero is a slip more often than meant."""
+    name = statement.name.text
+    if value < 0.0:
+        raise fault(
+            "value-unusable",
+            f"{name}: a negative {what}, {format_quantity(value, unit)}, has no time constant",
+            statement.span(),
+            "Give it a value above zero.",
+        )
+    if value == 0.0:
+        run.warn(
+            "value-out-of-range",
+            f"{name}: a {what} of 0 {unit} is {zero}",
+            statement.span(),
+            "Give it a value, or take the part out.",
+        )
 
 
 def coupling(run: Expansion, scope: Scope, statement: Statement) -> None:
@@ -189,7 +221,9 @@ class _Reading:
         exponential = self.named("tce")
         exponential = parameters.get("tce") if exponential is None else exponential
         temperature = self.named("temp")
-        if temperature is None:
+        if temperature is not None:
+            check_temperature(self.run, self.statement, self.assigned["temp"].value, temperature)
+        else:
             temperature = self.run.temperature_c + (self.named("dtemp") or 0.0)
         difference = temperature - parameters.get("tnom", self.run.nominal_temperature_c)
         if exponential is not None:

@@ -16,6 +16,7 @@ from tauledger.circuit.expansion import Expansion, ignored
 from tauledger.circuit.model_parameters import INITIAL_CONDITIONS, INSTANCE_PARAMETERS
 from tauledger.circuit.models import need_model
 from tauledger.circuit.operands import operands
+from tauledger.circuit.plausible import check_temperature
 from tauledger.circuit.scope import Scope
 from tauledger.netlist.codes import fault
 from tauledger.netlist.statements import Assignment, Formula, Item, Statement, Word
@@ -158,6 +159,8 @@ def _instance_parameters(
     for name, assignment in named.items():
         if name in INSTANCE_PARAMETERS[letter]:
             parameters[name] = run.number(assignment.value, scope, statement)
+            if name == "temp":
+                check_temperature(run, statement, assignment.value, parameters[name])
         elif name not in INITIAL_CONDITIONS:
             ignored(run, statement, assignment)
     return parameters

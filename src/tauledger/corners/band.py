@@ -16,7 +16,7 @@ HALF_POWER = 1.0 / math.sqrt(2.0)
 HALF_POWER_DB = 20.0 * math.log10(math.sqrt(2.0))
 POINTS_PER_DECADE = 12
 SHORTEST_PASSBAND_DECADES = 1.0
-DEEPEST_PASSBAND_DB = 12.0
+DEEPEST_PASSBAND_DB = 30.0
 """A flat stretch further below the maximum is the skirt of a resonance, not a passband."""
 LOWEST_HZ, HIGHEST_HZ = 1e-7, 1e14
 
@@ -66,25 +66,25 @@ def _resonances(natural_frequencies: ComplexArray) -> FloatArray:
     return np.asarray(frequency[(frequency > LOWEST_HZ) & (frequency < HIGHEST_HZ)])
 
 
-def find_passband(sweep: Sweep) -> Passband:
+def find_passband(sweep: Sweep, *, cut: bool = False) -> Passband:
     """The highest stretch of the response that stays within ±3 dB for a decade or more.
 
     The highest, not the widest: below its bypass capacitor's zero a stage is flat too, down to
     DC, but that is not where it is used. A resonance is higher still, but narrow.
     Without such a stretch the passband is what lies within 3 dB of the maximum, its middle the
-    maximum itself.
+    maximum itself. ``cut`` says that the response goes on beyond the last point of the sweep.
     """
     level, decades = sweep.level_db, np.log10(sweep.frequency_hz)
     last = level.size - 1
     begins, ends = _extents(level)
     # A stretch that runs off the grid goes on beyond it.
-    length = decades[ends] - decades[begins] + (begins == 0) + (ends == last)
+    length = decades[ends] - decades[begins] + (begins == 0) + (ends == last) * (not cut)
     flat = (length >= SHORTEST_PASSBAND_DECADES) & (level > level.max() - DEEPEST_PASSBAND_DB)
     candidates = np.flatnonzero(flat) if flat.any() else np.arange(level.size)
     best = int(candidates[np.argmax(level[candidates])])
     begin, end = int(begins[best]), int(ends[best])
     return Passband(
-        midband_hz=_middle(sweep.frequency_hz, begin, end, last)
+        midband_hz=_middle(sweep.frequency_hz, begin, end, last + cut)
         if flat.any()
         else float(sweep.frequency_hz[best]),
         flat=bool(flat.any()),

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Sequence
+from collections.abc import Collection, Sequence
 from dataclasses import dataclass
 
 import numpy as np
@@ -37,14 +37,19 @@ def divide_ends(
     held: HeldPairs,
     *,
     shaped: bool,
+    movers: tuple[Collection[str], Collection[str]],
 ) -> Ends:
     """Leave out what has no effect, and set in-band parts aside.
+
+    ``movers`` are the parts that move the exact low and high corner: they count whatever they do
+    to the midband gain (inside a feedback loop it hardly changes).
 
     An in-band part is in its low-frequency state at the low corner and in its high-frequency
     state at the high one, so each end is solved again with it there.
     """
-    low, idle_low = _effective_low(response, sides.midband.low, sides.high, held)
-    high, idle_high = _effective_high(sides.midband.high)
+    at_low, at_high = movers
+    low, idle_low = _effective_low(response, sides.midband.low, sides.high, held, at_low)
+    high, idle_high = _effective_high(sides.midband.high, at_high)
     middle_low, middle_high = (_in_band(model, edges, any_step=shaped) for model in (low, high))
     in_band = [(low, i) for i in middle_low] + [(high, i) for i in middle_high]
     if in_band:
@@ -53,7 +58,7 @@ def divide_ends(
         shorted = [high.parts[i] for i in middle_high]
         new_low = midband_network(response, low_rest, sides.high).low
         high = midband_network(response, [*low.parts, *shorted], high_rest).high
-        low, more_idle = _effective_low(response, new_low, sides.high, held)
+        low, more_idle = _effective_low(response, new_low, sides.high, held, at_low)
         idle_low += more_idle
     return Ends(low, high, tuple(in_band), (*idle_low, *idle_high))
 
@@ -73,7 +78,11 @@ def _in_band(model: EndModel, edges: tuple[float | None, ...], *, any_step: bool
 
 
 def _effective_low(
-    response: Response, model: EndModel, high: Sequence[ReactivePart], held: HeldPairs
+    response: Response,
+    model: EndModel,
+    high: Sequence[ReactivePart],
+    held: HeldPairs,
+    movers: Collection[str],
 ) -> tuple[EndModel, list[tuple[EndModel, int]]]:
     """Take low-end parts without effect out, one at a time, least effect first.
 
@@ -82,7 +91,7 @@ def _effective_low(
     that becomes a short takes along the capacitors it ties (a supply filter goes as a whole).
     """
     idle: list[tuple[EndModel, int]] = []
-    needed: set[str] = set()
+    needed = set(movers)
     while True:
         effect = switching_effect(model)
         negligible = [
@@ -113,11 +122,15 @@ def _without(
         return None
 
 
-def _effective_high(model: EndModel) -> tuple[EndModel, list[tuple[EndModel, int]]]:
+def _effective_high(
+    model: EndModel, movers: Collection[str]
+) -> tuple[EndModel, list[tuple[EndModel, int]]]:
     effect = switching_effect(model)
-    kept = [i for i in range(len(model.parts)) if effect[i] >= LEAST_EFFECT]
-    idle = [(model, i) for i in range(len(model.parts)) if effect[i] < LEAST_EFFECT]
-    return model.keep(kept), idle
+    counts = [
+        effect[i] >= LEAST_EFFECT or part.name in movers for i, part in enumerate(model.parts)
+    ]
+    idle = [(model, i) for i, counted in enumerate(counts) if not counted]
+    return model.keep([i for i, counted in enumerate(counts) if counted]), idle
 
 
 def switching_effect(model: EndModel) -> FloatArray:

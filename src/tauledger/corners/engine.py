@@ -9,7 +9,14 @@ from dataclasses import dataclass
 import numpy as np
 
 from tauledger.corners.accounts import idle_account, part_accounts, summands, total
-from tauledger.corners.band import Passband, Sweep, find_edge, find_passband, sweep_response
+from tauledger.corners.band import (
+    HIGHEST_HZ,
+    Passband,
+    Sweep,
+    find_edge,
+    find_passband,
+    sweep_response,
+)
 from tauledger.corners.effects import IN_BAND_FACTOR, divide_ends
 from tauledger.corners.estimates import Bounds, Estimate, Roots, best_estimate, rigorous_bounds
 from tauledger.corners.model import Corner, Corners, PartAccount
@@ -17,10 +24,13 @@ from tauledger.corners.ports import EndModel
 from tauledger.corners.reasons import (
     corner_notes,
     inspection_notes,
+    narrow_notes,
     no_edge_note,
     passband_notes,
     peak_notes,
+    stability_notes,
     timing_notes,
+    unreached_notes,
     what_if,
 )
 from tauledger.corners.sides import (
@@ -33,6 +43,7 @@ from tauledger.corners.sides import (
     ratio_at_midband,
     split_sides,
 )
+from tauledger.problems import Problem, ProblemError, Severity
 from tauledger.smallsignal.network import ReactivePart
 from tauledger.smallsignal.response import (
     ComplexArray,
@@ -46,6 +57,8 @@ TIE_MARGIN = 0.2
 """Parts that move a corner by amounts closer than this cannot be told apart within usual part
 tolerance (±10 to ±20 %; common practice, no source)."""
 LEAST_MOVE = 0.01
+LARGEST_NETWORK = 350
+"""Unknowns; the time for their eigenvalues grows with the cube of the number."""
 TRANSISTOR_CAPACITANCES = {"Cπ", "Cμ", "Cμx", "Cgs", "Cgd", "Cds"}
 SHORTEST_SWEEP = 12
 """Points of the sweep that must be left to look for a passband in."""
@@ -76,23 +89,27 @@ def find_corners(
         Where to judge the gain, when the path is not meant to be flat; the corners then are
         where the gain has fallen by 3 dB from there, and what shapes the response between them
         is in-band.
+
+    Raises
+    ------
+    ProblemError
+        When the network is too large to work out its poles.
     """
     path = _survey(response, parts, midband_hz)
     if not path.passband.flat or path.exact_gain == 0.0:
-        return _without_estimate(path, passband_notes(path.passband, path.exact_gain))
+        return _without_estimate(path, *passband_notes(path.passband, path.exact_gain))
     free, across_source = part_out_held(parts, fixed_voltage_pairs)
     groups = merge_parallel(free, supply_pairs)
     sides = _sides(path, [as_one(group) for group in groups], fixed_voltage_pairs)
     if sides is None:
-        return _without_estimate(
-            path,
-            (
-                "with the large capacitors short and the small ones open no unique signal "
-                "reaches the output; only exact figures are given",
-            ),
-        )
+        return _without_estimate(path, *unreached_notes(response, parts))
     ends = divide_ends(
-        response, sides, path.edges, fixed_voltage_pairs, shaped=midband_hz is not None
+        response,
+        sides,
+        path.edges,
+        fixed_voltage_pairs,
+        shaped=midband_hz is not None,
+        movers=(_heads(groups, path.movers[0]), _heads(groups, path.movers[1])),
     )
     accounts = part_accounts(path.passband.midband_hz, ends, sides.looped, groups)
     accounts += [idle_account(part, "straight across a source: no pole") for part in across_source]
@@ -107,8 +124,21 @@ def find_corners(
         accounts=_in_order(accounts, parts),
         low=low,
         high=high,
-        notes=inspection_notes(response, parts, path.passband.midband_hz, sides.midband.gain),
+        notes=(
+            *stability_notes(path.unstable_hz),
+            *inspection_notes(response, parts, path.passband.midband_hz, sides.midband.gain),
+            *narrow_notes(path.edges, given=midband_hz is not None),
+        ),
+        unstable_hz=path.unstable_hz,
     )
+
+
+def _heads(
+    groups: Sequence[tuple[ReactivePart, ...]], movers: Sequence[tuple[str, float]]
+) -> set[str]:
+    """Names of the groups of parallel parts of which one moves a corner."""
+    moving = {name for name, _ in movers}
+    return {group[0].name for group in groups if any(part.name in moving for part in group)}
 
 
 @dataclass(frozen=True, slots=True)
@@ -122,10 +152,16 @@ class _Path:
     passband: Passband
     edges: tuple[float | None, float | None]
     exact_gain: float
+    movers: tuple[tuple[tuple[str, float], ...], tuple[tuple[str, float], ...]]
+    """d ln(corner) / d ln(value) of every part that moves the low and the high corner."""
+    unstable_hz: float | None
+    """Magnitude of the fastest growing natural frequency, when one grows."""
 
 
 def _survey(response: Response, parts: Sequence[ReactivePart], midband_hz: float | None) -> _Path:
     short = condensed(response)
+    if short.drive.size > LARGEST_NETWORK:
+        raise ProblemError(_too_large(short.drive.size))
     natural = natural_frequencies(short.conductance, short.reactance)
     sweep = sweep_response(short, natural)
     passband = (
@@ -138,7 +174,43 @@ def _survey(response: Response, parts: Sequence[ReactivePart], midband_hz: float
         find_edge(short, sweep, passband.midband_hz, upward=up) if exact_gain > 0 else None
         for up in (False, True)
     )
-    return _Path(response, tuple(parts), natural, sweep, passband, (low, high), exact_gain)
+    movers = tuple(_movers(response, parts, edge, passband.midband_hz) for edge in (low, high))
+    return _Path(
+        response,
+        tuple(parts),
+        natural,
+        sweep,
+        passband,
+        (low, high),
+        exact_gain,
+        (movers[0], movers[1]),
+        _unstable_hz(short, natural),
+    )
+
+
+def _too_large(size: int) -> Problem:
+    return Problem(
+        "circuit-too-large",
+        Severity.ERROR,
+        f"the signal network has {size} unknowns, more than the {LARGEST_NETWORK} whose poles "
+        "are worked out",
+        None,
+        "Give the netlist of the amplifier alone, without the rest of the board.",
+    )
+
+
+def _unstable_hz(response: Response, natural: ComplexArray) -> float | None:
+    """The growing natural frequency, found again from nearby: very fast ones may be rounding."""
+    growing = natural[
+        (natural.real > 1e-6 * np.abs(natural) + 1e-6) & (np.abs(natural) < TWO_PI * HIGHEST_HZ)
+    ]
+    for root in growing[np.argsort(np.abs(growing))]:
+        # Not at the root itself, where the shifted matrix would be singular.
+        nearby = 1.37 * float(abs(root))
+        again = natural_frequencies(response.conductance, response.reactance, nearby)
+        if np.abs(again / root - 1.0).min(initial=np.inf) < 1e-3:
+            return float(abs(root)) / TWO_PI
+    return None
 
 
 def _transistor_passband(
@@ -161,7 +233,7 @@ def _transistor_passband(
         if below.sum() < SHORTEST_SWEEP:
             break
         sweep = Sweep(sweep.frequency_hz[below], sweep.transfer[below])
-        passband = find_passband(sweep)
+        passband = find_passband(sweep, cut=True)
     return passband
 
 
@@ -182,10 +254,10 @@ def _corner(path: _Path, model: EndModel, in_band: Sequence[str]) -> Corner:
         estimate_hz = (whole if model.low else 1.0 / whole) / TWO_PI
     better: Estimate | None = None
     bounds = Bounds(None, None)
-    if estimate_hz is not None and not in_band:
+    if estimate_hz is not None and not in_band and path.unstable_hz is None:
         better = best_estimate(model, roots, estimate_hz)
         bounds = rigorous_bounds(model, roots, estimate_hz)
-    movers = _movers(path, exact_hz)
+    movers = path.movers[0 if model.low else 1]
     set_by = _set_by(movers)
     notes = [no_edge_note(model)] if exact_hz is None else []
     notes += peak_notes(path.sweep, path.passband.midband_hz, upward=not model.low)
@@ -207,26 +279,30 @@ def _corner(path: _Path, model: EndModel, in_band: Sequence[str]) -> Corner:
         highest_hz=bounds.highest_hz,
         movers=movers,
         changes=what_if(model, exact_hz, [name for name, _ in movers[:2]]),
-        timing=timing_notes(model, roots, exact_hz, path.natural),
+        timing=timing_notes(model, roots, exact_hz, path.natural)
+        if path.unstable_hz is None
+        else (),
     )
 
 
-def _movers(path: _Path, exact_hz: float | None) -> tuple[tuple[str, float], ...]:
+def _movers(
+    response: Response, parts: Sequence[ReactivePart], edge_hz: float | None, midband_hz: float
+) -> tuple[tuple[str, float], ...]:
     """d ln(corner) / d ln(value) of every part that moves the corner, strongest first."""
-    if exact_hz is None:
+    if edge_hz is None:
         return ()
-    moves = edge_sensitivity(path.response, path.parts, exact_hz, path.passband.midband_hz)
+    moves = edge_sensitivity(response, parts, edge_hz, midband_hz)
     order = np.argsort(-np.abs(moves))
-    return tuple(
-        (path.parts[i].name, float(moves[i])) for i in order if abs(moves[i]) >= LEAST_MOVE
-    )
+    return tuple((parts[i].name, float(moves[i])) for i in order if abs(moves[i]) >= LEAST_MOVE)
 
 
 def _set_by(movers: Sequence[tuple[str, float]]) -> tuple[str, ...]:
-    if not movers:
+    """The parts that hold the corner where it is; one that pulls the other way extends it."""
+    holding = [(name, -move) for name, move in movers if move < 0.0]
+    if not holding:
         return ()
-    least = (1.0 - TIE_MARGIN) * abs(movers[0][1])
-    return tuple(name for name, move in movers if abs(move) >= least)
+    least = (1.0 - TIE_MARGIN) * holding[0][1]
+    return tuple(name for name, move in holding if move >= least)
 
 
 def _leader(model: EndModel) -> str:
@@ -245,16 +321,15 @@ def _in_order(
     return tuple(sorted(accounts, key=lambda account: order[account.part.name]))
 
 
-def _without_estimate(path: _Path, notes: tuple[str, ...]) -> Corners:
+def _without_estimate(path: _Path, reason: str, *notes: str) -> Corners:
     """Exact figures alone, where sums of time constants do not apply."""
     accounts = tuple(
-        PartAccount(part, "in-band", None, None, None, None, None, None, "no flat passband")
+        PartAccount(part, "in-band", None, None, None, None, None, None, reason)
         for part in path.parts
     )
     poles = _in_hz(path.natural)
     corners = []
-    for end, edge in zip(("low", "high"), path.edges, strict=True):
-        movers = _movers(path, edge)
+    for end, edge, movers in zip(("low", "high"), path.edges, path.movers, strict=True):
         corners.append(Corner(end, None, edge, _set_by(movers), poles, (), (), None, movers=movers))
     transfer = complex(path.response.at(np.array([path.passband.midband_hz]))[0])
     return Corners(
@@ -266,5 +341,6 @@ def _without_estimate(path: _Path, notes: tuple[str, ...]) -> Corners:
         accounts=accounts,
         low=corners[0],
         high=corners[1],
-        notes=notes,
+        notes=(*stability_notes(path.unstable_hz), *notes),
+        unstable_hz=path.unstable_hz,
     )

@@ -40,6 +40,10 @@ IDEAL = 0.03
 """So well must it do to leave out the devices' own series resistances."""
 MOST_EXPRESSIONS = 60
 """Capacitors looked at, largest share first."""
+NO_FEEDBACK = 0.005
+"""Return ratios below this are not worth writing down."""
+LONGEST_EXPRESSION = 320
+"""Letters; a longer one explains less than the number alone."""
 MOST_TRIALS = 3
 """Feedback loops tried for one capacitor."""
 
@@ -227,6 +231,8 @@ def _attempt(signal: SignalNetwork, account: PartAccount, exact: float) -> HandE
         "" if off <= 100 * AGREEMENT else f"the rules are {off:.0f} % off: feedback or a bridge"
     )
     text = ", ".join([term.text, *term.where])
+    if len(text) > LONGEST_EXPRESSION:
+        return HandExpression("", None, "too many parts count to write them down")
     return HandExpression(text, deviation, reason)
 
 
@@ -253,7 +259,7 @@ def _with_feedback(
         one_plus_open = 1.0 / (1.0 - loop)
         change = source.transconductance * float(port @ inverse @ output)
         dead = exact + change * float(control @ inverse @ port) * one_plus_open
-        if dead > 0.0:
+        if dead > 0.0 and exact > 0.0:
             candidates.append((abs(math.log(exact / dead)), source.name, dead, one_plus_open))
     for _, name, dead, one_plus_open in sorted(candidates, reverse=True)[:MOST_TRIALS]:
         for ideal in (True, False):
@@ -261,15 +267,18 @@ def _with_feedback(
             if found.deviation is None or abs(found.deviation) > AGREEMENT:
                 continue
             one_plus_short = exact * one_plus_open / dead
+            if max(abs(one_plus_short - 1.0), abs(one_plus_open - 1.0)) < NO_FEEDBACK:
+                return found
             body, *where = found.text.split(", ", 1)
-            factor = f"(1 + {_ratio(one_plus_short - 1)})/(1 + {_ratio(one_plus_open - 1)})"
+            factor = f"{_one_plus(one_plus_short - 1)}/{_one_plus(one_plus_open - 1)}"
             text = ", ".join([f"({body})·{factor}", *where, f"return ratios of {name}"])
             return HandExpression(text, found.deviation)
     return None
 
 
-def _ratio(value: float) -> str:
-    return f"{value:.3g}" if abs(value) >= 0.001 else "0"
+def _one_plus(value: float) -> str:
+    """``(1 + T)``, with the sign of T written as one does."""
+    return f"(1 {'−' if value < 0 else '+'} {abs(value):.3g})" if abs(value) >= 0.001 else "1"
 
 
 def _vector(pair: tuple[int, int], size: int) -> FloatArray:
@@ -320,13 +329,13 @@ def _device(
     place = dict(zip(admittance.terminals, admittance.unknowns, strict=True))
     if isinstance(element, BipolarTransistor):
         control, common, output = "base", "emitter", "collector"
-        gm, r_pi = values["gm"], values["r_pi"]
+        gm, r_pi, body = values["gm"], values["r_pi"], 0.0
     else:
         control, common, output = "gate", "source", "drain"
         gm, r_pi = values["gm"], math.inf
         bulk = place.get("bulk")
-        if bulk is not None and bulk != place["source"]:
-            gm += values.get("gmb", 0.0)
+        apart = bulk is not None and bulk != place["source"]
+        body = max(values.get("gmb", 0.0), 0.0) if apart else 0.0
     return ActiveDevice(
         name=element.name,
         mark=mark,
@@ -336,4 +345,5 @@ def _device(
         transconductance=gm,
         input_resistance_ohm=r_pi,
         output_resistance_ohm=values["r_o"],
+        body_transconductance=body,
     )

@@ -67,14 +67,28 @@ class ActiveDevice:
     output: int
     """Collector or drain."""
     transconductance: float
-    """gm in S; gm + gmb where the bulk stands at AC ground."""
+    """gm in S."""
     input_resistance_ohm: float
     """rπ; infinite for a field-effect transistor."""
     output_resistance_ohm: float
+    body_transconductance: float = 0.0
+    """gmb in S, where the bulk stands at AC ground; it acts with gm on the source, not the gate."""
 
     def s(self, text: str) -> str:
         """A symbol of this device, such as ``rπ`` or ``rπ(Q2)``."""
         return f"{text}{self.mark}"
+
+    @property
+    def source_transconductance(self) -> float:
+        """gm + gmb: what the emitter or source sees."""
+        return self.transconductance + self.body_transconductance
+
+    @property
+    def source_symbol(self) -> str:
+        """``gm``, or ``(gm+gmb)``."""
+        if self.body_transconductance == 0.0:
+            return self.s("gm")
+        return f"({self.s('gm')}+{self.s('gmb')})"
 
     @property
     def r_pi(self) -> Term:
@@ -172,6 +186,9 @@ class SignalNetwork:
         if ends == {control, common} and control != common:
             outer_control = self._side(control, own, {common})
             outer_common = self._side(common, own, {control})
+            if device.body_transconductance > 0.0:
+                bulk = symbol(f"1/{device.s('gmb')}", 1.0 / device.body_transconductance)
+                outer_common = parallel(outer_common, bulk)
             loop = series(outer_control, outer_common)
             gain = device.transconductance * outer_common.value
             if math.isinf(gain):
@@ -201,7 +218,7 @@ class SignalNetwork:
         first = parallel(self._side(control, used, {output}), self._into_control(device, below))
         second = parallel(
             self._side(output, used, {control}),
-            boosted(device.r_o, device.transconductance, device.s("gm"), below),
+            boosted(device.r_o, device.source_transconductance, device.source_symbol, below),
         )
         seen = bridging(first, second, _effective_transconductance(device, below))
         return parallel(*(symbol(r.name, r.resistance_ohm) for r in direct), seen)
@@ -276,7 +293,7 @@ class SignalNetwork:
         if below.value > 0.0 and math.isfinite(device.input_resistance_ohm):
             base = self.see(control, used, seen, depth + 1)
             below = parallel(below, series(device.r_pi, base))
-        return boosted(device.r_o, device.transconductance, device.s("gm"), below)
+        return boosted(device.r_o, device.source_transconductance, device.source_symbol, below)
 
     @staticmethod
     def _into_control(device: ActiveDevice, below: Term) -> Term:
@@ -293,8 +310,8 @@ class SignalNetwork:
             above = GROUND
         if math.isinf(device.input_resistance_ohm):
             if above.value > 0.02 * device.output_resistance_ohm:
-                gm, r_o = device.transconductance, device.output_resistance_ohm
-                text = f"(1 + {device.s('gm')}·{device.s('ro')})"
+                gm, r_o = device.source_transconductance, device.output_resistance_ohm
+                text = f"(1 + {device.source_symbol}·{device.s('ro')})"
                 return divided(series(device.r_o, above), 1.0 + gm * r_o, text)
             return _inverse_gm(device)
         base = self.see(device.control, used, seen, depth + 1)
@@ -311,17 +328,17 @@ class SignalNetwork:
 def _effective_transconductance(device: ActiveDevice, below: Term) -> Term:
     """gm reduced by what stands below the emitter or source; a Term in S."""
     gm, text = device.transconductance, device.s("gm")
-    gain = gm * below.value
+    gain = device.source_transconductance * below.value
     if math.isinf(gain):
         return symbol("0", 0.0)
     if gain < 0.01:
         return symbol(text, gm)
     reduced = gm / (1.0 + gain * (1.0 + 1.0 / (device.beta_plus_one - 1.0)))
-    return Term(reduced, f"{text}/(1 + {text}·{below.within(3)})", binding=1)
+    return Term(reduced, f"{text}/(1 + {device.source_symbol}·{below.within(3)})", binding=1)
 
 
 def _inverse_gm(device: ActiveDevice) -> Term:
-    return symbol(f"1/{device.s('gm')}", 1.0 / device.transconductance)
+    return symbol(f"1/{device.source_symbol}", 1.0 / device.source_transconductance)
 
 
 def merge_nodes(pairs: Sequence[tuple[int, int]]) -> dict[int, int]:

@@ -71,3 +71,5 @@ class Corners:
     low: Corner
     high: Corner
     notes: tuple[str, ...]
+    unstable_hz: float | None = None
+    """Magnitude of a natural frequency that grows, when there is one."""

@@ -84,6 +84,8 @@ class EndModel:
         """
         if self.gain == 0.0 or not self.parts:
             return np.zeros(0, dtype=complex)
+        if (self.values <= 0.0).any():
+            return self._roots(self.matrix + self._coupling())
         scale = np.sqrt(self.values)
         scales = np.outer(scale, scale) if not self.low else 1.0 / np.outer(scale, scale)
         matrix = (self.matrix + self._coupling()) * scales

@@ -24,18 +24,58 @@ SMALLEST_PEAK_DB = 0.3
 NEAR = 5.0
 """A pole or zero within this factor of the corner has a say in it."""
 DROOP_RATIO = 100.0
+NARROW_BAND = 30.0
+"""Ratio of the corners below which a path is likely to be shaped on purpose."""
 
 
-def passband_notes(passband: Passband, exact_gain: float) -> tuple[str, ...]:
-    """Why sums of time constants do not apply; empty when they do."""
+def passband_notes(passband: Passband, exact_gain: float) -> tuple[str, str]:
+    """Why sums of time constants do not apply: in short for each part, and in a sentence."""
     if exact_gain == 0.0:
-        return ("no signal reaches the output",)
-    if not passband.flat:
+        return "no signal", "no signal reaches the output"
+    return (
+        "no flat passband",
+        "no flat passband: the gain stays within ±3 dB for less than a decade, so a sum of time "
+        "constants does not apply and only exact figures are given (for an equaliser, --midband "
+        "says where to judge the gain)",
+    )
+
+
+def unreached_notes(response: Response, parts: Sequence[ReactivePart]) -> tuple[str, str]:
+    """The same where shorts and opens leave no path for the signal."""
+    coils = [part.branch for part in parts if part.is_inductor]
+    mutual = response.reactance[np.ix_(coils, coils)]
+    if np.any(mutual != np.diag(np.diag(mutual))):
         return (
-            "no flat passband: the gain stays within ±3 dB for less than a decade, so a sum of "
-            "time constants does not apply and only exact figures are given",
+            "coupled coils",
+            "coupled coils carry the signal: a sum of time constants does not treat them, and "
+            "only exact figures are given",
         )
-    return ()
+    return (
+        "no path at midband",
+        "with the large capacitors short and the small ones open no unique signal reaches the "
+        "output; only exact figures are given",
+    )
+
+
+def stability_notes(unstable_hz: float | None) -> tuple[str, ...]:
+    """A warning when the linear network grows by itself."""
+    if unstable_hz is None:
+        return ()
+    return (
+        f"unstable as drawn: a natural frequency at {format_quantity(unstable_hz, 'Hz')} grows, "
+        "so gain and corners have no physical meaning",
+    )
+
+
+def narrow_notes(edges: tuple[float | None, float | None], *, given: bool) -> tuple[str, ...]:
+    """A hint for equalisers, whose flat stretch is seldom where they are judged."""
+    low, high = edges
+    if given or low is None or high is None or high / low > NARROW_BAND:
+        return ()
+    return (
+        "the band is narrow; if the path is meant to be shaped (an equaliser), --midband says "
+        "where to judge the gain",
+    )
 
 
 def inspection_notes(
@@ -99,8 +139,9 @@ def corner_notes(
     if not model.parts:
         notes.append("no part of this end accounts for the corner")
     if in_band:
+        verb = "steps" if len(in_band) == 1 else "step"
         notes.append(
-            f"{', '.join(in_band)} step the gain inside the passband, so the gain near this "
+            f"{', '.join(in_band)} {verb} the gain inside the passband, so the gain near this "
             "corner is not the midband gain from which the exact corner counts its 3 dB"
         )
     poles, zeros = roots.poles, roots.zeros

@@ -91,7 +91,8 @@ def _by_configuration(
     if stage.configuration in FOLLOWING:
         return _follower(signal, first)
     if stage.configuration in UPRIGHT:
-        return _load_gain(first, signal.see(leaving), 1.0, "")
+        gm, symbol = first.source_transconductance, first.source_symbol
+        return _load_gain(gm, symbol, signal.see(leaving), 1.0)
     if stage.configuration == "cascode":
         return _transconductance_stage(signal, first, leaving, -1.0)
     if stage.configuration == "differential pair":
@@ -104,32 +105,37 @@ def _transconductance_stage(
 ) -> tuple[str, float]:
     load = signal.see(leaving)
     below = signal.see(device.common, frozenset({device.name}))
-    gain = device.transconductance * below.value
+    gain = device.source_transconductance * below.value
     if gain < 0.01:
-        return _load_gain(device, load, sign, "")
-    text = f"(1 + {device.s('gm')}·{below.within(3)})"
-    return _load_gain(device, load, sign / (1.0 + gain), f"/{text}")
+        return _load_gain(device.transconductance, device.s("gm"), load, sign)
+    text = f"(1 + {device.source_symbol}·{below.within(3)})"
+    factor = sign / (1.0 + gain)
+    return _load_gain(device.transconductance, device.s("gm"), load, factor, f"/{text}")
 
 
-def _load_gain(device: ActiveDevice, load: Term, factor: float, divisor: str) -> tuple[str, float]:
-    value = factor * device.transconductance * load.value
+def _load_gain(
+    gm: float, symbol: str, load: Term, factor: float, divisor: str = ""
+) -> tuple[str, float]:
+    value = factor * gm * load.value
     minus = "−" if factor < 0 else ""
-    gm = format_quantity(device.transconductance, "S")
-    numbers = f"{minus}{gm}·{format_quantity(load.value, 'Ω')}"
+    numbers = f"{minus}{format_quantity(gm, 'S')}·{format_quantity(load.value, 'Ω')}"
     if divisor:
         numbers += f"/{1.0 / abs(factor):.3g}"
-    return f"{minus}{device.s('gm')}·{load.within(3)}{divisor} = {numbers}", value
+    return f"{minus}{symbol}·{load.within(3)}{divisor} = {numbers}", value
 
 
 def _follower(signal: SignalNetwork, device: ActiveDevice) -> tuple[str, float]:
     load = signal.see(device.common, frozenset({device.name}))
     if load is OPEN:
         return "1", 1.0
-    loop = device.transconductance * load.value
+    drive = device.transconductance * load.value
+    loop = device.source_transconductance * load.value
     if math.isfinite(device.input_resistance_ohm):
-        loop *= 1.0 + 1.0 / (device.beta_plus_one - 1.0)
+        drive *= 1.0 + 1.0 / (device.beta_plus_one - 1.0)
+        loop = drive
     text = f"{device.s('gm')}·{load.within(3)}"
-    return f"{text}/(1 + {text}) = {loop:.3g}/{1.0 + loop:.3g}", loop / (1.0 + loop)
+    below = f"{device.source_symbol}·{load.within(3)}"
+    return f"{text}/(1 + {below}) = {drive:.3g}/{1.0 + loop:.3g}", drive / (1.0 + loop)
 
 
 def _pair_gain(

@@ -8,7 +8,7 @@ frequency.
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass, replace
 
 import numpy as np
@@ -18,15 +18,22 @@ from tauledger.analysis import Analysis
 from tauledger.bias import BiasSolution, solve_bias
 from tauledger.bias.equations import Variations
 from tauledger.circuit.elements import Circuit, IndependentSource
-from tauledger.corners.band import HALF_POWER
+from tauledger.corners.band import HALF_POWER, find_passband, sweep_response
 from tauledger.decide.edges import find_edges
 from tauledger.decide.networks import Networks
 from tauledger.problems import Problem, ProblemError, Severity
-from tauledger.smallsignal import drive_vector, linear_network, sense_vector
+from tauledger.smallsignal import drive_vector, linear_network, response, sense_vector
 from tauledger.smallsignal.network import LinearNetwork
+from tauledger.smallsignal.response import natural_frequencies
 
 FloatArray = NDArray[np.float64]
 IntArray = NDArray[np.intp]
+
+
+MOST_TOGETHER = 1000
+"""Few enough for the cache, many enough for the array operations (measured)."""
+MATRIX_BYTES = 64_000_000
+"""Of one matrix of each board measured together."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -42,6 +49,13 @@ class Bench:
     """|H| of the nominal board at ``midband_hz``."""
     low_hz: float | None
     high_hz: float | None
+    size: int
+    """Unknowns of its equations."""
+
+    @property
+    def most_boards(self) -> int:
+        """How many are measured together, so that their matrices fit in memory."""
+        return max(1, min(MOST_TOGETHER, MATRIX_BYTES // (8 * (self.size + 1) ** 2)))
 
 
 @dataclass(frozen=True, slots=True)
@@ -78,7 +92,7 @@ def bench_of(analysis: Analysis) -> Bench:
     Raises ProblemError when the response has no flat passband, so that its edges mean nothing.
     """
     corners, path = analysis.corners, analysis.topology.path
-    if not corners.flat or corners.exact_gain == 0.0:
+    if corners.exact_gain == 0.0 or not (corners.flat or _has_passband(analysis)):
         raise ProblemError(
             Problem(
                 "passband-missing",
@@ -98,7 +112,24 @@ def bench_of(analysis: Analysis) -> Bench:
         corners.exact_gain,
         corners.low.exact_hz,
         corners.high.exact_hz,
+        analysis.solution.equations.size,
     )
+
+
+def _has_passband(analysis: Analysis) -> bool:
+    """Whether there is a flat stretch, though sums of time constants do not apply to it."""
+    path, network = analysis.topology.path, analysis.network
+    source = _source(analysis.circuit, path.source)
+    sense = sense_vector(network, path.output_node, path.output_reference)
+    whole = response(network, drive_vector(network, source), sense)
+    natural = natural_frequencies(whole.conductance, whole.reactance)
+    return find_passband(sweep_response(whole, natural)).flat
+
+
+def _source(circuit: Circuit, name: str) -> IndependentSource:
+    source = next(e for e in circuit.elements if e.name == name)
+    assert isinstance(source, IndependentSource)
+    return source
 
 
 def measure(
@@ -107,8 +138,44 @@ def measure(
     temperature_c: float | FloatArray | None = None,
     leaders: bool = False,
 ) -> Figures:
-    """Figures of every board; ``leaders`` also finds which part sets each corner."""
-    return measure_solution(bench, solve(bench, variations, temperature_c), leaders)
+    """Figures of every board; ``leaders`` also finds which part sets each corner.
+
+    Boards are measured a few at a time, always the same ones together.
+    """
+    varied = dict(variations or {})
+    warmth = None if temperature_c is None else np.atleast_1d(np.asarray(temperature_c, float))
+    boards = max([1 if warmth is None else warmth.size, *(v.size for v in varied.values())])
+    found = []
+    for start in range(0, boards, bench.most_boards):
+        some = slice(start, start + bench.most_boards)
+        part = {name: value[some] if value.size > 1 else value for name, value in varied.items()}
+        at = warmth[some] if warmth is not None and warmth.size > 1 else temperature_c
+        found.append(measure_solution(bench, solve(bench, part, at), leaders))
+    return found[0] if len(found) == 1 else _joined(found)
+
+
+def _joined(found: Sequence[Figures]) -> Figures:
+    """One after the other; a device capacitance that is zero on some is no part of these."""
+    parts = tuple(dict.fromkeys(name for figures in found for name in figures.parts))
+    index = {name: i for i, name in enumerate(parts)}
+
+    def leaders(pick: Callable[[Figures], IntArray]) -> IntArray:
+        tables = [np.array([*(index[name] for name in f.parts), -1], dtype=np.intp) for f in found]
+        return np.concatenate([t[pick(f)] for t, f in zip(tables, found, strict=True)])
+
+    def join(pick: Callable[[Figures], FloatArray]) -> FloatArray:
+        return np.concatenate([pick(figures) for figures in found])
+
+    return Figures(
+        join(lambda f: f.gain),
+        join(lambda f: f.low_hz),
+        join(lambda f: f.high_hz),
+        leaders(lambda f: f.low_leader),
+        leaders(lambda f: f.high_leader),
+        parts,
+        join(lambda f: f.low_peak),
+        join(lambda f: f.high_peak),
+    )
 
 
 def solve(
@@ -165,8 +232,7 @@ def _figures(found: Sequence[FloatArray], network: LinearNetwork) -> Figures:
 
 
 def _ends(bench: Bench, network: LinearNetwork) -> tuple[FloatArray, FloatArray]:
-    source = next(e for e in bench.circuit.elements if e.name == bench.source)
-    assert isinstance(source, IndependentSource)
+    source = _source(bench.circuit, bench.source)
     return drive_vector(network, source), sense_vector(network, bench.output, bench.reference)
 
 

@@ -41,6 +41,8 @@ BLOCK = 1000
 """Boards solved together; small enough for the cache, large enough for the array operations."""
 BOARDS = 10_000
 MOST_BOARDS = 1_000_000
+INSIDE = "a board inside the tolerances"
+"""In place of the ends, where a board is worse than every combination of them."""
 LIMITS = {"midband_gain": "gain", "low_corner": "low corner", "high_corner": "high corner"}
 
 
@@ -199,6 +201,11 @@ def _figure(
 ) -> FigureSpread:
     there = values[~np.isnan(values)]
     low, high = worst_cases(plan.bench, plan.variety, alone, name)
+    if plan.distribution != "normal":
+        # A figure may have its extreme between the ends (a bridge in balance has); a normal
+        # deviation may lie outside them.
+        low = min(low, (float(there.min()), (INSIDE,)))
+        high = max(high, (float(there.max()), (INSIDE,)))
     edges, counts = histogram(there)
     nominal = float(alone.nominal.figure(name)[0])
     sigma = np.array([standard_deviation(d.low, d.high, plan.distribution) for d in _draws(plan)])

@@ -62,12 +62,14 @@ def limited_step(
     of the current instead (the rule of SPICE2, common practice). All shapes broadcast.
     """
     step = (proposed - previous) / thermal_v
+    active = (proposed > critical_v) & (np.abs(step) > 2.0)
+    if not active.any():  # most steps: the last ones of every solution
+        return np.broadcast_to(proposed, active.shape)
     rising = previous + thermal_v * (2.0 + np.log(np.maximum(step - 2.0, 1.0)))
     falling = previous - thermal_v * (2.0 + np.log(np.maximum(2.0 - step, 1.0)))
     warm = np.where(step > 0.0, rising, falling)
     cold = thermal_v * np.log(np.maximum(proposed / thermal_v, 1.0))
     limited = np.where(previous > 0.0, warm, cold)
-    active = (proposed > critical_v) & (np.abs(step) > 2.0)
     return np.where(active, limited, proposed)
 
 

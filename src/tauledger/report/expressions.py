@@ -21,7 +21,7 @@ _TOKEN = re.compile(
 )
 _MILLER = re.compile(r" \[Miller: [^\[\]]*\]")
 _FEEDBACK = re.compile(
-    r"\((?P<body>.*)\)·\(1 \+ (?P<short>[\d.e+-]+)\)/\(1 \+ (?P<open>[\d.e+-]+)\)"
+    r"\((?P<body>.*)\)·(?P<short>1|\(1 [+−] [\d.e+-]+\))/(?P<open>1|\(1 [+−] [\d.e+-]+\))"
 )
 _BRIDGE = re.compile(r"R_in \+ R_out \+ (?P<gm>gm[^\s·]*)·R_in·R_out")
 
@@ -99,9 +99,15 @@ def parse_hand(text: str) -> HandExpression | None:
         found = _FEEDBACK.fullmatch(body)
         if found is None:
             return None
-        body, feedback = found["body"], (float(found["short"]), float(found["open"]))
+        body, feedback = found["body"], (_ratio(found["short"]), _ratio(found["open"]))
     whole = _body(body, definitions)
     return None if whole is None else HandExpression(whole, feedback, around, definitions)
+
+
+def _ratio(text: str) -> float:
+    """T of ``(1 + T)``, ``(1 − T)`` or ``1``."""
+    _, sign, size = text.strip("()").partition("−" if "−" in text else " + ")
+    return (-1.0 if sign == "−" else 1.0) * float(size) if sign else 0.0
 
 
 def _body(text: str, definitions: Mapping[str, Node]) -> Node | Bridge | None:

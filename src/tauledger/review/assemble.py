@@ -19,6 +19,7 @@ from tauledger.circuit.elements import (
     VoltageSource,
 )
 from tauledger.corners import Corner, Corners, HandExpression, PartAccount, StageFormula
+from tauledger.review.divider import divider_checks
 from tauledger.review.rows import (
     CornerRow,
     NamedValue,
@@ -30,7 +31,7 @@ from tauledger.review.rows import (
     TimeConstantRow,
     TransistorRow,
 )
-from tauledger.review.sanity import divider_checks, headroom, sanity_problems
+from tauledger.review.sanity import headroom, sanity_problems, stability_problems
 from tauledger.smallsignal import DeviceAdmittance, LinearNetwork, Response
 from tauledger.topology.model import SignalPath, StageOutline, Topology
 
@@ -112,6 +113,7 @@ def path_row(
         low=_corner_row(corners.low),
         high=_corner_row(corners.high),
         notes=(*corners.notes, *topology.notes),
+        unstable_hz=corners.unstable_hz,
         gain_by_formulas=_product(network, corners, topology.stages, formulas),
         gain_by_inspection=corners.gain if corners.midband is not None else None,
         response=_response_points(corners, exact),
@@ -144,6 +146,7 @@ def review_of(
     version: str,
 ) -> Review:
     """Gather the rows of a whole report."""
+    paths = tuple(paths)
     return Review(
         title=circuit.title,
         netlist=circuit.path,
@@ -151,8 +154,12 @@ def review_of(
         temperature_c=circuit.temperature_c,
         nodes=tuple(NodeRow(node, point.voltage(node)) for node in circuit.nodes),
         transistors=transistor_rows(circuit, point, topology),
-        paths=tuple(paths),
-        problems=(*circuit.problems, *sanity_problems(circuit, point, topology)),
+        paths=paths,
+        problems=(
+            *circuit.problems,
+            *sanity_problems(circuit, point, topology),
+            *stability_problems(paths),
+        ),
         supply_power_w=_supply_power(circuit, point),
         dividers=divider_checks(circuit, point),
     )
@@ -235,12 +242,15 @@ def _product(
     values = [formula.value for formula in formulas if formula.value is not None]
     if not stages or len(values) < len(stages):
         return None
-    entry = _signal(network, corners, stages[0].input_node)
-    leaving = _signal(network, corners, stages[-1].output_node)
-    if not entry or not leaving:
-        return None
-    # The divisions before the first stage and behind the last come from the network.
-    return entry * math.prod(values) * corners.gain / leaving
+    entries = [_signal(network, corners, stage.input_node) for stage in stages]
+    leaving = [_signal(network, corners, stage.output_node) for stage in stages]
+    # The divisions before, between and behind the stages come from the network.
+    product = corners.gain
+    for entry, value, left in zip(entries, values, leaving, strict=True):
+        if not entry or not left:
+            return None
+        product *= value * entry / left
+    return product
 
 
 def _entry_resistance(

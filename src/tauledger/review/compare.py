@@ -7,7 +7,7 @@ from dataclasses import dataclass
 
 from tauledger.circuit.elements import Circuit
 from tauledger.review.attribution import Figures, Solve, attribute, figures
-from tauledger.review.changes import Comparison, FigureChange, WordChange
+from tauledger.review.changes import Attribution, Comparison, FigureChange, WordChange
 from tauledger.review.edits import find_edits, part_changes
 from tauledger.review.matching import Matching, match
 from tauledger.review.rows import CornerRow, PathRow, Review, TransistorRow
@@ -36,8 +36,20 @@ def compare(old: Revision, new: Revision, solve: Solve) -> Comparison:
     edits = find_edits(old.circuit, new.circuit, matching)
     one_path = _same_path(old.path, new.path, names, matching)
     before, after = old.review.paths[0], new.review.paths[0]
-    notes = []
-    if not one_path:
+    notes: list[str] = []
+    kept, all_parts = _kept(matching), max(len(old.circuit.elements), len(new.circuit.elements))
+    alike = 2 * kept >= all_parts
+    attributions: tuple[Attribution, ...] = ()
+    if one_path and alike:
+        found = attribute(old.circuit, edits, _figures(before), _figures(after), solve)
+        attributions = tuple(one for one in found if _explains(one))
+        notes += _unexplained([one.figure for one in found if not _explains(one)])
+    elif one_path:
+        notes.append(
+            f"the circuits are too different ({kept} of {all_parts} parts keep their place), so "
+            "the figures are set side by side and nothing is attributed"
+        )
+    else:
         notes.append(
             f"the signal path is another one ({before.input} to {before.output}, now "
             f"{after.input} to {after.output}), so the figures are set side by side and nothing "
@@ -50,13 +62,30 @@ def compare(old: Revision, new: Revision, solve: Solve) -> Comparison:
         parts=parts,
         figures=(*_path_figures(before, after), *_currents(old.review, new.review, names)),
         words=tuple(_words(old.review, new.review, names)),
-        attributions=(
-            attribute(old.circuit, edits, _figures(before), _figures(after), solve)
-            if one_path
-            else ()
-        ),
+        attributions=attributions,
         notes=(*notes, *_missing_corners(before, after)),
     )
+
+
+def _kept(matching: Matching) -> int:
+    """How many parts are between the same nets in both circuits, whatever their values."""
+    return sum(
+        all(matching.nodes.get(b) == a for a, b in zip(old.nodes, new.nodes, strict=False))
+        for old, new in matching.pairs
+    )
+
+
+def _explains(attribution: Attribution) -> bool:
+    """False when what is left over is more than the move itself: the shares are noise."""
+    return abs(attribution.remainder) <= abs(attribution.new - attribution.old)
+
+
+def _unexplained(figures: list[str]) -> Iterator[str]:
+    if figures:
+        yield (
+            f"nothing is attributed of {', '.join(figures)}: the edits act together so much that "
+            "what each does by itself leaves more over than the whole move"
+        )
 
 
 class _Names:

@@ -30,7 +30,8 @@ class WorstCase:
 
     value: float
     ends: tuple[str, ...]
-    """The leading draws and their ends, such as ``CE low``, strongest first."""
+    """The leading draws and their ends, such as ``CE low``, strongest first; or that a board
+    inside the tolerances was worse than their ends."""
 
 
 @dataclass(frozen=True, slots=True)

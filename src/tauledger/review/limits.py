@@ -164,7 +164,7 @@ def _missed(limit: Limit, figure: _Figure, end: Quantity, value: float) -> Probl
     side = f"below the {end.text} required" if is_low else f"above the {end.text} allowed"
     by = format_quantity(abs(value - end.value), _printed(end.unit))
     if end.unit not in ("dB", "%") and end.value and math.isfinite(value):
-        by += f" ({abs(value / end.value - 1.0) * 100.0:.2g} %)"
+        by += f" ({format_quantity(abs(value / end.value - 1.0) * 100.0, '%')})"
     source = f"; set by {figure.part}" if figure.part and limit.figure != "current" else ""
     helps = (limit.figure == "low_corner") != is_low and figure.advice
     return _finding(

@@ -224,8 +224,10 @@ class PathRow:
     low: CornerRow | None
     high: CornerRow | None
     notes: tuple[str, ...]
+    unstable_hz: float | None = None
+    """Magnitude of a natural frequency that grows, when there is one."""
     gain_by_formulas: float | None = None
-    """Product of the stages' formulas with the division at the input; None unless all hold."""
+    """Product of the stages' formulas and the divisions round them; None unless all hold."""
     gain_by_inspection: float | None = None
     """Signed gain with low-end parts short and high-end parts open, as a hand analysis has it."""
     simulated: SimulatedRow | None = None

@@ -13,6 +13,8 @@ from tauledger.circuit.elements import CurrentSource, IndependentSource
 from tauledger.smallsignal.network import FloatArray, LinearNetwork, ReactivePart
 
 ComplexArray = NDArray[np.complex128]
+LARGEST_DIRECT, FEWEST_MODAL = 100, 30
+"""Unknowns and frequencies above which a sweep goes by an eigenvalue decomposition."""
 LARGEST_BATCH = 4_000_000
 """Complex numbers held at once while a sweep is solved (64 MB)."""
 
@@ -30,6 +32,10 @@ class Response:
     def at(self, frequency_hz: FloatArray) -> ComplexArray:
         """H at each frequency, shape of ``frequency_hz`` (one axis)."""
         s: ComplexArray = np.asarray(2j * math.pi * np.atleast_1d(frequency_hz), np.complex128)
+        if self.drive.size > LARGEST_DIRECT and s.size > FEWEST_MODAL:
+            modal = self._modal(s)
+            if modal is not None:
+                return modal + self.direct
         at_once = max(1, LARGEST_BATCH // max(1, self.drive.size**2))
         pieces = [self._solve(s[i : i + at_once]) for i in range(0, s.size, at_once)]
         return np.concatenate(pieces) + self.direct
@@ -38,6 +44,26 @@ class Response:
         matrices = self.conductance + s[:, None, None] * self.reactance
         right = np.broadcast_to(self.drive[:, None], (s.size, self.drive.size, 1))
         return np.asarray(np.linalg.solve(matrices, right)[:, :, 0] @ self.sense)
+
+    def _modal(self, s: ComplexArray) -> ComplexArray | None:
+        """The same by one eigenvalue decomposition, where that is accurate; else None.
+
+        With M = G + s₀C and A = M⁻¹C = VΛV⁻¹, H = Σ g_k c_k / (1 + (s − s₀)λ_k). A defective A
+        spoils V, so the result is held against direct solutions at some of the frequencies.
+        """
+        shift = float(np.exp(np.log(np.abs(s)).mean()))
+        matrix = self.conductance + shift * self.reactance
+        try:
+            values, vectors = np.linalg.eig(np.linalg.solve(matrix, self.reactance))
+            drives = np.linalg.solve(vectors, np.linalg.solve(matrix, self.drive))
+        except np.linalg.LinAlgError:
+            return None
+        weights = (self.sense @ vectors) * drives
+        found = (weights[None, :] / (1.0 + (s[:, None] - shift) * values[None, :])).sum(axis=1)
+        probes = np.linspace(0, s.size - 1, 7).astype(int)
+        direct = self._solve(s[probes])
+        near = np.abs(found[probes] - direct) <= 1e-6 * np.abs(direct).max()
+        return np.asarray(found, dtype=np.complex128) if near.all() else None
 
     def magnitude(self, frequency_hz: float) -> float:
         """|H| at one frequency."""
@@ -156,17 +182,19 @@ def _across(unknowns: ComplexArray, part: ReactivePart) -> complex:
     return complex(plus - minus)
 
 
-def natural_frequencies(conductance: FloatArray, reactance: FloatArray) -> ComplexArray:
+def natural_frequencies(
+    conductance: FloatArray, reactance: FloatArray, near: float | None = None
+) -> ComplexArray:
     """Finite roots s (rad/s) of det(G + sC) = 0, smallest magnitude first.
 
     Works on the pencil shifted to a point on the positive real axis, where G + σC is regular
     even when G alone is not (a node reached only by capacitors is a pole at zero). Two passes:
     the second shift sits in the middle of the spread that the first one found, which keeps slow
-    and fast roots equally accurate.
+    and fast roots equally accurate. ``near`` (rad/s) gives one shift to work from instead.
     """
-    shift = 1e5
+    shift = 1e5 if near is None else near
     roots = np.zeros(0, dtype=complex)
-    for _ in range(2):
+    for _ in range(2 if near is None else 1):
         inverse_roots = np.linalg.eigvals(
             np.linalg.solve(conductance + shift * reactance, reactance)
         )

@@ -35,6 +35,8 @@ OTHER = "other"
 
 _LONE_SPAN = 3e3
 """With only one kind of neighbour to compare with, in corner ratio: 3.5 decades."""
+_BYPASS_SHARE = 0.1
+"""From this share of the smallest coupling capacitor upwards an emitter capacitor is a bypass."""
 _LARGE_F = 10e-9
 """With nothing to compare with, a capacitor from this size upwards is large."""
 
@@ -52,18 +54,46 @@ class Place:
     """Nodes at ground for the signal by way of a bypass, decoupling or large filter capacitor."""
     filtered: frozenset[str]
     """Those of :attr:`quiet` that a filter capacitor alone makes so."""
+    least_coupling_f: float
+    """Smallest of the coupling capacitors the signal passes; infinite when it passes none."""
 
     def is_large(self, branch: Branch) -> bool:
         """Whether its corner lies with those of the coupling capacitors of the circuit."""
         if self.threshold_hz > 0.0:
-            return _corner_hz(branch, self.layout.wiring.cluster_conductance_s) < self.threshold_hz
+            conductance_s = self.layout.wiring.cluster_conductance_s
+            return _corner_hz(self.layout, branch, conductance_s) < self.threshold_hz
         return capacitance_f(branch) >= _LARGE_F
+
+    def bypasses(self, branch: Branch) -> bool:
+        """Whether a capacitor at an emitter is large: the gain rises from below the band.
+
+        It rises from the corner with the emitter's own resistors, whatever the transistor does.
+        """
+        if capacitance_f(branch) >= _BYPASS_SHARE * self.least_coupling_f:
+            return True
+        if self.threshold_hz == 0.0:
+            return self.is_large(branch)
+        wiring = self.layout.wiring
+        own = {
+            node: sum(b.conductance_s for b in wiring.at(node))
+            or wiring.cluster_conductance_s.get(node, 0.0)
+            for node in (branch.first, branch.second)
+        }
+        return _corner_hz(self.layout, branch, own) < self.threshold_hz
 
 
 def make_place(layout: Layout, branches: list[Branch]) -> Place:
     """Coupling capacitors and the size that parts large from small; no quiet node yet."""
     coupling = _coupling(layout)
-    return Place(layout, coupling, _threshold(layout, branches, coupling), frozenset(), frozenset())
+    passed = [capacitance_f(b) for b in branches if b.element.name in coupling]
+    return Place(
+        layout,
+        coupling,
+        _threshold(layout, branches, coupling),
+        frozenset(),
+        frozenset(),
+        min(passed, default=math.inf),
+    )
 
 
 def _coupling(layout: Layout) -> dict[str, tuple[int, str, str]]:
@@ -81,9 +111,11 @@ def _coupling(layout: Layout) -> dict[str, tuple[int, str, str]]:
 def _threshold(layout: Layout, branches: list[Branch], coupling: Mapping[str, object]) -> float:
     """Corner that parts large from small: the middle, in decades, of those known by structure."""
     wiring = layout.wiring
-    low = [_corner_hz(b, wiring.conductance_s) for b in branches if b.element.name in coupling]
+    low = [
+        _corner_hz(layout, b, wiring.conductance_s) for b in branches if b.element.name in coupling
+    ]
     high = [
-        _corner_hz(b, wiring.cluster_conductance_s)
+        _corner_hz(layout, b, wiring.cluster_conductance_s)
         for b in branches
         if GROUND in (b.first, b.second)
         and b.far(GROUND) in layout.on_way
@@ -100,11 +132,13 @@ def capacitance_f(branch: Branch) -> float:
     return branch.element.capacitance_f if isinstance(branch.element, Capacitor) else 0.0
 
 
-def _corner_hz(branch: Branch, conductance_s: Mapping[str, float]) -> float:
+def _corner_hz(layout: Layout, branch: Branch, conductance_s: Mapping[str, float]) -> float:
+    # A voltage source that drives a node leaves no resistance there.
+    stiff = {GROUND, *layout.wiring.sources.get(layout.path.source.casefold(), ())}
     resistance = sum(
         1.0 / max(conductance_s.get(node, 0.0), 1e-9)
         for node in (branch.first, branch.second)
-        if node != GROUND
+        if node not in stiff
     )
     farads = max(abs(capacitance_f(branch)), 1e-18)
     return 1.0 / (2.0 * math.pi * farads * max(resistance, 1e-3))

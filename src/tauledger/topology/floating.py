@@ -10,6 +10,7 @@ from tauledger.topology.capacitors import Place, make_role, preferred
 from tauledger.topology.grounded import emitter_bypass, grounded_role, series_to_ground
 from tauledger.topology.layout import Layout, series_neighbours, spelt
 from tauledger.topology.model import CapacitorRole
+from tauledger.topology.multiplier import bridged_multiplier
 from tauledger.topology.transistors import DIFFERENTIAL_PAIR
 from tauledger.topology.wiring import Branch, Transistor
 
@@ -26,6 +27,10 @@ def floating_role(place: Place, branch: Branch) -> CapacitorRole:
     if isinstance(parallel, Inductor):
         reason = f"tunes with {parallel.name} between {first} and {second}"
         return make_role(branch, words.FILTER, reason)
+    multiplier = bridged_multiplier(place.layout.wiring, branch)
+    if multiplier is not None:
+        reason = f"leads the signal past {multiplier.name}, a VBE multiplier"
+        return make_role(branch, words.INTERSTAGE_COUPLING, reason, multiplier)
     halves = _emitters(place.layout, branch)
     if halves and place.layout.transistors[halves[0].name].configuration == DIFFERENTIAL_PAIR:
         return emitter_bypass(place, branch, halves[0].emitter, halves[0], "")

@@ -29,6 +29,7 @@ from tauledger.circuit.elements import (
     Resistor,
 )
 from tauledger.netlist.expression import Call, Expression, NodeVoltage, SourceCurrent
+from tauledger.topology.multiplier import is_multiplier
 from tauledger.topology.wiring import Branch, Transistor, Wiring
 
 _THROUGH = {
@@ -41,12 +42,14 @@ _DECADE_WEIGHT = 0.5
 """Added for every decade a capacitor is smaller than the largest that does not stand at ground."""
 _RESISTOR_WEIGHT = 0.02
 _COMMANDED_WEIGHT = 1.5
-"""Added where a resistor leads to a node that a collector drives: feedback, as a rule."""
+"""Added where a resistor leads to a node that a collector drives, or a capacitor to one that a
+follower drives: feedback, as a rule."""
 _SHUNT_WEIGHT = 1.0
 """Added where a resistor leads to a node that a capacitor joins to ground."""
 _INDUCTOR_WEIGHT = 0.3
 _DIODE_WEIGHT = 0.5
 _SOURCE_WEIGHT = 0.1
+_MULTIPLIER_WEIGHT = 0.05
 _CHANNEL_WEIGHT = 1.0
 """A field-effect transistor in its triode region, drain to source either way."""
 
@@ -135,6 +138,8 @@ class _Losses:
     largest_f: float
     driven: frozenset[str]
     """Clusters a collector or drain feeds."""
+    followed: frozenset[str]
+    """Nodes that emitters command whose collectors stand at ground for the signal."""
 
     def resistor(self, branch: Branch, end: str) -> float:
         """Loss where a resistor leads to ``end``: the divider, and who else commands there."""
@@ -146,9 +151,10 @@ class _Losses:
             loss += _SHUNT_WEIGHT
         return loss + (_COMMANDED_WEIGHT if cluster in self.driven else 0.0)
 
-    def capacitor(self, capacitor: Capacitor) -> float:
+    def capacitor(self, capacitor: Capacitor, end: str) -> float:
         ratio = self.largest_f / max(abs(capacitor.capacitance_f), 1e-18)
-        return _CAPACITOR_WEIGHT + _DECADE_WEIGHT * max(math.log10(ratio), 0.0)
+        loss = _CAPACITOR_WEIGHT + _DECADE_WEIGHT * max(math.log10(ratio), 0.0)
+        return loss + (_COMMANDED_WEIGHT if end in self.followed else 0.0)
 
 
 def _losses(wiring: Wiring) -> _Losses:
@@ -167,6 +173,11 @@ def _losses(wiring: Wiring) -> _Losses:
             for t in wiring.transistors.values()
             if t.collector in wiring.cluster
         ),
+        frozenset(
+            t.emitter
+            for t in wiring.transistors.values()
+            if t.collector == GROUND != t.base and t.region != "cut off"
+        ),
     )
 
 
@@ -176,13 +187,18 @@ def _passive(losses: _Losses, branch: Branch) -> Iterator[tuple[Step, float]]:
         if isinstance(element, Resistor):
             yield Step(start, end, element.name, "resistor"), losses.resistor(branch, end)
         elif isinstance(element, Capacitor):
-            yield Step(start, end, element.name, "capacitor"), losses.capacitor(element)
+            yield Step(start, end, element.name, "capacitor"), losses.capacitor(element, end)
         else:
             weight = _INDUCTOR_WEIGHT if isinstance(element, Inductor) else _DIODE_WEIGHT
             yield Step(start, end, element.name, "other"), weight
 
 
 def _through(wiring: Wiring, transistor: Transistor) -> Iterator[tuple[Step, float]]:
+    if is_multiplier(wiring, transistor):
+        ends = transistor.collector, transistor.emitter
+        for start, end in (ends, ends[::-1]):
+            yield Step(start, end, transistor.name, "other"), _MULTIPLIER_WEIGHT
+        return
     for (enters, leaves), weight in _THROUGH.items():
         start, end = transistor.node(enters), transistor.node(leaves)
         if leaves == "emitter" and end in wiring.shunted:

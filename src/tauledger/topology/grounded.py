@@ -70,7 +70,7 @@ def emitter_bypass(
 ) -> CapacitorRole:
     """A bypass at an emitter or source, or a peaking capacitor when it is small."""
     word = transistor.word("emitter")
-    if not place.is_large(branch):
+    if not place.bypasses(branch):
         reason = (
             f"is small: from the {word} of {transistor.name} it lifts the gain at high "
             "frequencies only"
@@ -108,11 +108,13 @@ def behind_resistor(place: Place, branch: Branch, node: str) -> CapacitorRole | 
         return None
     links = series_neighbours(wiring, node)
     neighbours = [n for n in links if n not in place.quiet or _is_controlled(place, n)]
-    emitters = [wiring.transistors_at(n, "emitter") for n in neighbours]
-    if neighbours and all(emitters) and layout.on_way.isdisjoint(neighbours):
-        transistor = preferred(place, tuple(t for found in emitters for t in found))
+    ends = [n for n in neighbours if wiring.transistors_at(n, "emitter")]
+    emitters = tuple(t for n in ends for t in wiring.transistors_at(n, "emitter"))
+    others = [n for n in neighbours if n not in ends]
+    if ends and layout.on_way.isdisjoint(ends) and _are_fed(place, node, others, emitters):
+        transistor = preferred(place, emitters)
         assert transistor is not None
-        return emitter_bypass(place, branch, node, transistor, f" behind {links[neighbours[0]]}")
+        return emitter_bypass(place, branch, node, transistor, f" behind {links[ends[0]]}")
     if len(neighbours) != 1 or wiring.terminals.get(node):
         return None
     lone = len(wiring.at(node)) == 2
@@ -127,6 +129,22 @@ def behind_resistor(place: Place, branch: Branch, node: str) -> CapacitorRole | 
         reason = f"keeps the bias of {base.name} at {node} quiet"
         return make_role(branch, words.FILTER, reason, base)
     return _base_bypass(branch, node, base, f" behind {links[neighbours[0]]}")
+
+
+def _are_fed(place: Place, node: str, others: list[str], emitters: tuple[Transistor, ...]) -> bool:
+    """Whether the node feeds the others no more than the bias of bases of other transistors.
+
+    A supply behind a filter feeds the base and the emitter of one and the same transistor.
+    """
+    wiring = place.layout.wiring
+    own = {transistor.base for transistor in emitters}
+    to_ground = sum(b.conductance_s for b in wiring.at(node) if b.far(node) == GROUND)
+    return all(
+        wiring.transistors_at(n, "base")
+        and n not in own
+        and sum(b.conductance_s for b in wiring.at(node) if b.far(node) == n) < to_ground
+        for n in others
+    )
 
 
 def _is_controlled(place: Place, node: str) -> bool:

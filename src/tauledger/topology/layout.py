@@ -6,7 +6,7 @@ from collections.abc import Mapping
 from dataclasses import dataclass
 
 from tauledger.circuit.elements import GROUND, Capacitor, Inductor, Resistor
-from tauledger.topology.flow import Flow, control_nodes
+from tauledger.topology.flow import Flow, control_nodes, follow
 from tauledger.topology.model import SignalPath, TransistorRole
 from tauledger.topology.stages import Stage
 from tauledger.topology.wiring import Branch, Transistor, Wiring
@@ -50,10 +50,9 @@ def lay_out(
             done += 1
         level.setdefault(node, done)
     on_way = set(flow.nodes)
-    reference = wiring.joined.get(path.output_reference, GROUND)
-    if reference != GROUND:
-        on_way.add(reference)
-        level.setdefault(reference, len(stages))
+    for node in _way_to_reference(wiring, flow, stages, path):
+        on_way.add(node)
+        level.setdefault(node, len(stages))
     for number, stage in enumerate(stages):
         for name in stage.members:
             transistor = wiring.transistors.get(name)
@@ -71,6 +70,23 @@ def lay_out(
                     level.setdefault(node, number)
     level.pop(GROUND, None)
     return Layout(wiring, path, flow, stages, transistors, level, frozenset(on_way - {GROUND}))
+
+
+def _way_to_reference(
+    wiring: Wiring, flow: Flow, stages: tuple[Stage, ...], path: SignalPath
+) -> tuple[str, ...]:
+    """The second node of a differential output, and what lies between it and the last stage."""
+    reference = wiring.joined.get(path.output_reference, GROUND)
+    if reference == GROUND or not flow.steps or not stages:
+        return () if reference == GROUND else (reference,)
+    nodes = [reference]
+    for step in reversed(follow(wiring, flow.steps[0].start, reference).steps):
+        if step.part in stages[-1].members:
+            return tuple(nodes)
+        if step.kind in {"transistor", "source"}:
+            break
+        nodes.append(step.start)
+    return (reference,)
 
 
 def series_neighbours(wiring: Wiring, node: str) -> dict[str, str]:

@@ -22,6 +22,8 @@ class SignalPath:
     """``"0"``, or the second node of a differential output."""
     load: tuple[str, ...]
     """Elements that are the load at the output (not part of the output resistance)."""
+    notes: tuple[str, ...] = ()
+    """What the choice passed over: nodes the netlist asks to see that cannot be the output."""
 
 
 @dataclass(frozen=True, slots=True)

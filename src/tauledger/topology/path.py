@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import re
-from collections.abc import Iterable, Sequence
+from collections.abc import Iterable, Iterator, Sequence
 
 from tauledger.circuit.elements import (
     GROUND,
@@ -14,7 +14,7 @@ from tauledger.circuit.elements import (
     Resistor,
     VoltageSource,
 )
-from tauledger.problems import Problem, ProblemError, Severity
+from tauledger.problems import Problem, ProblemError, Severity, SourceSpan
 from tauledger.topology.model import SignalPath
 from tauledger.topology.wiring import Branch, Wiring, wire
 
@@ -50,6 +50,7 @@ def choose_path(circuit: Circuit, input_name: str | None, output: str | None) ->
         output_node=node,
         output_reference=reference,
         load=_load(wiring, node, reference),
+        notes=() if output is not None else tuple(_passed_over(wiring, live, input_node, node)),
     )
 
 
@@ -73,13 +74,17 @@ def _choose_source(circuit: Circuit, name: str | None) -> Source:
                 "Say which one drives the amplifier with --input NAME.",
             )
         )
+    likely = [source for source in sources if source.time_function]
+    name = likely[0].name if len(likely) == 1 else "NAME"
+    shown = likely or sources
     raise ProblemError(
         Problem(
             "input-missing",
             Severity.ERROR,
             "no source has an AC value, so nothing says where the signal enters; "
             f"sources seen: {_list(sources) or 'none'}",
-            advice="Give the signal source an AC value (AC 1), or name it with --input NAME.",
+            shown[0].span if shown else None,
+            f"Give the signal source an AC value (AC 1), or name it with --input {name}.",
         )
     )
 
@@ -165,7 +170,35 @@ def _find_output(wiring: Wiring, taken: set[str]) -> tuple[str, str]:
         if len(candidates) == 1:
             return candidates[0], GROUND
     seen = [",".join(hint) for hint in hints] or next((found for found in rounds if found), [])
-    raise _no_output(wiring, seen, free)
+    raise _no_output(wiring, seen, free, tuple(_useless_hints(wiring, taken)))
+
+
+def _passed_over(wiring: Wiring, live: str, input_node: str, output: str) -> Iterator[str]:
+    """A note on what the netlist asks to see, when nothing of it can be the output."""
+    taken = {live, input_node} - {output}
+    for said in _useless_hints(wiring, taken):
+        yield f"{said}; {output} is taken for the output instead"
+
+
+def _useless_hints(wiring: Wiring, taken: set[str]) -> Iterator[str]:
+    """Why the nodes that the netlist asks to see cannot be the output, if none of them can."""
+    hints = [hint for hint in dict.fromkeys(wiring.circuit.output_hints) if hint]
+    if any(_can_be_output(wiring, hint[0], taken) for hint in hints):
+        return
+    reasons: dict[str, list[str]] = {}
+    for hint in hints:
+        if hint[0] not in wiring.joined:
+            reason = "no part the input drives is there"
+        elif hint[0] in wiring.held:
+            reason = "it is ground, or a voltage source holds it"
+        else:
+            reason = "the signal enters there"
+        reasons.setdefault(reason, []).append(f"v({','.join(hint)})")
+    for reason, names in reasons.items():
+        yield (
+            f"{_shorten(names)}, asked for by .print or a statement like it, cannot be the "
+            f"output: {reason}"
+        )
 
 
 def _asked_output(wiring: Wiring, asked: str) -> tuple[str, str]:
@@ -219,7 +252,9 @@ def _is_loaded(wiring: Wiring, node: str) -> bool:
     )
 
 
-def _no_output(wiring: Wiring, seen: Sequence[str], free: Sequence[str]) -> ProblemError:
+def _no_output(
+    wiring: Wiring, seen: Sequence[str], free: Sequence[str], useless: Sequence[str]
+) -> ProblemError:
     if seen:
         found = f"{len(seen)} nodes could be the output, one was expected: {_shorten(seen)}"
     else:
@@ -228,18 +263,28 @@ def _no_output(wiring: Wiring, seen: Sequence[str], free: Sequence[str]) -> Prob
             for node in free
             if any(t != "base" for _, t in wiring.terminals.get(wiring.joined[node], ()))
         ]
+        seen = outputs or list(free)
         found = (
-            "nothing says which node is the output; nodes seen: "
-            f"{_shorten(outputs or list(free)) or 'none'}"
+            f"nothing {'else ' if useless else ''}says which node is the output; nodes seen: "
+            f"{_shorten(seen) or 'none'}"
         )
     return ProblemError(
         Problem(
             "output-ambiguous",
             Severity.ERROR,
-            found,
-            advice="Say which one with --output NODE, or with .print ac v(NODE) in the netlist.",
-        )
+            "; ".join((*useless, found)),
+            _place(wiring.circuit, seen),
+            "Say which one with --output NODE, or with .print ac v(NODE) in the netlist.",
+        ),
+        # A node asked for may lie in a circuit that was left out for standing apart.
+        *(p for p in wiring.circuit.problems if p.code == "circuit-independent"),
     )
+
+
+def _place(circuit: Circuit, nodes: Sequence[str]) -> SourceSpan | None:
+    """Where the first of the nodes is named last."""
+    there = [e.span for e in circuit.elements if nodes and nodes[0].split(",")[0] in e.nodes]
+    return there[-1] if there else None
 
 
 def _hanging(wiring: Wiring, node: str) -> tuple[list[Branch], list[Branch]]:

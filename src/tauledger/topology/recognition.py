@@ -38,7 +38,7 @@ def recognise(circuit: Circuit, operating_point: OperatingPoint, path: SignalPat
         transistors,
         outlines(stages, flow),
         capacitors,
-        (*path_notes(layout, grounded), *feedback_notes(layout, grounded)),
+        (*path.notes, *path_notes(layout, grounded), *feedback_notes(layout, grounded)),
     )
 
 

@@ -1,8 +1,8 @@
 """Stages along the way of the signal, and the configuration of every transistor.
 
-Stage outlines telescope: a stage ends where its last device delivers the signal, and the next
-begins at the same node or behind coupling capacitors only, so that gains between these nodes
-multiply to the gain of the whole.
+A stage begins at the terminal its first device is driven at and ends where its last device
+delivers the signal, so that its gain is that of the devices; what passive parts between two stages
+divide off belongs to neither. Controlled sources begin where the stage before ends.
 """
 
 from __future__ import annotations
@@ -16,6 +16,7 @@ from tauledger.circuit.elements import GROUND
 from tauledger.topology import transistors as words
 from tauledger.topology.flow import Flow, Step
 from tauledger.topology.model import StageOutline, TransistorRole
+from tauledger.topology.multiplier import is_multiplier
 from tauledger.topology.transistors import Groups
 from tauledger.topology.wiring import Transistor, Wiring
 
@@ -74,7 +75,9 @@ def _stage(wiring: Wiring, groups: Groups, draft: list[Step]) -> Stage:
     if first.kind == "transistor":
         members.update(dict.fromkeys(_partners(groups, tuple(members), configuration)))
     if configuration == words.DIFFERENTIAL_PAIR:
-        members.update(dict.fromkeys(_mirror_load(wiring, groups, tuple(members))))
+        twins = dict.fromkeys(_other_cascode(wiring, groups, draft, tuple(members)))
+        loads = dict.fromkeys(_mirror_load(wiring, groups, (*members, *twins)))
+        members.update(twins | loads if loads else {})
     return Stage(
         tuple(members),
         tuple(draft),
@@ -134,6 +137,18 @@ def _partners(groups: Groups, names: tuple[str, ...], configuration: str) -> Ite
                     yield partner
 
 
+def _other_cascode(
+    wiring: Wiring, groups: Groups, draft: list[Step], names: tuple[str, ...]
+) -> Iterator[str]:
+    """On the other half of the pair, the twin of a cascode that the signal passes."""
+    passed = [wiring.transistors[step.part] for step in draft if step.part not in groups.pairs]
+    bases = {(own.base, own.polarity) for own in passed}
+    for name in names:
+        for twin in wiring.transistors_at(wiring.transistors[name].collector, "emitter"):
+            if twin.name not in groups.pairs and (twin.base, twin.polarity) in bases:
+                yield twin.name
+
+
 def _mirror_load(wiring: Wiring, groups: Groups, names: tuple[str, ...]) -> Iterator[str]:
     """Mirror transistors that stand at the collectors of the pair."""
     there = dict.fromkeys(
@@ -152,23 +167,23 @@ def _mirror_load(wiring: Wiring, groups: Groups, names: tuple[str, ...]) -> Iter
 
 
 def outlines(stages: tuple[Stage, ...], flow: Flow) -> tuple[StageOutline, ...]:
-    """Stages with nodes that telescope from the first to the last node of the way."""
+    """Stages with the nodes of their gain; the last reaches to the output's capacitors."""
     found: list[StageOutline] = []
-    nodes = flow.nodes
-    position = {node: index for index, node in enumerate(nodes)}
-    here = nodes[0] if stages else ""
-    for index, stage in enumerate(stages):
-        is_last = index == len(stages) - 1
-        start = _through_capacitors(flow, position[here], here)
-        end = _back_through_capacitors(flow, nodes[-1]) if is_last else stage.exit
+    here = flow.nodes[0] if stages else ""
+    for stage in stages:
+        is_last = stage is stages[-1]
+        # A controlled source in a loop holds its control node; what drives it lies before.
+        is_source = stage.configuration == words.CONTROLLED_SOURCE
+        start = _through_capacitors(flow, here) if is_source else stage.entry
+        end = _back_through_capacitors(flow, flow.nodes[-1]) if is_last else stage.exit
         found.append(StageOutline(stage.members, stage.configuration, start, end))
         here = stage.exit
     return tuple(found)
 
 
-def _through_capacitors(flow: Flow, index: int, node: str) -> str:
-    """The farthest node on the way behind capacitors only, from the node at an index."""
-    for step in islice(flow.steps, index, None):
+def _through_capacitors(flow: Flow, node: str) -> str:
+    """The farthest node on the way behind capacitors only, from a node of the way."""
+    for step in islice(flow.steps, flow.nodes.index(node), None):
         if step.kind != "capacitor":
             break
         node = step.end
@@ -264,6 +279,8 @@ def _implied_way(
         return "emitter", "collector"
     if name in groups.mirrors:
         return "base", "collector"
+    if stage.configuration == words.DIFFERENTIAL_PAIR:
+        return "emitter", "collector"
     if name in groups.complementary:
         return "base", "collector"
     if name in groups.darlingtons:
@@ -311,6 +328,8 @@ def _off_path(
     companions = groups.mirrors.get(name, ())
     if transistor.region == "cut off" or len(set(transistor.nodes)) == 1:
         return _role(transistor, words.SWITCHED_OFF, on_path=False)
+    if is_multiplier(wiring, transistor):
+        return _role(transistor, words.VBE_MULTIPLIER, on_path=False)
     if transistor.collector == transistor.base:
         word = words.CURRENT_MIRROR if companions else words.DIODE_CONNECTED
         return _role(transistor, word, companions=companions, on_path=False)

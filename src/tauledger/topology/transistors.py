@@ -30,6 +30,7 @@ COMPLEMENTARY_PAIR = "complementary feedback pair"
 DIODE_CONNECTED = "diode-connected"
 SERIES_CHANNEL = "series channel"
 """A field-effect transistor in its triode region, used as a resistance or a switch."""
+VBE_MULTIPLIER = "VBE multiplier"
 BIAS_ONLY = "bias only"
 SWITCHED_OFF = "switched off"
 
@@ -167,7 +168,7 @@ def _differential(
         if first.emitter == GROUND or _is_bypassed(wiring, first.emitter, largest):
             continue
         for branch in wiring.at(first.emitter):
-            if _links_emitters(branch, largest):
+            if GROUND not in (branch.first, branch.second) and _links_emitters(branch, largest):
                 for second in wiring.transistors_at(branch.far(first.emitter), "emitter"):
                     if second.emitter != first.emitter and _alike(first, second):
                         yield first.name, second.name

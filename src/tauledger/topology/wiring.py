@@ -7,7 +7,7 @@ node so joined to ground is *held* (AC ground). The driven source alone keeps it
 from __future__ import annotations
 
 import math
-from collections.abc import Iterator, Mapping
+from collections.abc import Iterable, Iterator, Mapping
 from dataclasses import dataclass
 
 from tauledger.bias.point import DevicePoint, OperatingPoint
@@ -158,6 +158,12 @@ def wire(
         node: _conductance(node, branches, terminals) for node in {*branches, *terminals}
     }
     cluster = _clusters(branches)
+    shunted = frozenset(
+        branch.far(GROUND)
+        for branch in branches.get(GROUND, ())
+        if isinstance(branch.element, Capacitor)
+    )
+    _lift_inputs(conductance, _sum_by_cluster(conductance, cluster), shunted, transistors.values())
     return Wiring(
         circuit,
         joined,
@@ -168,11 +174,7 @@ def wire(
         conductance,
         cluster,
         _sum_by_cluster(conductance, cluster),
-        frozenset(
-            branch.far(GROUND)
-            for branch in branches.get(GROUND, ())
-            if isinstance(branch.element, Capacitor)
-        ),
+        shunted,
         frozenset(
             joined[node]
             for element in circuit.elements
@@ -227,6 +229,22 @@ def _conductance(
         else:
             total += transistor.output_s
     return total
+
+
+def _lift_inputs(
+    conductance: dict[str, float],
+    total: Mapping[str, float],
+    shunted: frozenset[str],
+    transistors: Iterable[Transistor],
+) -> None:
+    """Lower what a base draws by the loop gain round an emitter that is free to follow it."""
+    for transistor in transistors:
+        emitter = transistor.emitter
+        if emitter in {GROUND, transistor.base} or emitter in shunted:
+            continue
+        below = max(total.get(emitter, 0.0) - transistor.transconductance_s, 1e-9)
+        loop = transistor.transconductance_s / below
+        conductance[transistor.base] -= transistor.input_s * loop / (1.0 + loop)
 
 
 class Union:

@@ -105,7 +105,9 @@ class Renamer:
             return text
         count = len(self.known)
         # The number keeps names apart that are the same word, or differ only in letter case.
-        return self.known.setdefault(text.lower(), f"{self.words[count % len(self.words)]}{count:04d}")
+        return self.known.setdefault(
+            text.lower(), f"{self.words[count % len(self.words)]}{count:04d}"
+        )
 
     def expression(self, node: Expression) -> Expression:
         match node:

@@ -3,6 +3,9 @@
 from __future__ import annotations
 
 import pytest
+from hypothesis import given, settings
+from hypothesis import strategies as st
+from lark.exceptions import UnexpectedInput
 
 from tauledger.netlist import parse, statements
 from tauledger.netlist.statements import Assignment, Call, Formula, Group, Statement, Table, Word
@@ -178,3 +181,29 @@ def test_plain_lines_are_split_as_the_grammar_would() -> None:
     assert by_hand[1:] == [word.text for word in by_grammar]
     assert statements._PLAIN_LINE.fullmatch("R1 Net-(Q1-C) 0 1k")
     assert not statements._PLAIN_LINE.fullmatch("R1 a 0 (1k)")
+
+
+PIECES = st.sampled_from(
+    ["a", "b-", "/c", "1k", "2.5", "npn", "(", ")", "=", " ", ",", "\t", "-(x)", "Net-(Q1-C)", "ac"]
+)
+
+
+@settings(max_examples=3000, deadline=None)
+@given(st.lists(PIECES, max_size=14).map("".join))
+def test_simple_lines_are_read_as_the_grammar_would(rest: str) -> None:
+    line = "Q1 " + rest
+    simple = statements._simple_items(line, 2)
+    try:
+        by_grammar = statements._parser().parse(line, start="items")
+    except UnexpectedInput:
+        by_grammar = None
+    if simple is not None:
+        assert simple == by_grammar
+
+
+def test_model_cards_need_no_grammar() -> None:
+    card = ".model qx npn(is=1e-14 bf=200, vaf=80) level=1 (a (b c))"
+    simple = statements._simple_items(card, len(".model"))
+    assert simple == statements._parser().parse(card, start="items")
+    for line in ("R1 a b {r}", "R1 a b r=limit(1)", "R1 a (b", "R1 a b) c", "R1 a = ", "R1 = 2"):
+        assert statements._simple_items(line, 2) is None

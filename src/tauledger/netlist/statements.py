@@ -25,6 +25,8 @@ MAXIMUM_NESTING = 40
 # With them split here, 50,000 plain elements read four times faster (tests/benchmarks/reader.py).
 _PLAIN_LINE = re.compile(r"(?:[^=(){}'\"]++|(?<=[-/])\([^\s,=(){}'\"]*+\))*+")
 _WORD = re.compile(r"(?:[^\s,=(){}'\"]|(?<=[-/])\([^\s,=(){}'\"]*+\))++")
+_TOKEN = re.compile(rf"{_WORD.pattern}|[=()]")
+_FORMULA_MARK = re.compile(r"[{}'\"]")
 _FIRST_WORD = re.compile(rf"[\s,]*({_WORD.pattern})")
 _DEFINITIONS = frozenset({".param", ".params", ".parameters", ".csparam"})
 _RAW = frozenset(
@@ -172,7 +174,48 @@ def parse_statement(line: LogicalLine, problems: list[Problem]) -> Statement:
         return Statement(name, tuple([Word(match[0], match.start()) for match in matches]), line)
     if text.count("(") > MAXIMUM_NESTING:
         _check_nesting(line)
-    return Statement(name, tuple(_parse(text, rule, line, problems)), line)
+    simple = _simple_items(text, name.end) if rule == "items" else None
+    items = _parse(text, rule, line, problems) if simple is None else simple
+    return Statement(name, tuple(items), line)
+
+
+def _simple_items(text: str, start: int) -> list[Item] | None:
+    """Words, ``name=word`` pairs and parentheses, as the grammar reads them; None for the rest.
+
+    Nearly every netlist holds nothing else (model cards included), and then lark need not even be
+    imported. A test holds this to the grammar.
+    """
+    if _FORMULA_MARK.search(text):
+        return None
+    tokens = list(_TOKEN.finditer(text, start))
+    levels: list[list[Item]] = [[]]
+    opened: list[int] = []
+    i = 0
+    while i < len(tokens):
+        token = tokens[i]
+        mark = token[0]
+        if mark == "(":
+            opened.append(token.start())
+            levels.append([])
+        elif mark == ")":
+            if not opened:
+                return None
+            inside = tuple(levels.pop())
+            levels[-1].append(Group(inside, opened.pop(), token.end()))
+        elif mark == "=":
+            return None
+        elif i + 1 < len(tokens) and tokens[i + 1][0] == "=":
+            value = tokens[i + 2] if i + 2 < len(tokens) else None
+            # A value that touches a parenthesis is a call.
+            if value is None or value[0] in "=()" or "(" in text[value.start() : value.end() + 1]:
+                return None
+            name = Word(mark, token.start())
+            levels[-1].append(Assignment(name, Word(value[0], value.start())))
+            i += 2
+        else:
+            levels[-1].append(Word(mark, token.start()))
+        i += 1
+    return None if opened else levels[0]
 
 
 def _start_rule(keyword: str) -> str:

@@ -20,7 +20,7 @@ import os, signal, sys, types, warnings
 from report.fixtures import ONE_STAGE
 from tauledger.problems import Problem, ProblemError, Severity
 stand_in = types.ModuleType("tauledger.analysis")
-def analyze(netlist, input=None, output=None, settings=None, midband_hz=None):
+def analyze(netlist, input=None, output=None, settings=None, midband_hz=None, square_wave_hz=None):
     if netlist == "broken":
         raise ProblemError(Problem("file-empty", Severity.ERROR, "the file is empty", advice="."))
     if netlist == "crash":

@@ -83,6 +83,7 @@ def analyze(
     output: str | None = None,
     settings: PathSettings | None = None,
     midband_hz: float | None = None,
+    square_wave_hz: float | None = None,
 ) -> Analysis:
     """Bias point, stages and corners of the path from ``input`` to ``output``.
 
@@ -101,6 +102,8 @@ def analyze(
     midband_hz
         Where the gain is meant to be judged, for a path that is not flat by intent; left out,
         what ``settings`` say, or else the middle of the flat stretch.
+    square_wave_hz
+        Frequency of a square wave whose droop is told; left out, a hundred times the low corner.
 
     Raises
     ------
@@ -110,7 +113,7 @@ def analyze(
     circuit, input, output = _completed(netlist, settings, input, output)
     if midband_hz is None and settings is not None and settings.midband is not None:
         midband_hz = settings.midband.value
-    return analyze_circuit(netlist, circuit, input, output, midband_hz)
+    return analyze_circuit(netlist, circuit, input, output, midband_hz, square_wave_hz)
 
 
 def analyze_circuit(
@@ -119,12 +122,13 @@ def analyze_circuit(
     input: str | None = None,
     output: str | None = None,
     midband_hz: float | None = None,
+    square_wave_hz: float | None = None,
 ) -> Analysis:
     """Analyse a flat circuit, which may differ from what its netlist says (one part changed, say).
 
     Raises ProblemError as :func:`analyze` does.
     """
-    found = _solve(circuit, input, output, midband_hz)
+    found = _solve(circuit, input, output, midband_hz, square_wave_hz)
     path, solution, network, exact, held, corners = found
     topology = recognise(circuit, solution.point, path)
     admittances = device_admittances(solution)
@@ -168,7 +172,11 @@ class _Solved(NamedTuple):
 
 
 def _solve(
-    circuit: Circuit, input: str | None, output: str | None, midband_hz: float | None
+    circuit: Circuit,
+    input: str | None,
+    output: str | None,
+    midband_hz: float | None,
+    square_wave_hz: float | None = None,
 ) -> _Solved:
     if floating := find_floating_nodes(circuit):
         raise ProblemError(*floating)
@@ -184,7 +192,7 @@ def _solve(
     )
     held = _held_pairs(circuit, network)
     supplies = _supply_pairs(circuit, network, path.source)
-    corners = find_corners(exact, network.parts, held, supplies, midband_hz)
+    corners = find_corners(exact, network.parts, held, supplies, midband_hz, square_wave_hz)
     return _Solved(path, solution, network, exact, held, corners)
 
 

@@ -82,7 +82,9 @@ def report(arguments: argparse.Namespace) -> int:
 
     netlist = read(arguments.netlist)
     settings = _settings(arguments, Path(arguments.netlist))
-    analysis = analyze(netlist, arguments.input, arguments.output, settings, arguments.midband)
+    ends = arguments.input, arguments.output
+    wave = arguments.square_wave
+    analysis = analyze(netlist, *ends, settings, arguments.midband, wave)
     review, simulation = analysis.review, None
     if arguments.simulate:
         review, simulation = _simulated(analysis)
@@ -379,6 +381,9 @@ def _report_arguments(parser: argparse.ArgumentParser) -> None:
     parser.add_argument("netlist", metavar="NETLIST", help="SPICE netlist of the amplifier")
     _path_arguments(parser)
     _midband_argument(parser)
+    parser.add_argument(
+        "--square-wave", metavar="FREQ", type=_frequency, help="tell its droop (1kHz)"
+    )
     parser.add_argument("--against", metavar="REV", help="add the changes since a revision in git")
     parser.add_argument(
         "--simulate", action="store_true", help="add figures from ngspice, run beside"

@@ -99,6 +99,18 @@ CL out 0 10p"""
     assert any("46.1 ms" in text for text in low)
 
 
+def test_droop_of_a_given_square_wave() -> None:
+    text = """rc
+VS in 0 AC 1
+C1 in out 1u
+RL out 0 10k
+.end
+"""
+    low = analyze(parse(text), output="out", square_wave_hz=159.1549).corners.low
+    # 1 − exp(−π f_L/f) with f_L = 15.92 Hz.
+    assert any("159 Hz droops by 27.0 %" in note for note in low.timing)
+
+
 def test_rules_of_one_pole_are_withheld_where_several_interact() -> None:
     timing = corner(path_of(ladder([1e3] * 3, "high")), "high").timing
     assert any("no simple rule" in text for text in timing)

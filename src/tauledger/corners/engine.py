@@ -71,6 +71,7 @@ def find_corners(
     fixed_voltage_pairs: HeldPairs,
     supply_pairs: HeldPairs,
     midband_hz: float | None = None,
+    square_wave_hz: float | None = None,
 ) -> Corners:
     """Analyse one signal path.
 
@@ -89,6 +90,8 @@ def find_corners(
         Where to judge the gain, when the path is not meant to be flat; the corners then are
         where the gain has fallen by 3 dB from there, and what shapes the response between them
         is in-band.
+    square_wave_hz
+        Frequency of a square wave whose droop is told.
 
     Raises
     ------
@@ -114,7 +117,7 @@ def find_corners(
     accounts = part_accounts(path.passband.midband_hz, ends, sides.looped, groups)
     accounts += [idle_account(part, "straight across a source: no pole") for part in across_source]
     in_band = [model.parts[i].name for model, i in ends.in_band]
-    low, high = (_corner(path, model, in_band) for model in (ends.low, ends.high))
+    low, high = (_corner(path, model, in_band, square_wave_hz) for model in (ends.low, ends.high))
     return Corners(
         midband_hz=path.passband.midband_hz,
         flat=True,
@@ -245,7 +248,9 @@ def _sides(path: _Path, parts: Sequence[ReactivePart], held: HeldPairs) -> Sides
     return sides if abs(sides.midband.gain) > 1e-6 * path.exact_gain else None
 
 
-def _corner(path: _Path, model: EndModel, in_band: Sequence[str]) -> Corner:
+def _corner(
+    path: _Path, model: EndModel, in_band: Sequence[str], square_wave_hz: float | None
+) -> Corner:
     exact_hz = path.edges[0 if model.low else 1]
     roots = Roots.of(model)
     whole = total(model)
@@ -279,7 +284,7 @@ def _corner(path: _Path, model: EndModel, in_band: Sequence[str]) -> Corner:
         highest_hz=bounds.highest_hz,
         movers=movers,
         changes=what_if(model, exact_hz, [name for name, _ in movers[:2]]),
-        timing=timing_notes(model, roots, exact_hz, path.natural)
+        timing=timing_notes(model, roots, exact_hz, path.natural, square_wave_hz)
         if path.unstable_hz is None
         else (),
     )

@@ -214,7 +214,11 @@ def what_if(model: EndModel, exact_hz: float | None, names: Sequence[str]) -> tu
 
 
 def timing_notes(
-    model: EndModel, roots: Roots, exact_hz: float | None, natural: ComplexArray
+    model: EndModel,
+    roots: Roots,
+    exact_hz: float | None,
+    natural: ComplexArray,
+    square_wave_hz: float | None = None,
 ) -> tuple[str, ...]:
     """Rise time, droop and settling, each where the rule behind it holds.
 
@@ -231,13 +235,13 @@ def timing_notes(
         rise = math.log(9.0) / (TWO_PI * exact_hz)
         return (f"rise time 10-90 %: {format_quantity(rise, 's')} (one dominant pole)",)
     notes = []
-    frequency = DROOP_RATIO * exact_hz
+    frequency = DROOP_RATIO * exact_hz if square_wave_hz is None else square_wave_hz
+    wave = f"a square wave of {format_quantity(frequency, 'Hz')}"
     if alone:
-        droop = 1.0 - math.exp(-math.pi / DROOP_RATIO)
-        notes.append(
-            f"a square wave of {format_quantity(frequency, 'Hz')} droops by {droop * 100:.1f} % "
-            "in half a period (one dominant pole)"
-        )
+        droop = 1.0 - math.exp(-math.pi * exact_hz / frequency)
+        notes.append(f"{wave} droops by {droop * 100:.1f} % in half a period (one dominant pole)")
+    elif square_wave_hz is not None:
+        notes.append(f"{wave}: no simple rule for its droop, more than one pole at the corner")
     decay = np.abs(natural.real[np.abs(natural) > 1e-9])
     if decay.size:
         settling = math.log(100.0) / float(decay.min())

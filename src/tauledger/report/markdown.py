@@ -93,7 +93,24 @@ def _path_cells(check: NetlistCheck) -> tuple[str, ...]:
     if check.path:
         route = f"{code(check.path)}: {route}"
     corners = (_corner(row.low), _corner(row.high)) if row else ("—", "—")
-    return (code(check.netlist), route, _gain(row), *corners, _standing(check))
+    figures = (_gain(row), *corners)
+    names = ("midband gain", "low corner", "high corner")
+    changed = [f"{text}{_since(check, name)}" for text, name in zip(figures, names, strict=True)]
+    return (code(check.netlist), route, *changed, _standing(check))
+
+
+def _since(check: NetlistCheck, figure: str) -> str:
+    """How a figure of the path moved since the base, in parentheses; empty without a base."""
+    comparison = check.review.comparison if check.review else None
+    if comparison is None:
+        return ""
+    for change in comparison.figures:
+        if change.figure == figure and not change.part:
+            if change.relative is None:
+                return " (new)" if change.old is None and change.new is not None else ""
+            moved = f"{100.0 * change.relative:+.1f}"
+            return " (unchanged)" if moved in ("+0.0", "-0.0") else f" ({moved} % since base)"
+    return ""
 
 
 def _standing(check: NetlistCheck) -> str:
@@ -127,7 +144,7 @@ def _limits(rows: Sequence[tuple[NetlistCheck, LimitRow]]) -> str:
             code(one.netlist),
             code(one.path),
             sentence(row.figure),
-            _quantity(row.value, "" if row.unit == "V/V" else row.unit),
+            _quantity(row.value, "" if row.unit == "V/V" else row.unit) + _since(one, row.figure),
             sentence(row.minimum),
             sentence(row.maximum),
             row.verdict if row.verdict == "met" else f"**{row.verdict}**",

@@ -10,7 +10,7 @@ B1  Σ R_i⁰ C_i is the s coefficient of the denominator: Gray & Searle (1969),
 B2  The twin at the other end of the polynomial: derived, no source.
 B3  b2 = Σ τ_i⁰ τ_jⁱ, order free: Cochrun & Grabel, IEEE Trans. Circuit Theory CT-20, 1973
     [P, via EDN article 4417862].
-B4  Numerator by transfer constants: Hajimiri 2010 [P, abstract and lecture notes].
+B4  Numerator by transfer constants: Hajimiri 2010 [P, abstract and course notes].
 B8  Bounds of the exact corner where all poles are real: derived, no source.
 """
 

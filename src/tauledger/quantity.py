@@ -65,8 +65,6 @@ TRAPS: dict[str, tuple[str, str]] = {
 
 OHM_SIGNS = "Ω\u2126"
 """Greek capital omega and the ohm sign."""
-MICRO_SIGNS = "µμ"
-"""Micro sign and Greek small mu."""
 
 _SPICE_EXPONENT = {
     "t": 12, "g": 9, "k": 3, "m": -3, "u": -6, "µ": -6, "μ": -6, "n": -9, "p": -12, "f": -15,

@@ -4,17 +4,16 @@ from __future__ import annotations
 
 import math
 from collections.abc import Sequence
-from dataclasses import replace
+from dataclasses import dataclass, replace
 
 import numpy as np
 
+from tauledger.corners.band import TWO_PI
 from tauledger.corners.effects import Ends, switching_effect
 from tauledger.corners.model import PartAccount
 from tauledger.corners.ports import EndModel
 from tauledger.quantity import format_quantity
 from tauledger.smallsignal.network import FloatArray, ReactivePart
-
-TWO_PI = 2.0 * math.pi
 
 
 def summands(model: EndModel) -> FloatArray:
@@ -43,12 +42,18 @@ def part_accounts(
     for model in (ends.low, ends.high):
         whole = total(model)
         terms = summands(model)
+        columns = _Columns.of(model)
         end = "low" if model.low else "high"
         for i in range(len(model.parts)):
-            accounts.append(_account(model, i, end, float(terms[i]) / whole, midband_hz))
+            share = float(terms[i]) / whole
+            accounts.append(_account(model, columns, i, end, share, midband_hz))
+    known: dict[int, _Columns] = {}
     for label, members in (("in-band", ends.in_band), ("no effect", ends.idle)):
         for model, i in members:
-            accounts.append(_account(model, i, label, None, midband_hz))
+            if id(model) not in known:
+                known[id(model)] = _Columns.of(model)
+            columns = known[id(model)]
+            accounts.append(_account(model, columns, i, label, None, midband_hz))
     loop = "closes a loop of other capacitors that are short at midband: no pole of its own"
     accounts += [idle_account(part, loop) for part in looped]
     members_of = {group[0].name: group for group in groups}
@@ -86,12 +91,31 @@ def _own_part(account: PartAccount, part: ReactivePart) -> PartAccount:
     )
 
 
+@dataclass(frozen=True, slots=True)
+class _Columns:
+    """What a model tells of all its parts at once, (K,) each."""
+
+    resistance_ohm: FloatArray
+    tau_s: FloatArray
+    zero: FloatArray
+    effect: FloatArray
+
+    @classmethod
+    def of(cls, model: EndModel) -> _Columns:
+        return cls(model.resistance_ohm, model.tau_s, model.own_zero(), switching_effect(model))
+
+
 def _account(
-    model: EndModel, i: int, end: str, share: float | None, midband_hz: float
+    model: EndModel,
+    columns: _Columns,
+    i: int,
+    end: str,
+    share: float | None,
+    midband_hz: float,
 ) -> PartAccount:
     part = model.parts[i]
-    resistance, tau = float(model.resistance_ohm[i]), float(model.tau_s[i])
-    zero = float(model.own_zero()[i])
+    resistance, tau = float(columns.resistance_ohm[i]), float(columns.tau_s[i])
+    zero = float(columns.zero[i])
     corner = 1.0 / tau if 0 < tau < math.inf else None
     finite_zero = corner is not None and 1e-6 * corner < abs(zero) < 1e6 * corner
     return PartAccount(
@@ -102,18 +126,18 @@ def _account(
         corner_hz=corner / TWO_PI if corner is not None else None,
         share=share,
         zero_hz=-zero / TWO_PI if finite_zero else None,
-        effect=float(switching_effect(model)[i]),
-        reason=_reason(model, i, end, midband_hz),
+        effect=float(columns.effect[i]),
+        reason=_reason(model, columns, i, end, midband_hz),
     )
 
 
-def _reason(model: EndModel, i: int, end: str, midband_hz: float) -> str:
+def _reason(model: EndModel, columns: _Columns, i: int, end: str, midband_hz: float) -> str:
     part = model.parts[i]
     model_end = "low" if model.low else "high"
     omega = TWO_PI * midband_hz
     value = float(part.value[0])
     reactance = omega * value if part.is_inductor else 1.0 / (omega * value) if value else math.inf
-    seen = float(model.resistance_ohm[i])
+    seen = float(columns.resistance_ohm[i])
     state = "a short" if model.low != part.is_inductor else "an open circuit"
     if not part.is_inductor and not model.low and seen < 1e-6 * reactance:
         return "its two ends are tied together at midband by other parts"
@@ -122,7 +146,7 @@ def _reason(model: EndModel, i: int, end: str, midband_hz: float) -> str:
         f"{format_quantity(reactance, 'Ω')} stands against {format_quantity(seen, 'Ω')}: {state}"
     )
     if end != model_end:
-        text += f"; switching it moves the gain by {switching_effect(model)[i] * 100:.1f} %"
+        text += f"; switching it moves the gain by {columns.effect[i] * 100:.1f} %"
     return text
 
 

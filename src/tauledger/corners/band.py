@@ -11,6 +11,7 @@ import numpy as np
 from tauledger.smallsignal.network import FloatArray
 from tauledger.smallsignal.response import ComplexArray, Response
 
+TWO_PI = 2.0 * math.pi
 HALF_POWER = 1.0 / math.sqrt(2.0)
 """−3.0103 dB, as IUPAC and ISO define level differences (references C5, read)."""
 HALF_POWER_DB = 20.0 * math.log10(math.sqrt(2.0))

@@ -8,7 +8,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from tauledger.corners.band import HALF_POWER
+from tauledger.corners.band import HALF_POWER, TWO_PI
 from tauledger.corners.ports import EndModel, midband_network
 from tauledger.corners.sides import HeldPairs, Sides, tied_by
 from tauledger.smallsignal.network import FloatArray, ReactivePart
@@ -68,7 +68,7 @@ def _in_band(model: EndModel, edges: tuple[float | None, ...], *, any_step: bool
     if not model.parts:
         return []
     low_hz, high_hz = edges
-    corner_hz = 1.0 / ((2.0 * math.pi) * model.tau_s)
+    corner_hz = 1.0 / (TWO_PI * model.tau_s)
     step = np.abs(model.switched_gain() / model.gain)
     small = (step > HALF_POWER) & (step < 1.0 / HALF_POWER)
     inside = (corner_hz > IN_BAND_FACTOR * (low_hz or 0.0)) & (

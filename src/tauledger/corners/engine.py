@@ -11,6 +11,7 @@ import numpy as np
 from tauledger.corners.accounts import idle_account, part_accounts, summands, total
 from tauledger.corners.band import (
     HIGHEST_HZ,
+    TWO_PI,
     Passband,
     Sweep,
     find_edge,
@@ -62,7 +63,6 @@ LARGEST_NETWORK = 350
 TRANSISTOR_CAPACITANCES = {"Cπ", "Cμ", "Cμx", "Cgs", "Cgd", "Cds"}
 SHORTEST_SWEEP = 12
 """Points of the sweep that must be left to look for a passband in."""
-TWO_PI = 2.0 * math.pi
 
 
 def find_corners(

@@ -20,11 +20,10 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from tauledger.corners.band import HALF_POWER, false_position
+from tauledger.corners.band import HALF_POWER, TWO_PI, false_position
 from tauledger.corners.ports import EndModel
 from tauledger.smallsignal.response import ComplexArray
 
-TWO_PI = 2.0 * math.pi
 REAL_TOLERANCE = 1e-4
 """Equal real poles come out of the eigenvalue routine as a ring of about this width."""
 EDGE_DECADES, EDGE_POINTS = 2.0, 49

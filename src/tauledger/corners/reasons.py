@@ -8,14 +8,13 @@ from dataclasses import replace
 
 import numpy as np
 
-from tauledger.corners.band import Passband, Sweep
+from tauledger.corners.band import TWO_PI, Passband, Sweep
 from tauledger.corners.estimates import Estimate, Roots, model_edge_hz
 from tauledger.corners.ports import EndModel
 from tauledger.quantity import format_quantity
 from tauledger.smallsignal.network import ReactivePart
 from tauledger.smallsignal.response import ComplexArray, Response, gain_sensitivity
 
-TWO_PI = 2.0 * math.pi
 INSPECTION_TOLERANCE = 0.02
 """Hand and exact midband gain may differ by this before it is said."""
 ESTIMATE_TOLERANCE = 0.05

@@ -15,6 +15,7 @@ from dataclasses import dataclass, replace
 
 import numpy as np
 
+from tauledger.corners.band import TWO_PI
 from tauledger.corners.ports import Midband, midband_network
 from tauledger.smallsignal.network import FloatArray, ReactivePart
 from tauledger.smallsignal.response import Response
@@ -22,8 +23,6 @@ from tauledger.smallsignal.response import Response
 LONGEST_ITERATION = 8
 HeldPairs = Sequence[tuple[int, int]]
 """Pairs of node indices (−1 is ground) that something holds together."""
-MIDDLE_ZONE = 3.0
-"""A part within this factor of what it sees at midband is in-band if it also moves the gain."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -41,7 +40,7 @@ def impedance_seen(
     response: Response, parts: Sequence[ReactivePart], frequency_hz: float
 ) -> FloatArray:
     """(K,): magnitude in Ω of what each part sees, every other part as it is at the frequency."""
-    s = 2j * math.pi * frequency_hz
+    s = 1j * TWO_PI * frequency_hz
     inverse = np.linalg.inv(response.conductance + s * response.reactance)
     seen = np.empty(len(parts))
     for k, part in enumerate(parts):
@@ -72,7 +71,7 @@ def ratio_at_midband(
 
     Above one the part is in the state it has at high frequency, so it belongs to the low end.
     """
-    omega = 2.0 * math.pi * midband_hz
+    omega = TWO_PI * midband_hz
     values = np.array([part.value[0] for part in parts])
     # Rounding gives a part whose ends are tied a resistance of either sign of zero.
     resistance_ohm = np.abs(resistance_ohm)

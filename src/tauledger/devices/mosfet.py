@@ -33,7 +33,6 @@ class SquareLaw:
     modulation_per_v: FloatArray
     gamma: FloatArray
     phi_v: FloatArray
-    root_phi: FloatArray
     builtin_v: FloatArray
 
 
@@ -49,7 +48,6 @@ class SquareLawMosfet(Mosfet[SquareLaw]):
             modulation_per_v=stack(cards, "lambda", 0.0),
             gamma=channel.gamma,
             phi_v=channel.phi_v,
-            root_phi=np.sqrt(channel.phi_v),
             builtin_v=channel.builtin_v,
         )
 

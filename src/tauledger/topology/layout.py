@@ -26,11 +26,6 @@ class Layout:
     on_way: frozenset[str]
     """Joined nodes the signal passes; a differential output's second node included."""
 
-    def passes(self, transistor: Transistor, terminal: str) -> bool:
-        """Whether the signal enters or leaves the transistor at ``base``, ``emitter`` …"""
-        role = self.transistors[transistor.name]
-        return transistor.word(terminal) in (role.input_terminal, role.output_terminal)
-
     def enters_base(self, transistor: Transistor) -> bool:
         role = self.transistors[transistor.name]
         return role.input_terminal == transistor.word("base")

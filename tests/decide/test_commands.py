@@ -58,7 +58,7 @@ def test_workers_give_the_same_figures(
     command += ["--tolerance", "C*=20%"]
     assert main(command) == 0
     alone = capsys.readouterr().out
-    monkeypatch.setattr("tauledger.deciding.FEW", 100)
+    monkeypatch.setattr("tauledger.commands.workers.FEW", 100)
     assert main(command) == 0
     assert capsys.readouterr().out == alone
 

@@ -1,0 +1,83 @@
+"""Arguments that commands share, and what they add to a netlist."""
+
+from __future__ import annotations
+
+import argparse
+from collections.abc import Sequence
+from dataclasses import replace
+from pathlib import Path
+from typing import TYPE_CHECKING
+
+if TYPE_CHECKING:
+    from tauledger.analysis import Analysis
+    from tauledger.configuration.settings import PathSettings
+    from tauledger.revisions import Aim
+
+
+def path_arguments(parser: argparse.ArgumentParser, output: str = "--output") -> None:
+    path = parser.add_argument_group("what the netlist leaves open")
+    path.add_argument("--input", metavar="NAME", help="independent source that drives the path")
+    path.add_argument(output, metavar="NODE", help="output node, or A,B between two")
+    path.add_argument(
+        "--config", metavar="FILE", type=Path, help="in place of the tauledger.toml found"
+    )
+    path.add_argument("--path", metavar="NAME", help="signal path of the configuration")
+    path.add_argument(
+        "--generic-models", action="store_true", help="stand-ins for missing models, marked so"
+    )
+
+
+def midband_argument(parser: argparse.ArgumentParser) -> None:
+    parser.add_argument(
+        "--midband", metavar="FREQ", type=frequency, help="judge gain there (1kHz): equalisers"
+    )
+
+
+def frequency(text: str) -> float:
+    from tauledger.quantity import parse_si
+
+    try:
+        value, unit = parse_si(text)
+    except ValueError as error:
+        raise argparse.ArgumentTypeError(str(error)) from None
+    if unit not in ("", "Hz") or not 1e-3 <= value <= 1e12:
+        expected = "a frequency from 1mHz to 1THz such as 1kHz"
+        raise argparse.ArgumentTypeError(f"expected {expected}, found {text!r}")
+    return value
+
+
+def settings_of(
+    arguments: argparse.Namespace, netlist: Path, roots: Sequence[Path] | None = None
+) -> PathSettings | None:
+    """What the configuration and the options add to the netlist."""
+    from tauledger.configuration.choice import find_settings
+    from tauledger.netlist.include import default_roots
+
+    roots = roots or default_roots(netlist)
+    settings = find_settings(netlist, roots, arguments.config, arguments.path)
+    if arguments.generic_models and (settings is None or settings.generic is None):
+        from tauledger.configuration.settings import GenericModels, PathSettings
+
+        settings = replace(settings or PathSettings(), generic=GenericModels())
+    return settings
+
+
+def analysis_of(arguments: argparse.Namespace) -> tuple[Analysis, PathSettings | None]:
+    from tauledger.analysis import analyze, read
+
+    netlist = read(arguments.netlist)
+    settings = settings_of(arguments, Path(arguments.netlist))
+    analysis = analyze(netlist, arguments.input, arguments.output, settings, arguments.midband)
+    return analysis, settings
+
+
+def aim_of(arguments: argparse.Namespace) -> Aim:
+    """What is asked of both sides of a comparison, each with the configuration it has."""
+    from tauledger.revisions import Aim
+
+    return Aim(
+        arguments.input,
+        arguments.output,
+        arguments.midband,
+        lambda place: settings_of(arguments, place.path, place.roots),
+    )

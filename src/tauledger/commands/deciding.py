@@ -1,0 +1,83 @@
+"""What the commands of a decision share: options, their values, the output."""
+
+from __future__ import annotations
+
+import argparse
+import sys
+from collections.abc import Callable
+from typing import TYPE_CHECKING, TypeVar
+
+from tauledger.commands.arguments import midband_argument, path_arguments
+from tauledger.commands.output import deliver, show_page
+from tauledger.problems import Problem, ProblemError, Severity
+from tauledger.quantity import parse_si
+
+if TYPE_CHECKING:
+    from tauledger.report.layout import Line
+    from tauledger.report.page import Page
+    from tauledger.review.decisions import Choice, Spread, Stress, TemperatureSweep
+
+    Decided = TypeVar("Decided", Spread, Choice, Stress, TemperatureSweep)
+
+
+def tolerance_argument(parser: argparse.ArgumentParser) -> None:
+    parser.add_argument(
+        "--tolerance",
+        metavar="PARTS=WINDOW",
+        action="append",
+        default=[],
+        help="'R*=5%%', 'C*=-20..+80%%', 'Q*.current_gain=50%%'; repeat",
+    )
+
+
+def decision_arguments(
+    parser: argparse.ArgumentParser, own: Callable[[argparse.ArgumentParser], None]
+) -> None:
+    """The arguments of a decision on one amplifier: its own, then those all share."""
+    parser.usage = "%(prog)s [OPTIONS] NETLIST"
+    parser.add_argument("netlist", metavar="NETLIST", help="SPICE netlist of the amplifier")
+    own(parser)
+    parser.add_argument(
+        "--format", choices=("text", "json"), default="text", help="text (default) or json"
+    )
+    path_arguments(parser)
+    midband_argument(parser)
+
+
+def show_decision(
+    form: str, decision: Decided, page: Callable[[Page, Decided], list[Line]]
+) -> None:
+    """Print the rows of a decision as JSON, or as the page that ``page`` lays out."""
+    if form == "json":
+        from tauledger.report.decision_json import decision_json
+
+        text = decision_json(decision)
+        deliver(lambda: sys.stdout.write(text))
+    else:
+        show_page(lambda on: page(on, decision))
+
+
+def frequency(option: str, text: str) -> float:
+    value, unit = parsed(option, text, "a frequency such as 20Hz")
+    if unit not in ("", "Hz") or value <= 0.0:
+        raise refused(option, text, "a frequency such as 20Hz")
+    return value
+
+
+def percent(option: str, text: str) -> float:
+    value, unit = parsed(option, text, "a percentage such as 10%")
+    if unit not in ("", "%") or not 0.0 <= value < 100.0:
+        raise refused(option, text, "a percentage from 0 to below 100")
+    return value / 100.0
+
+
+def parsed(option: str, text: str, expected: str) -> tuple[float, str]:
+    try:
+        return parse_si(text)
+    except ValueError:
+        raise refused(option, text, expected) from None
+
+
+def refused(option: str, found: str, expected: str) -> ProblemError:
+    message = f"{option}: found {found[:60]!r}; expected {expected}"
+    return ProblemError(Problem("usage", Severity.ERROR, message, None, f"Correct {option}."))

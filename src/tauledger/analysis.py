@@ -27,6 +27,7 @@ from tauledger.review.rows import Review
 from tauledger.smallsignal import (
     LinearNetwork,
     Response,
+    decomposed,
     device_admittances,
     drive_vector,
     linear_network,
@@ -185,11 +186,9 @@ def _solve(
     network = linear_network(solution)
     source = next(e for e in circuit.elements if e.name == path.source)
     assert isinstance(source, IndependentSource)
-    exact = response(
-        network,
-        drive_vector(network, source),
-        sense_vector(network, path.output_node, path.output_reference),
-    )
+    drive = drive_vector(network, source)
+    sense = sense_vector(network, path.output_node, path.output_reference)
+    exact = decomposed(response(network, drive, sense))
     held = _held_pairs(circuit, network)
     supplies = _supply_pairs(circuit, network, path.source)
     corners = find_corners(exact, network.parts, held, supplies, midband_hz, square_wave_hz)

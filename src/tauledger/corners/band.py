@@ -8,8 +8,9 @@ from dataclasses import dataclass
 
 import numpy as np
 
+from tauledger.smallsignal.modes import ComplexArray
 from tauledger.smallsignal.network import FloatArray
-from tauledger.smallsignal.response import ComplexArray, Response
+from tauledger.smallsignal.response import Response
 
 TWO_PI = 2.0 * math.pi
 HALF_POWER = 1.0 / math.sqrt(2.0)

@@ -45,21 +45,19 @@ from tauledger.corners.sides import (
     split_sides,
 )
 from tauledger.problems import Problem, ProblemError, Severity
+from tauledger.smallsignal.modes import ComplexArray, natural_frequencies
 from tauledger.smallsignal.network import ReactivePart
 from tauledger.smallsignal.response import (
-    ComplexArray,
+    LARGEST_DECOMPOSED,
     Response,
     condensed,
     edge_sensitivity,
-    natural_frequencies,
 )
 
 TIE_MARGIN = 0.2
 """Parts that move a corner by amounts closer than this cannot be told apart within usual part
 tolerance (±10 to ±20 %; common practice, no source)."""
 LEAST_MOVE = 0.01
-LARGEST_NETWORK = 350
-"""Unknowns; the time for their eigenvalues grows with the cube of the number."""
 TRANSISTOR_CAPACITANCES = {"Cπ", "Cμ", "Cμx", "Cgs", "Cgd", "Cds"}
 SHORTEST_SWEEP = 12
 """Points of the sweep that must be left to look for a passband in."""
@@ -162,11 +160,8 @@ class _Path:
 
 
 def _survey(response: Response, parts: Sequence[ReactivePart], midband_hz: float | None) -> _Path:
-    short = condensed(response)
-    if short.drive.size > LARGEST_NETWORK:
-        raise ProblemError(_too_large(short.drive.size))
-    natural = natural_frequencies(short.conductance, short.reactance)
-    sweep = sweep_response(short, natural)
+    natural = _natural(response)
+    sweep = sweep_response(response, natural)
     passband = (
         _transistor_passband(response, parts, sweep)
         if midband_hz is None
@@ -174,7 +169,7 @@ def _survey(response: Response, parts: Sequence[ReactivePart], midband_hz: float
     )
     exact_gain = response.magnitude(passband.midband_hz)
     low, high = (
-        find_edge(short, sweep, passband.midband_hz, upward=up) if exact_gain > 0 else None
+        find_edge(response, sweep, passband.midband_hz, upward=up) if exact_gain > 0 else None
         for up in (False, True)
     )
     movers = tuple(_movers(response, parts, edge, passband.midband_hz) for edge in (low, high))
@@ -187,15 +182,24 @@ def _survey(response: Response, parts: Sequence[ReactivePart], midband_hz: float
         (low, high),
         exact_gain,
         (movers[0], movers[1]),
-        _unstable_hz(short, natural),
+        _unstable_hz(response, natural),
     )
+
+
+def _natural(response: Response) -> ComplexArray:
+    if response.modes is not None:
+        return response.modes.natural
+    short = condensed(response)
+    if short.drive.size > LARGEST_DECOMPOSED:
+        raise ProblemError(_too_large(short.drive.size))
+    return natural_frequencies(short.conductance, short.reactance)
 
 
 def _too_large(size: int) -> Problem:
     return Problem(
         "circuit-too-large",
         Severity.ERROR,
-        f"the signal network has {size} unknowns, more than the {LARGEST_NETWORK} whose poles "
+        f"the signal network has {size} unknowns, more than the {LARGEST_DECOMPOSED} whose poles "
         "are worked out",
         None,
         "Give the netlist of the amplifier alone, without the rest of the board.",
@@ -283,7 +287,7 @@ def _corner(
         lowest_hz=bounds.lowest_hz,
         highest_hz=bounds.highest_hz,
         movers=movers,
-        changes=what_if(model, exact_hz, [name for name, _ in movers[:2]]),
+        changes=what_if(model, roots, exact_hz, [name for name, _ in movers[:2]]),
         timing=timing_notes(model, roots, exact_hz, path.natural, square_wave_hz)
         if path.unstable_hz is None
         else (),

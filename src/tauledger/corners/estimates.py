@@ -22,11 +22,12 @@ import numpy as np
 
 from tauledger.corners.band import HALF_POWER, TWO_PI, false_position
 from tauledger.corners.ports import EndModel
-from tauledger.smallsignal.response import ComplexArray
+from tauledger.smallsignal.modes import ComplexArray
+from tauledger.smallsignal.network import FloatArray
 
 REAL_TOLERANCE = 1e-4
 """Equal real poles come out of the eigenvalue routine as a ring of about this width."""
-EDGE_DECADES, EDGE_POINTS = 2.0, 49
+_SCAN = np.logspace(-2.0, 2.0, 49)
 ORDER_TOLERANCE = 0.03
 """Largest third-order term, relative to the first-order one at the corner, that a second-order
 fit may leave out."""
@@ -38,10 +39,23 @@ class Roots:
 
     poles: ComplexArray
     zeros: ComplexArray
+    low: bool
 
     @classmethod
     def of(cls, model: EndModel) -> Roots:
-        return cls(model.poles(), model.zeros())
+        return cls(model.poles(), model.zeros(), model.low)
+
+    def log_gain(self, omega: FloatArray) -> FloatArray:
+        """ln|H/H₀| of the end's model at (F,) rad/s, the other end at midband."""
+        zeros, poles = (
+            np.abs(self._factors(roots, 1j * omega[:, None])) for roots in (self.zeros, self.poles)
+        )
+        with np.errstate(divide="ignore"):
+            return np.asarray(np.log(zeros).sum(axis=1) - np.log(poles).sum(axis=1))
+
+    def _factors(self, roots: ComplexArray, s: ComplexArray) -> ComplexArray:
+        """Linear factors, (F, K): s − r, or 1 − s/r where the midband lies at s = 0."""
+        return s - roots if self.low else 1.0 - s / roots
 
 
 @dataclass(frozen=True, slots=True)
@@ -69,7 +83,7 @@ def best_estimate(model: EndModel, roots: Roots, sum_hz: float) -> Estimate:
     second = _second_order(denominator, numerator)
     if second is not None and _higher_terms_small(denominator, numerator, second):
         return Estimate(_from_normalised(second, model), "second order with zeros")
-    edge = model_edge_hz(model, sum_hz)
+    edge = model_edge_hz(roots, sum_hz)
     if edge is not None:
         return Estimate(edge, "all poles and zeros of this end")
     return Estimate(sum_hz, "sum of time constants")
@@ -91,26 +105,27 @@ def rigorous_bounds(model: EndModel, roots: Roots, sum_hz: float) -> Bounds:
     return Bounds(max(sum_hz, root * math.sqrt(math.log(2.0))), root)
 
 
-def model_edge_hz(model: EndModel, near_hz: float) -> float | None:
+def model_edge_hz(roots: Roots, near_hz: float) -> float | None:
     """−3 dB frequency of the end's own model, every order, within two decades of ``near_hz``.
 
     The other end is taken at midband, so this differs from the exact corner by the overlap.
     None when the gain does not cross −3 dB there.
     """
-    if not model.parts:
+    if not roots.poles.size:
         return None
-    omega = TWO_PI * near_hz * np.logspace(-EDGE_DECADES, EDGE_DECADES, EDGE_POINTS)
-    below = np.flatnonzero(model.relative_gain(omega) < HALF_POWER)
+    omega = TWO_PI * near_hz * _SCAN
+    target = math.log(HALF_POWER)
+    gain = roots.log_gain(omega)
+    below = np.flatnonzero(gain < target)
     if not below.size:
         return None
-    outer = int(below[-1] if model.low else below[0])
-    inner = outer + (1 if model.low else -1)
+    outer = int(below[-1] if roots.low else below[0])
+    inner = outer + (1 if roots.low else -1)
     if not 0 <= inner < omega.size:
         return None
 
     def excess(log_omega: float) -> float:
-        gain = float(model.relative_gain(np.array([math.exp(log_omega)]))[0])
-        return math.log(max(gain, 1e-300) / HALF_POWER)
+        return float(roots.log_gain(np.array([math.exp(log_omega)]))[0]) - target
 
     ends = math.log(float(omega[inner])), math.log(float(omega[outer]))
     return math.exp(false_position(excess, *ends)) / TWO_PI

@@ -26,13 +26,15 @@ is the highest-order coefficient ratio: references B2.
 
 from __future__ import annotations
 
+import math
 from collections.abc import Sequence
 from dataclasses import dataclass
 
 import numpy as np
 
+from tauledger.smallsignal.modes import ComplexArray
 from tauledger.smallsignal.network import FloatArray, ReactivePart
-from tauledger.smallsignal.response import ComplexArray, Response
+from tauledger.smallsignal.response import Response
 
 
 @dataclass(frozen=True, slots=True)
@@ -89,7 +91,7 @@ class EndModel:
         scale = np.sqrt(self.values)
         scales = np.outer(scale, scale) if not self.low else 1.0 / np.outer(scale, scale)
         matrix = (self.matrix + self._coupling()) * scales
-        largest = max(np.linalg.norm(matrix, 2), np.linalg.norm(self.matrix * scales, 2))
+        largest = max(_size(matrix), _size(self.matrix * scales))
         removed = 0
         while matrix.size:
             _, singular, right = np.linalg.svd(matrix)
@@ -127,19 +129,6 @@ class EndModel:
             self.inward * self.outward, diagonal, out=np.zeros_like(diagonal), where=diagonal != 0
         )
         return np.asarray(self.gain + step)
-
-    def relative_gain(self, omega: FloatArray) -> FloatArray:
-        """|H/H₀| of this end's model at angular frequencies (F,), the other end at midband."""
-        s = 1j * omega[:, None, None]
-        if self.low:
-            system = s * np.diag(self.values) + self.matrix
-            drive, sense = self.inward, self.outward
-        else:
-            system = np.eye(self.values.size) + s * (self.matrix * self.values[None, :])
-            drive, sense = self.inward, self.outward * self.values
-        right = np.broadcast_to(drive[:, None], (omega.size, drive.size, 1))
-        state = np.linalg.solve(system, right)[:, :, 0] @ sense
-        return np.asarray(np.abs(1.0 + (state if self.low else s[:, 0, 0] * state) / self.gain))
 
     def own_zero(self) -> FloatArray:
         """(K,): the zero each part makes with the others at midband state, rad/s, sign kept.
@@ -224,6 +213,10 @@ def midband_network(
         gain=gain,
     )
     return Midband(gain, solution[:size], inverse[:size, :size], low_model, high_model)
+
+
+def _size(matrix: FloatArray) -> float:
+    return math.sqrt(float(np.vdot(matrix, matrix)))
 
 
 def _bordered(

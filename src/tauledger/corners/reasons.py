@@ -12,8 +12,9 @@ from tauledger.corners.band import TWO_PI, Passband, Sweep
 from tauledger.corners.estimates import Estimate, Roots, model_edge_hz
 from tauledger.corners.ports import EndModel
 from tauledger.quantity import format_quantity
+from tauledger.smallsignal.modes import ComplexArray
 from tauledger.smallsignal.network import ReactivePart
-from tauledger.smallsignal.response import ComplexArray, Response, gain_sensitivity
+from tauledger.smallsignal.response import Response, gain_sensitivity
 
 INSPECTION_TOLERANCE = 0.02
 """Hand and exact midband gain may differ by this before it is said."""
@@ -195,9 +196,11 @@ def _difference_notes(
     return notes
 
 
-def what_if(model: EndModel, exact_hz: float | None, names: Sequence[str]) -> tuple[str, ...]:
+def what_if(
+    model: EndModel, roots: Roots, exact_hz: float | None, names: Sequence[str]
+) -> tuple[str, ...]:
     """What doubling or halving a leading part does to the corner, by the end's own model."""
-    before = model_edge_hz(model, exact_hz) if exact_hz is not None else None
+    before = model_edge_hz(roots, exact_hz) if exact_hz is not None else None
     if before is None or exact_hz is None:
         return ()
     sentences = []
@@ -206,7 +209,7 @@ def what_if(model: EndModel, exact_hz: float | None, names: Sequence[str]) -> tu
         factor, sign = (2.0, "×") if model.low != part.is_inductor else (0.5, "/")
         values = model.values.copy()
         values[i] *= factor
-        after = model_edge_hz(replace(model, values=values), exact_hz)
+        after = model_edge_hz(Roots.of(replace(model, values=values)), exact_hz)
         new = format_quantity(exact_hz * after / before, "Hz") if after else "no corner"
         sentences.append(f"{part.name} {sign} 2: {format_quantity(exact_hz, 'Hz')} → {new}")
     return tuple(sentences)

@@ -24,7 +24,7 @@ from tauledger.decide.networks import Networks
 from tauledger.problems import Problem, ProblemError, Severity
 from tauledger.smallsignal import drive_vector, linear_network, response, sense_vector
 from tauledger.smallsignal.network import LinearNetwork
-from tauledger.smallsignal.response import natural_frequencies
+from tauledger.smallsignal.modes import natural_frequencies
 
 FloatArray = NDArray[np.float64]
 IntArray = NDArray[np.intp]

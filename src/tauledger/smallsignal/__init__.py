@@ -1,14 +1,15 @@
 """Operating point → linear network, its exact response and natural frequencies."""
 
 from tauledger.smallsignal.linearise import linear_network
+from tauledger.smallsignal.modes import natural_frequencies
 from tauledger.smallsignal.network import LinearNetwork, ReactivePart
 from tauledger.smallsignal.response import (
     Response,
     condensed,
+    decomposed,
     drive_vector,
     edge_sensitivity,
     gain_sensitivity,
-    natural_frequencies,
     response,
     sense_vector,
 )
@@ -20,6 +21,7 @@ __all__ = [
     "ReactivePart",
     "Response",
     "condensed",
+    "decomposed",
     "device_admittances",
     "drive_vector",
     "edge_sensitivity",

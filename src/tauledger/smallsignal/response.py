@@ -4,17 +4,19 @@ from __future__ import annotations
 
 import math
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
-from numpy.typing import NDArray
 
 from tauledger.circuit.elements import CurrentSource, IndependentSource
+from tauledger.smallsignal.modes import ComplexArray, Modes, decompose
 from tauledger.smallsignal.network import FloatArray, LinearNetwork, ReactivePart
 
-ComplexArray = NDArray[np.complex128]
-LARGEST_DIRECT, FEWEST_MODAL = 100, 30
-"""Unknowns and frequencies above which a sweep goes by an eigenvalue decomposition."""
+LARGEST_DECOMPOSED = 350
+"""Unknowns; the time for their eigenvalues grows with the cube of the number."""
+MODES_TOLERANCE = 1e-9
+"""Of the largest |H|: so well must the sum over the modes agree with direct solutions."""
+PROBES = 9
 LARGEST_BATCH = 4_000_000
 """Complex numbers held at once while a sweep is solved (64 MB)."""
 
@@ -28,42 +30,23 @@ class Response:
     drive: FloatArray
     sense: FloatArray
     direct: float = 0.0
+    modes: Modes | None = None
+    """The same H as a sum over natural frequencies, which is faster; see :func:`decomposed`."""
 
     def at(self, frequency_hz: FloatArray) -> ComplexArray:
         """H at each frequency, shape of ``frequency_hz`` (one axis)."""
         s: ComplexArray = np.asarray(2j * math.pi * np.atleast_1d(frequency_hz), np.complex128)
-        if self.drive.size > LARGEST_DIRECT and s.size > FEWEST_MODAL:
-            modal = self._modal(s)
-            if modal is not None:
-                return modal + self.direct
+        if self.modes is not None:
+            return self.modes.at(s)
         at_once = max(1, LARGEST_BATCH // max(1, self.drive.size**2))
-        pieces = [self._solve(s[i : i + at_once]) for i in range(0, s.size, at_once)]
+        pieces = [self.solve(s[i : i + at_once]) for i in range(0, s.size, at_once)]
         return np.concatenate(pieces) + self.direct
 
-    def _solve(self, s: ComplexArray) -> ComplexArray:
+    def solve(self, s: ComplexArray) -> ComplexArray:
+        """H less ``direct`` at complex frequencies (F,) in rad/s, by a solution for each."""
         matrices = self.conductance + s[:, None, None] * self.reactance
         right = np.broadcast_to(self.drive[:, None], (s.size, self.drive.size, 1))
         return np.asarray(np.linalg.solve(matrices, right)[:, :, 0] @ self.sense)
-
-    def _modal(self, s: ComplexArray) -> ComplexArray | None:
-        """The same by one eigenvalue decomposition, where that is accurate; else None.
-
-        With M = G + s₀C and A = M⁻¹C = VΛV⁻¹, H = Σ g_k c_k / (1 + (s − s₀)λ_k). A defective A
-        spoils V, so the result is held against direct solutions at some of the frequencies.
-        """
-        shift = float(np.exp(np.log(np.abs(s)).mean()))
-        matrix = self.conductance + shift * self.reactance
-        try:
-            values, vectors = np.linalg.eig(np.linalg.solve(matrix, self.reactance))
-            drives = np.linalg.solve(vectors, np.linalg.solve(matrix, self.drive))
-        except np.linalg.LinAlgError:
-            return None
-        weights = (self.sense @ vectors) * drives
-        found = (weights[None, :] / (1.0 + (s[:, None] - shift) * values[None, :])).sum(axis=1)
-        probes = np.linspace(0, s.size - 1, 7).astype(int)
-        direct = self._solve(s[probes])
-        near = np.abs(found[probes] - direct) <= 1e-6 * np.abs(direct).max()
-        return np.asarray(found, dtype=np.complex128) if near.all() else None
 
     def magnitude(self, frequency_hz: float) -> float:
         """|H| at one frequency."""
@@ -131,6 +114,26 @@ def condensed(response: Response) -> Response:
     )
 
 
+def decomposed(response: Response) -> Response:
+    """The response with its modes, worked out on as few unknowns as possible.
+
+    The modes are left out where the network is large or they do not reproduce direct solutions
+    (equal poles may share one mode).
+    """
+    short = condensed(response)
+    if short.drive.size > LARGEST_DECOMPOSED:
+        return response
+    modes = decompose(short.conductance, short.reactance, short.drive, short.sense, short.direct)
+    if modes is None:
+        return response
+    sizes = np.abs(modes.natural[np.abs(modes.natural) > 1e-9])
+    slowest, fastest = (sizes.min(), sizes.max()) if sizes.size else (1.0, 1.0)
+    probes = 1j * np.geomspace(slowest / 30.0, fastest * 10.0, PROBES)
+    direct = short.solve(probes) + short.direct
+    agrees = np.abs(modes.at(probes) - direct) <= MODES_TOLERANCE * np.abs(direct).max()
+    return replace(response, modes=modes) if agrees.all() else response
+
+
 def gain_sensitivity(
     response: Response, parts: Sequence[ReactivePart], frequency_hz: float
 ) -> FloatArray:
@@ -180,29 +183,3 @@ def _across(unknowns: ComplexArray, part: ReactivePart) -> complex:
     plus = unknowns[part.positive] if part.positive >= 0 else 0.0
     minus = unknowns[part.negative] if part.negative >= 0 else 0.0
     return complex(plus - minus)
-
-
-def natural_frequencies(
-    conductance: FloatArray, reactance: FloatArray, near: float | None = None
-) -> ComplexArray:
-    """Finite roots s (rad/s) of det(G + sC) = 0, smallest magnitude first.
-
-    Works on the pencil shifted to a point on the positive real axis, where G + σC is regular
-    even when G alone is not (a node reached only by capacitors is a pole at zero). Two passes:
-    the second shift sits in the middle of the spread that the first one found, which keeps slow
-    and fast roots equally accurate. ``near`` (rad/s) gives one shift to work from instead.
-    """
-    shift = 1e5 if near is None else near
-    roots = np.zeros(0, dtype=complex)
-    for _ in range(2 if near is None else 1):
-        inverse_roots = np.linalg.eigvals(
-            np.linalg.solve(conductance + shift * reactance, reactance)
-        )
-        largest = np.abs(inverse_roots).max(initial=0.0)
-        kept = inverse_roots[np.abs(inverse_roots) > 1e-13 * largest]
-        roots = shift - 1.0 / kept if largest > 0 else np.zeros(0, dtype=complex)
-        sizes = np.abs(roots)[np.abs(roots) > 1e-9]
-        if not sizes.size:
-            break
-        shift = float(np.exp(np.log(sizes).mean()))
-    return np.asarray(roots[np.argsort(np.abs(roots))])

@@ -133,8 +133,30 @@ def find_edge(response: Response, sweep: Sweep, midband_hz: float, *, upward: bo
     def excess(log_frequency: float) -> float:
         return math.log(max(response.magnitude(math.exp(log_frequency)), 1e-300) / target)
 
-    root = false_position(excess, math.log(inside), math.log(float(frequency[outer])))
-    return math.exp(root)
+    a, b = math.log(inside), math.log(float(frequency[outer]))
+    root = _polished_edge(response, excess, target, a, b)
+    return math.exp(false_position(excess, a, b) if root is None else root)
+
+
+def _polished_edge(
+    response: Response, excess: Callable[[float], float], target: float, inside: float, outside: float
+) -> float | None:
+    """ln f of the edge by the modes, then two steps by direct solutions; None where that fails."""
+    modes = response.modes
+    if modes is None:
+        return None
+
+    def nearly(log_frequency: float) -> float:
+        return math.log(max(modes.magnitude(TWO_PI * math.exp(log_frequency)), 1e-300) / target)
+
+    root = false_position(nearly, inside, outside)
+    slope = (nearly(root + 1e-3) - nearly(root - 1e-3)) / 2e-3
+    for _ in range(2):
+        rest = excess(root)
+        if abs(rest) < 1e-12 or abs(rest) > 1e-3 * abs(slope):
+            break
+        root -= rest / slope
+    return root if abs(rest) < 1e-9 * abs(slope) else None
 
 
 def false_position(function: Callable[[float], float], inside: float, outside: float) -> float:

@@ -45,17 +45,24 @@ class Roots:
     def of(cls, model: EndModel) -> Roots:
         return cls(model.poles(), model.zeros(), model.low)
 
-    def log_gain(self, omega: FloatArray) -> FloatArray:
+    def log_gains(self, omega: FloatArray) -> FloatArray:
         """ln|H/H₀| of the end's model at (F,) rad/s, the other end at midband."""
+        s = 1j * omega[:, None]
         zeros, poles = (
-            np.abs(self._factors(roots, 1j * omega[:, None])) for roots in (self.zeros, self.poles)
+            np.abs(s - roots if self.low else 1.0 - s / roots) for roots in (self.zeros, self.poles)
         )
         with np.errstate(divide="ignore"):
             return np.asarray(np.log(zeros).sum(axis=1) - np.log(poles).sum(axis=1))
 
-    def _factors(self, roots: ComplexArray, s: ComplexArray) -> ComplexArray:
-        """Linear factors, (F, K): s − r, or 1 − s/r where the midband lies at s = 0."""
-        return s - roots if self.low else 1.0 - s / roots
+    def log_gain(self, omega: float) -> float:
+        """The same at one frequency."""
+        s = complex(0.0, omega)
+        gain = 0.0
+        for roots, sign in ((self.zeros.tolist(), 1.0), (self.poles.tolist(), -1.0)):
+            for root in roots:
+                factor = abs(s - root if self.low else 1.0 - s / root)
+                gain += sign * (math.log(factor) if factor else -math.inf)
+        return gain
 
 
 @dataclass(frozen=True, slots=True)
@@ -115,7 +122,7 @@ def model_edge_hz(roots: Roots, near_hz: float) -> float | None:
         return None
     omega = TWO_PI * near_hz * _SCAN
     target = math.log(HALF_POWER)
-    gain = roots.log_gain(omega)
+    gain = roots.log_gains(omega)
     below = np.flatnonzero(gain < target)
     if not below.size:
         return None
@@ -125,7 +132,7 @@ def model_edge_hz(roots: Roots, near_hz: float) -> float | None:
         return None
 
     def excess(log_omega: float) -> float:
-        return float(roots.log_gain(np.array([math.exp(log_omega)]))[0]) - target
+        return roots.log_gain(math.exp(log_omega)) - target
 
     ends = math.log(float(omega[inner])), math.log(float(omega[outer]))
     return math.exp(false_position(excess, *ends)) / TWO_PI

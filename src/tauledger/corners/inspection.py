@@ -129,7 +129,8 @@ class SignalNetwork:
         self._opaque = {self._node(node): name for node, name in opaque.items()}
         self._resistors: dict[int, list[tuple[ResistorBranch, int]]] = {}
         for branch in resistors:
-            a, b = (self._node(node) for node in branch.nodes)
+            a, b = branch.nodes
+            a, b = merged.get(a, a), merged.get(b, b)
             if a != b:
                 self._resistors.setdefault(a, []).append((branch, b))
                 self._resistors.setdefault(b, []).append((branch, a))

@@ -80,7 +80,7 @@ class EndModel:
         """Zeros of this end in rad/s, smallest magnitude first; those at infinity left out.
 
         Balanced by the square roots of the values, the matrix has a null vector for every zero
-        at the origin (low end) or at infinity (high end). They are taken out one by one before
+        at the origin (low end) or at infinity (high end). They are taken out round by round before
         the eigenvalues are formed: left in, k of them would scatter over a circle of radius
         ε^(1/k) and pass for real zeros.
         """
@@ -95,11 +95,12 @@ class EndModel:
         removed = 0
         while matrix.size:
             _, singular, right = np.linalg.svd(matrix)
-            if singular[-1] > 1e-12 * largest:
+            null = int(np.count_nonzero(singular <= 1e-12 * largest))
+            if not null:
                 break
-            basis = right[:-1].T
+            basis = right[:-null].T
             matrix = basis.T @ matrix @ basis
-            removed += 1
+            removed += null
         left = np.linalg.eigvals(matrix).astype(complex)
         roots = np.concatenate([np.zeros(removed), -left]) if self.low else -1.0 / left
         return np.asarray(roots[np.argsort(np.abs(roots))])

@@ -3,8 +3,8 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Callable, Sequence
-from dataclasses import dataclass
+from collections.abc import Iterable, Sequence
+from typing import NamedTuple
 
 NEGLIGIBLE = 0.01
 """A term whose removal changes the value by less is left out."""
@@ -13,8 +13,7 @@ _SUM, _PARALLEL, _FACTOR = 1, 2, 3
 """How tightly each form binds, for parentheses."""
 
 
-@dataclass(frozen=True, slots=True)
-class Term:
+class Term(NamedTuple):
     """``value`` in Ω, ``text`` as written, ``binding`` of its outermost operator."""
 
     value: float
@@ -39,28 +38,38 @@ def symbol(text: str, value: float) -> Term:
 
 def series(*terms: Term) -> Term:
     """Sum; terms that hardly count are left out."""
-    if any(math.isinf(term.value) for term in terms):
-        return OPEN
-    kept = _matter([term for term in terms if term.value != 0.0], _resistance)
+    kept = []
+    for term in terms:
+        if term.value == math.inf:
+            return OPEN
+        if term.value != 0.0:
+            kept.append(term)
+    if len(kept) > 1:
+        kept = _matter(kept, [term.value for term in kept])
     if not kept:
         return GROUND
     if len(kept) == 1:
         return kept[0]
-    text = " + ".join(term.within(_SUM) for term in kept)
-    return Term(math.fsum(term.value for term in kept), text, _SUM, _abbreviations(kept))
+    text = " + ".join([term.within(_SUM) for term in kept])
+    return Term(math.fsum([term.value for term in kept]), text, _SUM, _abbreviations(kept))
 
 
 def parallel(*terms: Term) -> Term:
     """Parallel connection; branches that hardly count are left out."""
-    if any(term.value == 0.0 for term in terms):
-        return GROUND
-    kept = _matter([term for term in terms if not math.isinf(term.value)], _conductance)
+    kept = []
+    for term in terms:
+        if term.value == 0.0:
+            return GROUND
+        if term.value != math.inf:
+            kept.append(term)
+    if len(kept) > 1:
+        kept = _matter(kept, [1.0 / term.value for term in kept])
     if not kept:
         return OPEN
     if len(kept) == 1:
         return kept[0]
-    text = "‖".join(term.within(_PARALLEL) for term in kept)
-    value = _parallel_value([term.value for term in kept])
+    text = "‖".join([term.within(_PARALLEL) for term in kept])
+    value = 1.0 / math.fsum([1.0 / term.value for term in kept])
     return Term(value, text, _PARALLEL, _abbreviations(kept))
 
 
@@ -116,34 +125,24 @@ def bridging(first: Term, second: Term, conductance: Term) -> Term:
     return Term(total, text, _SUM, tuple(where))
 
 
-def _abbreviations(terms: Sequence[Term]) -> tuple[str, ...]:
-    return tuple(dict.fromkeys(text for term in terms for text in term.where))
+def _abbreviations(terms: Iterable[Term]) -> tuple[str, ...]:
+    return tuple(dict.fromkeys([text for term in terms for text in term.where]))
 
 
-def _matter(terms: Sequence[Term], weight: Callable[[float], float]) -> list[Term]:
+def _matter(terms: list[Term], weights: Sequence[float]) -> list[Term]:
     """Leave out, least important first, what changes the value by under a per cent.
 
-    ``weight`` gives what adds up: the resistance in series, the conductance in parallel.
+    ``weights`` are what adds up: resistances in series, conductances in parallel.
     """
-    kept = sorted(terms, key=lambda term: weight(term.value))
-    total = math.fsum(weight(term.value) for term in kept)
+    order = sorted(range(len(terms)), key=weights.__getitem__)
+    total = math.fsum(weights)
     dropped = 0
-    while len(kept) - dropped > 1:
-        rest = total - weight(kept[dropped].value)
+    while len(order) - dropped > 1:
+        rest = total - weights[order[dropped]]
         if abs(total / rest - 1.0) >= NEGLIGIBLE:
             break
         total, dropped = rest, dropped + 1
-    important = {id(term) for term in kept[dropped:]}
-    return [term for term in terms if id(term) in important]
-
-
-def _parallel_value(values: Sequence[float]) -> float:
-    return 1.0 / math.fsum(1.0 / value for value in values)
-
-
-def _resistance(value: float) -> float:
-    return value
-
-
-def _conductance(value: float) -> float:
-    return 1.0 / value
+    if not dropped:
+        return terms
+    important = set(order[dropped:])
+    return [term for i, term in enumerate(terms) if i in important]

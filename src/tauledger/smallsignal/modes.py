@@ -44,6 +44,12 @@ class Modes:
         distance = 1.0 + (s[:, None] - self.shift) * self.eigenvalues
         return np.asarray((self.weights / distance).sum(axis=1) + self.direct)
 
+    def magnitude(self, omega: float) -> float:
+        """|H| at one frequency in rad/s."""
+        distance = complex(-self.shift, omega)
+        pairs = zip(self.weights.tolist(), self.eigenvalues.tolist(), strict=True)
+        return abs(sum([w / (1.0 + distance * value) for w, value in pairs], self.direct))
+
 
 def decompose(
     conductance: FloatArray,

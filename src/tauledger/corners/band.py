@@ -139,7 +139,11 @@ def find_edge(response: Response, sweep: Sweep, midband_hz: float, *, upward: bo
 
 
 def _polished_edge(
-    response: Response, excess: Callable[[float], float], target: float, inside: float, outside: float
+    response: Response,
+    excess: Callable[[float], float],
+    target: float,
+    inside: float,
+    outside: float,
 ) -> float | None:
     """ln f of the edge by the modes, then two steps by direct solutions; None where that fails."""
     modes = response.modes

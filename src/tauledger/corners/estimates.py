@@ -45,6 +45,11 @@ class Roots:
     def of(cls, model: EndModel) -> Roots:
         return cls(model.poles(), model.zeros(), model.low)
 
+    @classmethod
+    def roughly(cls, model: EndModel) -> Roots:
+        """Good for the gain alone: zeros at the origin or infinity are scattered near there."""
+        return cls(model.poles(), model.scattered_zeros(), model.low)
+
     def log_gains(self, omega: FloatArray) -> FloatArray:
         """ln|H/H₀| of the end's model at (F,) rad/s, the other end at midband."""
         s = 1j * omega[:, None]
@@ -140,10 +145,12 @@ def model_edge_hz(roots: Roots, near_hz: float) -> float | None:
 
 def _coefficients(roots: ComplexArray, model: EndModel) -> tuple[float, float, float]:
     """First three coefficients of ∏(1 − x/r), x = s for the high end and 1/s for the low."""
-    values = -roots if model.low else -1.0 / roots
-    polynomial = np.poly(-values) if values.size else np.ones(1)
-    padded = np.concatenate([np.real(polynomial), np.zeros(3)])
-    return float(padded[1]), float(padded[2]), float(padded[3])
+    first = second = third = 0j
+    for value in (-roots if model.low else -1.0 / roots).tolist():
+        third += second * value
+        second += first * value
+        first += value
+    return first.real, second.real, third.real
 
 
 def _second_order(

@@ -87,7 +87,7 @@ class EndModel:
         if self.gain == 0.0 or not self.parts:
             return np.zeros(0, dtype=complex)
         if (self.values <= 0.0).any():
-            return self._roots(self.matrix + self._coupling())
+            return self.scattered_zeros()
         scale = np.sqrt(self.values)
         scales = np.outer(scale, scale) if not self.low else 1.0 / np.outer(scale, scale)
         matrix = (self.matrix + self._coupling()) * scales
@@ -104,6 +104,10 @@ class EndModel:
         left = np.linalg.eigvals(matrix).astype(complex)
         roots = np.concatenate([np.zeros(removed), -left]) if self.low else -1.0 / left
         return np.asarray(roots[np.argsort(np.abs(roots))])
+
+    def scattered_zeros(self) -> ComplexArray:
+        """The same in one step, those at the origin or at infinity scattered around it."""
+        return self._roots(self.matrix + self._coupling())
 
     def _coupling(self) -> FloatArray:
         return np.outer(self.inward, self.outward) / self.gain

@@ -209,7 +209,7 @@ def what_if(
         factor, sign = (2.0, "×") if model.low != part.is_inductor else (0.5, "/")
         values = model.values.copy()
         values[i] *= factor
-        after = model_edge_hz(Roots.of(replace(model, values=values)), exact_hz)
+        after = model_edge_hz(Roots.roughly(replace(model, values=values)), exact_hz)
         new = format_quantity(exact_hz * after / before, "Hz") if after else "no corner"
         sentences.append(f"{part.name} {sign} 2: {format_quantity(exact_hz, 'Hz')} → {new}")
     return tuple(sentences)

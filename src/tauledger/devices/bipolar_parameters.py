@@ -15,7 +15,7 @@ from dataclasses import dataclass
 import numpy as np
 
 from tauledger.devices import junction
-from tauledger.devices.interface import Card, FloatArray, Value
+from tauledger.devices.interface import Card, FloatArray, Value, columns
 from tauledger.devices.junction import Depletion
 
 
@@ -168,11 +168,11 @@ class _Reader:
         self._stated = frozenset().union(*(card.model for card in cards))
         self.kelvin, self.nominal = kelvin, nominal
         self.difference = kelvin - nominal
-        self.multiplier = junction.columns([c.instance.get("m", 1.0) for c in cards])
-        area = junction.columns([c.instance.get("area", 1.0) for c in cards])
+        self.multiplier = columns([c.instance.get("m", 1.0) for c in cards])
+        area = columns([c.instance.get("area", 1.0) for c in cards])
         self.area = area * self.multiplier
         self._base_area, self._collector_area = (
-            junction.columns([c.instance.get(n, c.instance.get("area", 1.0)) for c in cards])
+            columns([c.instance.get(n, c.instance.get("area", 1.0)) for c in cards])
             * self.multiplier
             for n in ("areab", "areac")
         )
@@ -198,7 +198,7 @@ class _Reader:
 
     def minimum_base(self) -> FloatArray:
         """RBM at temperature, RB when not stated."""
-        stated = junction.columns([c.model.get("rbm", c.model.get("rb", 0.0)) for c in self.cards])
+        stated = columns([c.model.get("rbm", c.model.get("rb", 0.0)) for c in self.cards])
         return stated * junction.quadratic(self.cards, "trm", self.difference)
 
     def junctions(self, lateral: FloatArray) -> tuple[FloatArray, FloatArray]:

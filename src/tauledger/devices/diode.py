@@ -43,6 +43,7 @@ from tauledger.devices.interface import (
     FloatArray,
     OperatingValues,
     Value,
+    columns,
 )
 from tauledger.devices.junction import Depletion
 
@@ -246,7 +247,7 @@ def _prepare(
 
     kelvin, nominal = junction.temperatures(cards, temperature_c, nominal_temperature_c)
     difference = kelvin - nominal
-    multiplier = junction.columns([card.instance.get("m", 1.0) for card in cards])
+    multiplier = columns([card.instance.get("m", 1.0) for card in cards])
     area = _size(cards, "area", 1.0) * multiplier
     perimeter = _size(cards, "pj", 0.0) * multiplier
     emission = model(1.0, "n")
@@ -314,9 +315,7 @@ def _prepare(
 
 def _size(cards: Sequence[Card], name: str, default: float) -> FloatArray:
     """Area or perimeter: the instance's, else the model's."""
-    return junction.columns(
-        [card.instance.get(name, card.model.get(name, default)) for card in cards]
-    )
+    return columns([card.instance.get(name, card.model.get(name, default)) for card in cards])
 
 
 def _breakdown_voltage(

@@ -118,6 +118,15 @@ class Device(ABC, Generic[P]):
         """Small-signal figures at the converged branch voltages."""
 
 
+def columns(values: Sequence[Value]) -> FloatArray:
+    """One value an instance, each a number or (boards,), side by side: (boards or 1, n)."""
+    if all(isinstance(value, float) for value in values):
+        return np.array([values], dtype=float)
+    arrays = [np.atleast_1d(np.asarray(value, dtype=float)) for value in values]
+    boards = max((array.size for array in arrays), default=1)
+    return np.stack([np.broadcast_to(array, (boards,)) for array in arrays], axis=-1)
+
+
 def stack(
     cards: Sequence[Card], name: str, default: Value, *, instance: bool = False
 ) -> FloatArray:
@@ -126,14 +135,9 @@ def stack(
     >>> stack([Card("Q1", "npn", {"bf": 200.0}, {})], "bf", 100.0)
     array([[200.]])
     """
-    columns = [
-        np.atleast_1d(
-            np.asarray((card.instance if instance else card.model).get(name, default), dtype=float)
-        )
-        for card in cards
-    ]
-    boards = max((column.size for column in columns), default=1)
-    return np.stack([np.broadcast_to(column, (boards,)) for column in columns], axis=-1)
+    return columns(
+        [(card.instance if instance else card.model).get(name, default) for card in cards]
+    )
 
 
 AnyDevice = Device[Any]

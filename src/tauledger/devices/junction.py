@@ -23,6 +23,7 @@ from tauledger.devices.interface import (
     Card,
     FloatArray,
     Value,
+    columns,
 )
 
 REFERENCE_K = 300.15
@@ -122,15 +123,6 @@ def temperatures(
         card.model.get("tnom", card.model.get("tref", nominal_temperature_c)) for card in cards
     ]
     return columns(device) + ZERO_CELSIUS_K, columns(nominal) + ZERO_CELSIUS_K
-
-
-def columns(values: Sequence[Value]) -> FloatArray:
-    """One value an instance, each a number or (boards,), side by side: (boards or 1, n)."""
-    if all(isinstance(value, float) for value in values):
-        return np.array([values], dtype=float)
-    arrays = [np.atleast_1d(np.asarray(value, dtype=float)) for value in values]
-    boards = max((array.size for array in arrays), default=1)
-    return np.stack([np.broadcast_to(array, (boards,)) for array in arrays], axis=-1)
 
 
 def first_given(cards: Sequence[Card], names: Sequence[str], default: Value) -> FloatArray:

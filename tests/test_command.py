@@ -13,6 +13,8 @@ from pathlib import Path
 
 import pytest
 
+from tauledger.commands.parsers import COMMANDS
+
 TESTS = Path(__file__).parent
 
 STAND_IN = """
@@ -26,6 +28,8 @@ def analyze(netlist, input=None, output=None, settings=None, midband_hz=None, sq
     if netlist == "crash":
         raise ValueError("forged\\x1b[2J\\nline")
     if netlist == "interrupt":
+        # A shell has what it starts in the background ignore the signal, these tests included.
+        signal.signal(signal.SIGINT, signal.default_int_handler)
         os.kill(os.getpid(), signal.SIGINT)
     if netlist == "warn":
         warnings.warn("overflow", RuntimeWarning)
@@ -81,14 +85,14 @@ def test_installed_command_prints_its_version() -> None:
     assert done.stdout.startswith("tauledger 0.")
 
 
-@pytest.mark.parametrize("arguments", [("--help",), ("report", "--help")])
-def test_help_fits_a_screen_and_shows_an_example(arguments: tuple[str, ...]) -> None:
-    done = _tauledger(*arguments, COLUMNS="80")
+@pytest.mark.parametrize("name", ["", *COMMANDS])
+def test_help_fits_a_screen_and_shows_an_example(name: str) -> None:
+    done = _tauledger(*name.split(), "--help", COLUMNS="80")
     assert done.returncode == 0
     lines = done.stdout.splitlines()
     assert len(lines) <= 24
     assert max(map(len, lines)) <= 80
-    assert "tauledger report preamp.cir --output out" in done.stdout
+    assert COMMANDS[name or "report"].example in done.stdout
 
 
 @pytest.mark.parametrize(

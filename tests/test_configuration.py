@@ -15,6 +15,7 @@ import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
+from tauledger.commands.arguments import frequency
 from tauledger.configuration import reading
 from tauledger.configuration.choice import find_settings, settings_for
 from tauledger.configuration.files import find_configuration
@@ -363,6 +364,11 @@ match = "Q*"
 current_gain = { min = "-40 %", max = "60 %" }
 base_emitter_voltage = "20 mV"
 matched = true
+rated_power = "0.3 W"
+
+[diodes.clamp]
+match = "D1"
+rated_power = "500 mW"
 
 [spread]
 distribution = "truncated"
@@ -384,6 +390,8 @@ def test_part_classes_are_read_with_their_tolerances(tmp_path: Path) -> None:
     assert path.transistors[0].current_gain == (-0.4, 0.6)
     assert path.transistors[0].base_emitter_voltage_v == pytest.approx((-0.02, 0.02))
     assert path.transistors[0].matched
+    assert path.transistors[0].rated_power_w == pytest.approx(0.3)
+    assert (path.diodes[0].match, path.diodes[0].rated_power_w) == (("d1",), pytest.approx(0.5))
     assert path.spread is not None
     assert path.spread.temperature_c == (-10.0, 50.0)
     assert path.spread.supply == pytest.approx((-0.05, 0.05))
@@ -399,11 +407,28 @@ def test_part_classes_are_read_with_their_tolerances(tmp_path: Path) -> None:
         ('voltage = "10 V"', 'voltage = "-1 V"', "["),
         ('"470nF"', '"470 nH"', '"470 nH"'),
         ('supply = "5 %"', 'supply = "100 %"', '"100 %"'),
+        ('rated_power = "0.3 W"', 'rated_power = "0 W"', '"0 W"'),
+        ('rated_power = "500 mW"', 'rated_power = "0.5 V"', '"0.5 V"'),
+        ('match = "D1"', "", "clamp"),
     ],
 )
 def test_a_faulty_part_class_is_marked(tmp_path: Path, old: str, new: str, marked: str) -> None:
     ((_, _, _, found),) = _faults(tmp_path, PARTS.replace(old, new))
     assert found.startswith(marked)
+
+
+@pytest.mark.parametrize(
+    ("given", "expected"),
+    [("0.9 mHz", "at least 0.001 Hz"), ("1.1 THz", "at most 1 THz"), ("-1 kHz", "at least")],
+)
+def test_midband_has_the_range_of_its_option(tmp_path: Path, given: str, expected: str) -> None:
+    text = '[path.a]\nnetlist = "a.cir"\nmidband = "{}"\n'
+    with pytest.raises(ProblemError, match=f"midband: .* expected {expected}"):
+        read_configuration(_write(tmp_path, text.format(given)))
+    for end in ("1 mHz", "1 THz"):
+        (path,) = read_configuration(_write(tmp_path, text.format(end))).paths
+        assert path.midband is not None
+        assert path.midband.value == frequency(end)  # as --midband reads it
 
 
 def test_the_schema_knows_the_keys_that_are_read() -> None:
@@ -422,6 +447,7 @@ def test_the_schema_knows_the_keys_that_are_read() -> None:
     assert keys(parts["capacitors"]["additionalProperties"]) == set(reading.CAPACITOR_KEYS)
     assert keys(parts["resistors"]["additionalProperties"]) == set(reading.RESISTOR_KEYS)
     assert keys(parts["transistors"]["additionalProperties"]) == set(reading.TRANSISTOR_KEYS)
+    assert keys(parts["diodes"]["additionalProperties"]) == set(reading.DIODE_KEYS)
     assert keys(parts["spread"]) == set(reading.SPREAD_KEYS)
     assert parts["tolerance"]["oneOf"][1]["enum"] == list(TOLERANCE_LETTERS)
     inputs = [keys(entry) for entry in parts["input"]["oneOf"][1:]]

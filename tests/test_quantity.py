@@ -8,7 +8,7 @@ import pytest
 from hypothesis import example, given
 from hypothesis import strategies as st
 
-from netlist.ngspice_values import ngspice_values
+import ngspice
 from tauledger.quantity import (
     TRAPS,
     format_quantity,
@@ -48,7 +48,7 @@ def test_suffixes_read_as_spice_reads_them(text: str, value: float) -> None:
 
 @pytest.mark.referee
 def test_ngspice_reads_the_same_values() -> None:
-    found = ngspice_values([f"V{{n}} n{{n}} 0 {text}" for text in AS_SPICE])
+    found = ngspice.values([f"V{{n}} n{{n}} 0 {text}" for text in AS_SPICE])
     assert found == pytest.approx(list(AS_SPICE.values()), rel=1e-14)
 
 
@@ -62,7 +62,7 @@ def test_letter_and_digit_codes_read_as_the_standard_says(text: str, value: floa
 
 @pytest.mark.referee
 def test_ngspice_drops_the_digits_of_a_letter_code() -> None:
-    assert ngspice_values(["V{n} n{n} 0 4k7", "V{n} n{n} 0 2u2"]) == pytest.approx([4000, 2e-6])
+    assert ngspice.values(["V{n} n{n} 0 4k7", "V{n} n{n} 0 2u2"]) == pytest.approx([4000, 2e-6])
 
 
 def test_a_leading_letter_is_a_name_where_a_name_may_stand() -> None:
@@ -152,7 +152,7 @@ def test_ngspice_reads_a_printed_value_exactly() -> None:
     # Component values have few digits; all of these must be exact to the last bit.
     series = [1.0, 1.1, 1.5, 2.2, 3.3, 4.7, 5.6, 6.8, 8.2, 9.53, 1.0123, 3.14159265]
     values = [digits * 10.0**power for digits in series for power in range(-15, 10)]
-    assert ngspice_values([f"V{{n}} n{{n}} 0 {format_spice(value)}" for value in values]) == values
+    assert ngspice.values([f"V{{n}} n{{n}} 0 {format_spice(value)}" for value in values]) == values
 
 
 @pytest.mark.parametrize(

@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 import os
-from dataclasses import dataclass
 from pathlib import Path
 from typing import TYPE_CHECKING, NamedTuple
 
@@ -22,6 +21,7 @@ from tauledger.corners import Corners, find_corners, hand_expressions, stage_for
 from tauledger.netlist import Netlist
 from tauledger.netlist import read as read_netlist
 from tauledger.problems import ProblemError
+from tauledger.records import dataclass
 from tauledger.review.assemble import path_row, review_of
 from tauledger.review.rows import Review
 from tauledger.smallsignal import (
@@ -200,12 +200,12 @@ def _completed(
 ) -> tuple[Circuit, str | None, str | None]:
     """The one circuit with the path, whole, and what is known of the path's ends."""
     if settings is None:
-        return restrict(flatten(netlist), input), input, output
+        return restrict(flatten(netlist, keep_unread=True), input), input, output
     from tauledger.circuit.completion import add_models, complete
     from tauledger.circuit.generic import generic_models
 
     substitute = generic_models(settings.generic.kinds) if settings.generic else None
-    flat = flatten(add_models(netlist, settings), substitute)
+    flat = flatten(add_models(netlist, settings), substitute, keep_unread=True)
     circuit, source, sink = complete(flat, settings)
     return restrict(circuit, input or source), input or source, output or sink
 

@@ -3,25 +3,30 @@
 from __future__ import annotations
 
 import glob
-import os
-import sys
-from collections.abc import Callable, Iterator, Sequence
-from contextlib import contextmanager
+from collections.abc import Callable, Mapping, Sequence
 from pathlib import Path
-from typing import TextIO
+from typing import TYPE_CHECKING, TextIO
 
 from tauledger.circuit.elements import Circuit
 from tauledger.configuration.settings import PathSettings
-from tauledger.fleet import Target, check_targets
+from tauledger.fleet import (
+    Target,
+    check_targets,
+    one_thread_each,
+    usable_cores,
+    worker_processes,
+)
 from tauledger.problems import Problem, ProblemError, Severity
 from tauledger.review.check import NetlistCheck, check
 from tauledger.review.rows import Review
 
+if TYPE_CHECKING:
+    from tauledger.report.starter_parts import PartFound
+    from tauledger.review.decisions import Stress
+
 FORMATS = ("text", "markdown", "github", "gitlab", "sarif", "junit", "json")
 FEW = 40
 """So many netlists are done in this process before workers would have started (measured)."""
-
-_THREADS = ("OPENBLAS_NUM_THREADS", "MKL_NUM_THREADS", "OMP_NUM_THREADS")
 
 
 def check_on_all_cores(targets: Sequence[Target], stream: TextIO) -> list[NetlistCheck]:
@@ -30,52 +35,12 @@ def check_on_all_cores(targets: Sequence[Target], stream: TextIO) -> list[Netlis
     Progress goes to ``stream`` when that is a terminal.
     """
     show = _progress(len(targets), stream)
-    workers = min(_cores(), len(targets))
-    with _one_thread_each():
-        if len(targets) <= FEW or workers == 1:
+    workers = min(usable_cores(), len(targets))
+    if len(targets) <= FEW or workers == 1:
+        with one_thread_each():
             return check_targets(targets, progress=show)
-        return _check_in_workers(targets, workers, show)
-
-
-def _check_in_workers(
-    targets: Sequence[Target], workers: int, show: Callable[[int], None] | None
-) -> list[NetlistCheck]:
-    import multiprocessing
-    from concurrent.futures import ProcessPoolExecutor
-
-    # Not "fork", which copies whatever threads the numeric library has started.
-    methods = multiprocessing.get_all_start_methods()
-    context = multiprocessing.get_context("forkserver" if "forkserver" in methods else "spawn")
-    # The engine is loaded once, with one thread, before the workers split off.
-    context.set_forkserver_preload(["tauledger.analysis"])
-    with ProcessPoolExecutor(workers, mp_context=context) as executor:
-        try:
-            return check_targets(targets, executor, show)
-        except BaseException:
-            executor.shutdown(wait=False, cancel_futures=True)
-            raise
-
-
-@contextmanager
-def _one_thread_each() -> Iterator[None]:
-    """Keep the numeric library from threads of its own where it is not loaded yet.
-
-    On matrices of a few dozen rows they double the processor time and save nothing (measured).
-    """
-    names = [name for name in _THREADS if name not in os.environ]
-    os.environ.update(dict.fromkeys(names, "1"))
-    try:
-        yield
-    finally:
-        for name in names:
-            del os.environ[name]
-
-
-def _cores() -> int:
-    # The cores this process may use, which a container may have fewer of than the machine.
-    if sys.platform == "linux":
-        return len(os.sched_getaffinity(0))
-    return os.cpu_count() or 1
+    with worker_processes(workers, "tauledger.analysis") as executor:
+        return check_targets(targets, executor, show)
 
 
 def _progress(total: int, stream: TextIO) -> Callable[[int], None] | None:
@@ -83,7 +48,8 @@ def _progress(total: int, stream: TextIO) -> Callable[[int], None] | None:
         return None
 
     def show(done: int) -> None:
-        stream.write(f"\rchecked {done} of {total}" if done < total else "\r\x1b[K")
+        # Blanks, since not every console of Windows knows the code that clears a line.
+        stream.write(f"\rchecked {done} of {total}" if done < total else f"\r{'':<40}\r")
         stream.flush()
 
     return show
@@ -150,16 +116,51 @@ def starter_for(
     """
     from tauledger.analysis import analyze, read
     from tauledger.circuit import flatten
+    from tauledger.decide.stress import stress
     from tauledger.report.starter import bare_starter, starter
 
     content = read(netlist)
     named = _named_from(folder, netlist.resolve())
     try:
-        return starter(analyze(content, input, output).review, named)
+        analysis = analyze(content, input, output)
+        found = _parts(analysis.circuit, _strains(stress(analysis)))
+        return starter(analysis.review, named, found)
     except ProblemError as error:
         explain(error.problems)
     circuit = flatten(content)
-    return bare_starter(circuit.title, circuit.nodes, named)
+    return bare_starter(circuit.title, circuit.nodes, named, _parts(circuit, {}))
+
+
+def _strains(found: Stress) -> dict[str, float]:
+    """Voltage or heat of every part at the operating point, magnitudes."""
+    strains = {row.part: abs(row.voltage_v) for row in found.capacitors}
+    strains |= {row.part: row.power_w for row in found.resistors}
+    return strains | {row.part: row.power_w for row in found.devices}
+
+
+def _parts(circuit: Circuit, strains: Mapping[str, float]) -> list[PartFound]:
+    """What stands on the board, in the order of the netlist."""
+    from tauledger.circuit import elements as of
+    from tauledger.report.starter_parts import PartFound
+
+    kinds: dict[type[of.Element], str] = {
+        of.Resistor: "resistor",
+        of.Capacitor: "capacitor",
+        of.BipolarTransistor: "bipolar",
+        of.JunctionFet: "jfet",
+        of.MosFet: "mosfet",
+        of.Diode: "diode",
+    }
+    return [
+        PartFound(
+            name=element.name,
+            kind=kinds[type(element)],
+            value=element.capacitance_f if isinstance(element, of.Capacitor) else None,
+            strain=strains.get(element.name),
+        )
+        for element in circuit.elements
+        if type(element) in kinds
+    ]
 
 
 def _named_from(folder: Path | None, netlist: Path) -> str:

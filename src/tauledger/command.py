@@ -1,6 +1,6 @@
 """The command line: parse arguments, call, print. Nothing is computed here.
 
-A subcommand is one entry in :data:`COMMANDS` and the module of its name in ``commands/``, read only
+A subcommand is one entry in ``COMMANDS`` and the module of its name in ``commands/``, read only
 when it is asked for: ``add_arguments``, and ``run`` from them to the exit code. Exit codes: 0 fine;
 1 a finding; 2 usage, configuration or unreadable input; 3 internal error; 130 interrupted; 141 the
 reader of the output has gone.
@@ -13,9 +13,6 @@ import os
 import re
 import sys
 from collections.abc import Iterable, Sequence
-from dataclasses import dataclass
-from importlib import import_module
-from types import ModuleType
 from typing import NoReturn
 
 from tauledger.commands.output import (
@@ -29,8 +26,8 @@ from tauledger.commands.output import (
     save_details,
     silence_stdout,
 )
+from tauledger.commands.parsers import COMMANDS, command_parser, module_of, top_parser
 from tauledger.problems import ProblemError
-from tauledger.version import VERSION
 
 
 def main(argv: Sequence[str] | None = None) -> int:
@@ -68,78 +65,21 @@ def _silence_warnings() -> None:
         os.environ["PYTHONWARNINGS"] = "ignore"
 
 
-@dataclass(frozen=True, slots=True)
-class Command:
-    """One subcommand: how it reads in the help."""
-
-    summary: str
-    example: str
-
-
-COMMANDS = {
-    "report": Command(
-        "Print bias, stages, gain and what sets each corner.",
-        "tauledger report preamp.cir --output out",
-    ),
-    "compare": Command(
-        "Print how two revisions differ and which edit moved each corner.",
-        "tauledger compare HEAD~1:boards/preamp.cir boards/preamp.cir",
-    ),
-    "annotate": Command(
-        "Write the results beside the parts, as comments or on a drawing.",
-        "tauledger annotate preamp.cir --drawing preamp.svg --output marked.svg",
-    ),
-    "check": Command(
-        "Hold netlists against their limits and look for what is wrong.",
-        "tauledger check boards/*.cir --format github",
-    ),
-    "start": Command(
-        "Write a tauledger.toml to fill in, from what a netlist holds.",
-        "tauledger start preamp.cir --output tauledger.toml",
-    ),
-    "spread": Command(
-        "Print how gain and corners spread over boards within tolerances.",
-        "tauledger spread preamp.cir --tolerance 'R*=5%' --tolerance 'C*=20%'",
-    ),
-    "choose": Command(
-        "Print which standard values meet a corner, verified exactly.",
-        "tauledger choose preamp.cir --low-corner 20Hz --only C1,C3",
-    ),
-    "stress": Command(
-        "Print voltages and polarity of capacitors, heat, start-up.",
-        "tauledger stress preamp.cir --margin 30%",
-    ),
-    "temperature": Command(
-        "Print gain, corners and bias over a range of temperatures.",
-        "tauledger temperature preamp.cir --range 0..60",
-    ),
-}
-
-
 # Arguments ----------------------------------------------------------------------------------------
-
-
-class _Parser(argparse.ArgumentParser):
-    """Usage errors take the same road as every other problem."""
-
-    def error(self, message: str) -> NoReturn:
-        refuse("usage", f"{self.prog}: {message}", f"See {self.prog} --help.")
 
 
 def _run(given: list[str]) -> int:
     name, rest = (given[0], given[1:]) if given else ("", [])
     if name.startswith("-"):
-        top = _top_parser()
+        top = top_parser()
         _check_options(top, given)
         top.parse_args(given)
-    command = COMMANDS.get(name)
-    if command is None:
+    if name not in COMMANDS:
         _refuse_command(name)
-    module = import_module(f"tauledger.commands.{name}")
-    parser = _command_parser(name, command, module)
+    parser = command_parser(name)
     rest = _joined_negatives(rest)
     _check_options(parser, rest)
-    status: int = module.run(parser.parse_args(rest))
+    status: int = module_of(name).run(parser.parse_args(rest))
     return status
 
 
@@ -153,36 +93,6 @@ def _joined_negatives(given: Iterable[str]) -> list[str]:
         else:
             joined.append(argument)
     return joined
-
-
-def _top_parser() -> _Parser:
-    width = max(map(len, COMMANDS))
-    listing = "\n".join(f"  {name:<{width}}  {c.summary}" for name, c in COMMANDS.items())
-    example = next(iter(COMMANDS.values())).example
-    parser = _Parser(
-        prog="tauledger",
-        usage="tauledger COMMAND [ARGUMENTS]",
-        description="Which capacitor sets each corner of a transistor amplifier, and why.",
-        epilog=f"commands:\n{listing}\n\nexample:\n  {example}\n\n"
-        "tauledger COMMAND --help tells more of one command.",
-        formatter_class=argparse.RawDescriptionHelpFormatter,
-        allow_abbrev=False,
-    )
-    version = f"tauledger {VERSION}"
-    parser.add_argument("--version", action="version", version=version, help="print the version")
-    return parser
-
-
-def _command_parser(name: str, command: Command, module: ModuleType) -> _Parser:
-    parser = _Parser(
-        prog=f"tauledger {name}",
-        description=command.summary,
-        epilog=f"example: {command.example}",
-        formatter_class=argparse.RawDescriptionHelpFormatter,
-        allow_abbrev=False,
-    )
-    module.add_arguments(parser)
-    return parser
 
 
 def _check_options(parser: argparse.ArgumentParser, given: Iterable[str]) -> None:

@@ -7,7 +7,8 @@ go on collects problems; code that cannot raises :class:`ProblemError` with what
 from __future__ import annotations
 
 import enum
-from dataclasses import dataclass
+
+from tauledger.records import dataclass
 
 
 class Severity(enum.StrEnum):

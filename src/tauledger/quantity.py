@@ -15,7 +15,8 @@ from __future__ import annotations
 import math
 import re
 from collections.abc import Iterator
-from dataclasses import dataclass
+
+from tauledger.records import dataclass
 
 TRAPS: dict[str, tuple[str, str]] = {
     "value-milli": (

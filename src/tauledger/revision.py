@@ -16,14 +16,17 @@ import fnmatch
 import os
 import re
 import subprocess
+import sys
 import tempfile
 import tomllib
+import unicodedata
 from collections.abc import Iterable, Iterator, Mapping, Sequence
 from contextlib import contextmanager
-from dataclasses import dataclass, replace
+from dataclasses import replace
 from pathlib import Path, PurePosixPath
 
 from tauledger.problems import Problem, ProblemError, Severity
+from tauledger.records import dataclass
 
 MAXIMUM_FILE_BYTES = 8 * 1024 * 1024
 MAXIMUM_BYTES = 64 * 1024 * 1024
@@ -72,21 +75,26 @@ def opened(name: str, where: Path | None = None) -> Iterator[Place]:
     lives as long as the context. Raises ProblemError, with the user's names in it.
     """
     revision, colon, path = name.partition(":")
-    # C:\amp.cir is a file that is not there, not a path in a revision named C.
-    drive = len(revision) == 1 and path.startswith(("\\", "/"))
-    if not colon or not revision or drive or os.path.lexists(name):
+    if not colon or not revision or _is_drive(revision, path) or os.path.lexists(name):
         yield Place(Path(name), None, name)
         return
     repository = _Repository(where or Path())
     commit = repository.commit(revision)
     inside = repository.inside(path, name)
     with tempfile.TemporaryDirectory(prefix="tauledger-") as folder:
-        repository.copy(commit, inside, Path(folder), name)
+        inside = repository.copy(commit, inside, Path(folder), name)
         place = Place(Path(folder, inside), (Path(folder).resolve(),), name, folder)
         try:
             yield place
         except ProblemError as error:
             raise ProblemError(*map(place.named, error.problems)) from None
+
+
+def _is_drive(revision: str, path: str) -> bool:
+    """Whether ``C:\\amp.cir`` is a file that is not there, not a path in a revision named C."""
+    on_drive = path.startswith(("\\", "/")) or sys.platform == "win32"
+    # Git allows no backslash in a name; Windows begins the longest of its paths with \\?\.
+    return "\\" in revision or (len(revision) == 1 and on_drive)
 
 
 def name_in(revision: str, netlist: Path) -> str:
@@ -143,7 +151,11 @@ class _Repository:
         return identity
 
     def inside(self, path: str, name: str) -> str:
-        """The path from the top of the tree; as in git, ``./`` counts from the current folder."""
+        """The path from the top of the tree; as in git, ``./`` counts from the current folder.
+
+        Backslashes are read as slashes, as in an .include.
+        """
+        path = path.replace("\\", "/")
         pure = PurePosixPath(path)
         if path.startswith(("./", "../")):
             joined = os.path.normpath(self.folder.resolve() / path)
@@ -157,9 +169,10 @@ class _Repository:
             "Write it as REV:folder/netlist.cir, counted from the top of the repository.",
         )
 
-    def copy(self, commit: str, netlist: str, target: Path, name: str) -> None:
-        """Copy the netlist of a commit and the files it may ask for."""
+    def copy(self, commit: str, netlist: str, target: Path, name: str) -> str:
+        """Copy the netlist of a commit and the files it may ask for; its path, as git spells it."""
         tree = self._tree(commit)
+        netlist = _spelt(netlist, tree)
         if netlist not in tree:
             raise _fault(
                 "revision-file",
@@ -186,6 +199,7 @@ class _Repository:
             for path, content in self._contents(tree, batch):
                 _write(target, path, content)
                 waiting += (found for found in _asked(path, content, tree) if found not in copied)
+        return netlist
 
     def _tree(self, commit: str) -> Mapping[str, _Blob]:
         """Every regular file of a commit that may be a netlist, by its path."""
@@ -221,6 +235,9 @@ class _Repository:
     def _git(self, *arguments: str, given: bytes = b"") -> bytes | None:
         """What git prints, or None when it fails."""
         environment = {k: v for k, v in os.environ.items() if k not in _HOOK_VARIABLES}
+        if sys.platform == "win32":
+            # Else a git.exe in the folder of the netlist is started rather than git (from memory).
+            os.environ.setdefault("NoDefaultCurrentDirectoryInExePath", "1")
         try:
             done = subprocess.run(
                 ["git", *arguments],
@@ -241,6 +258,19 @@ class _Repository:
                 "Check that git is installed and on the PATH.",
             ) from None
         return done.stdout if done.returncode == 0 else None
+
+
+def _spelt(path: str, tree: Iterable[str]) -> str:
+    """The path as the tree has it, where only letter case or the form of accents differs.
+
+    On the file systems of macOS and Windows both spellings open the same file.
+    """
+    alike = [found for found in tree if _folded(found) == _folded(path)]
+    return alike[0] if len(alike) == 1 else path
+
+
+def _folded(path: str) -> str:
+    return unicodedata.normalize("NFC", path).casefold()
 
 
 def _asked(path: str, content: bytes, tree: Mapping[str, _Blob]) -> Iterable[str]:

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Callable
-from dataclasses import dataclass, replace
+from dataclasses import replace
 from pathlib import Path
 
 from tauledger.analysis import Analysis, analyze, corners_of
@@ -12,6 +12,7 @@ from tauledger.circuit.elements import GROUND, Circuit
 from tauledger.configuration.settings import PathSettings
 from tauledger.netlist import read
 from tauledger.problems import ProblemError
+from tauledger.records import dataclass
 from tauledger.review.attribution import Figures, figures
 from tauledger.review.changes import Comparison, PartChange
 from tauledger.review.compare import Revision

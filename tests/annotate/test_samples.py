@@ -12,8 +12,8 @@ from pathlib import Path
 import numpy as np
 import pytest
 
+import ngspice
 from annotate.conftest import Look
-from referee import ngspice
 from tauledger.analysis import analyze, read
 from tauledger.annotate import annotate_drawings, annotate_netlist, read_drawings
 from tauledger.annotate.scan import scan

@@ -13,9 +13,6 @@ from __future__ import annotations
 
 import argparse
 import json
-import resource
-import shutil
-import subprocess
 import sys
 import tempfile
 import time
@@ -24,6 +21,9 @@ from pathlib import Path
 
 import numpy as np
 
+sys.path.insert(0, str(Path(__file__).parents[1]))
+
+import ngspice
 from tauledger.analysis import analyze
 from tauledger.circuit import flatten
 from tauledger.circuit.elements import Capacitor, Circuit, Resistor
@@ -96,22 +96,12 @@ def ngspice_deck(varied: Boards, count: int) -> str:
 
 
 def ngspice_seconds(varied: Boards, count: int) -> float:
-    program = shutil.which("ngspice")
-    if program is None:
-        sys.exit("ngspice is not installed")
     with tempfile.TemporaryDirectory() as folder:
-        (Path(folder) / "boards.cir").write_text(ngspice_deck(varied, count))
         begin = time.perf_counter()
-        done = subprocess.run(
-            [program, "-n", "-b", "boards.cir"],
-            cwd=folder,
-            stdin=subprocess.DEVNULL,
-            capture_output=True,
-            text=True,
-            timeout=300,
-            check=False,
-            preexec_fn=lambda: resource.setrlimit(resource.RLIMIT_AS, (2 << 30, 2 << 30)),
-        )
+        try:
+            done = ngspice.execute(ngspice_deck(varied, count), Path(folder), timeout_s=300.0)
+        except ngspice.RefereeError as error:
+            sys.exit(str(error))
         elapsed = time.perf_counter() - begin
     sweeps = done.stdout.count("No. of Data Rows : 181")
     if sweeps != count:

@@ -12,7 +12,6 @@ from __future__ import annotations
 import os
 import resource
 import shutil
-import subprocess
 import sys
 import tempfile
 import time
@@ -21,8 +20,11 @@ from pathlib import Path
 # The work is spread over processes, where threads of the numeric library only get in the way.
 os.environ.setdefault("OPENBLAS_NUM_THREADS", "1")
 
+sys.path.insert(0, str(Path(__file__).parents[1]))
+
 from concurrent.futures import ProcessPoolExecutor
 
+import ngspice
 from tauledger.analysis import Analysis, analyze, read
 from tauledger.circuit.elements import Capacitor, Resistor
 from tauledger.decide.asked import parse_asked
@@ -33,7 +35,6 @@ SAMPLE = Path(__file__).parents[2] / "samples/feedback-pair/feedback-pair.cir"
 BOARDS = (1_000, 10_000, 100_000)
 NGSPICE_BOARDS = 200
 SWEEP = "ac dec 20 0.01 100meg"
-MEMORY_BYTES = 2_000_000_000
 
 
 def ours(analysis: Analysis, boards: int, executor: ProcessPoolExecutor | None) -> float:
@@ -44,13 +45,13 @@ def ours(analysis: Analysis, boards: int, executor: ProcessPoolExecutor | None) 
     return time.perf_counter() - start
 
 
-def ngspice(netlist: Path, analysis: Analysis, boards: int) -> float:
+def theirs(netlist: Path, analysis: Analysis, boards: int) -> float:
     """Seconds for a loop of boards, start-up left out."""
-    empty, full = (_ngspice(netlist, analysis, count) for count in (0, boards))
+    empty, full = (_their_boards(netlist, analysis, count) for count in (0, boards))
     return full - empty
 
 
-def _ngspice(netlist: Path, analysis: Analysis, boards: int) -> float:
+def _their_boards(netlist: Path, analysis: Analysis, boards: int) -> float:
     parts = [e for e in analysis.circuit.elements if isinstance(e, Resistor | Capacitor)]
     text = netlist.read_text().lower().rpartition(".end")[0]
     lines = [".control"]
@@ -61,19 +62,10 @@ def _ngspice(netlist: Path, analysis: Analysis, boards: int) -> float:
             lines.append(f"alter {part.name.lower()} = {value * factor!r}")
         lines += ["op", SWEEP, "destroy all"]
     lines += ["quit", ".endc", ".end", ""]
+    deck = text + "\n".join(lines)
     with tempfile.TemporaryDirectory() as folder:
-        Path(folder, ".spiceinit").write_text("* nothing\n")
-        Path(folder, "deck.cir").write_text(text + "\n".join(lines))
         start = time.perf_counter()
-        subprocess.run(
-            ["ngspice", "-b", "deck.cir"],
-            cwd=folder,
-            stdout=subprocess.DEVNULL,
-            stderr=subprocess.DEVNULL,
-            timeout=300,
-            check=False,
-            preexec_fn=lambda: resource.setrlimit(resource.RLIMIT_AS, (MEMORY_BYTES,) * 2),
-        )
+        ngspice.execute(deck, Path(folder), timeout_s=300.0)
         return time.perf_counter() - start
 
 
@@ -84,7 +76,7 @@ def main() -> None:
     print(f"{netlist.name}: {analysis.solution.equations.size} unknowns, {count} resistors")
     ratio_base = None
     if shutil.which("ngspice"):
-        seconds = ngspice(netlist, analysis, NGSPICE_BOARDS)
+        seconds = theirs(netlist, analysis, NGSPICE_BOARDS)
         ratio_base = NGSPICE_BOARDS / seconds
         print(f"  ngspice, one process   {NGSPICE_BOARDS:>7} boards {ratio_base:10.0f} boards/s")
     cores = len(os.sched_getaffinity(0))

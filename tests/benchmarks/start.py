@@ -40,7 +40,8 @@ def fastest(repeat: int, *works: Callable[[], object]) -> list[float]:
 
 def process(command: Sequence[str], folder: Path = SAMPLES) -> Callable[[], object]:
     # The program asks for one thread of the linear algebra; the bare import must not pay for more.
-    environment = {**os.environ, "OPENBLAS_NUM_THREADS": "1"}
+    # pip compiles what it installs, numpy as well as tauledger: a run from a checkout may do so.
+    environment = {**os.environ, "OPENBLAS_NUM_THREADS": "1", "PYTHONDONTWRITEBYTECODE": ""}
     return lambda: subprocess.run(
         command, cwd=folder, env=environment, stdout=subprocess.DEVNULL, check=True
     )

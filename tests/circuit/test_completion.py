@@ -238,6 +238,69 @@ def test_an_unfinished_second_circuit_does_not_stop_the_first() -> None:
     assert not {"inb", "nowhere", "out2"} & set(analysis.circuit.nodes)
 
 
+@pytest.mark.parametrize(
+    ("line", "code"),
+    [
+        ("RX cb out2 4..7k", "value-range"),
+        ("LX cb out2 much", "value-unreadable"),
+        ("CX out2 0", "value-missing"),
+        ("QX cb bb eb BC999X", "model-missing"),
+        ("XX bb out2 NOWHERE", "subcircuit-missing"),
+        ("DX lonely 0 DMISSING", "model-missing"),
+    ],
+)
+def test_what_cannot_be_read_elsewhere_is_a_warning(line: str, code: str) -> None:
+    alone = analyze(parse("one\n" + LEFT + _CARD)).review.paths[0]
+    both = parse("two\n" + LEFT + UNFINISHED + line + "\n" + _CARD)
+    review = analyze(both, input="va").review
+    assert review.paths[0].low == alone.low
+    assert review.paths[0].gain == alone.gain
+    (warning,) = [p for p in review.problems if p.severity is Severity.WARNING]
+    assert (warning.code, warning.span and warning.span.line) == (code, 19)
+    assert "another circuit of the file" in warning.message
+    # Of the circuit that it belongs to, or of no circuit at all, it is still an error.
+    others = [analyze, lambda netlist: analyze(netlist, input="vb"), flatten]
+    for reading in others[:1] if "lonely" in line else others:
+        with pytest.raises(ProblemError) as caught:
+            reading(both)
+        assert [p.code for p in caught.value.problems if p.severity is Severity.ERROR] == [code]
+
+
+@pytest.mark.parametrize(
+    "lines",
+    [
+        "RX cb ca 4..7k",
+        "RX vcc 0 4..7k",
+        "RX lamp vcc 4..7k\nRY lamp ca 1k",
+        "QX lamp lit dark BC999X\nQY ca dark eb BC999X",
+        "XX bb bulb NOWHERE\n.global bulb\nRY bulb ca 1k",
+        "DX bb out2 ca",
+        "VX bb 0 1..2",
+        "FX bb 0 VNONE 10",
+        "RCA cb out2 4..7k\nRCA eb 0 1k",
+        "XX bb S\n.subckt S a\nR1 a 0 bad\n.ends",
+    ],
+)
+def test_what_may_belong_to_the_path_is_an_error(lines: str) -> None:
+    text = "two\n" + LEFT + UNFINISHED + lines + "\n" + _CARD
+    with pytest.raises(ProblemError) as caught:
+        analyze(parse(text), input="va")
+    assert all(p.span for p in caught.value.problems)
+    assert any(p.severity is Severity.ERROR for p in caught.value.problems)
+
+
+def test_outputs_asked_for_in_a_circuit_left_out_are_named() -> None:
+    text = "two\n" + LEFT + UNFINISHED + _CARD
+    shown = ".print ac v(out2) v(cb,eb) v(ca)\n"
+    circuit = restrict(flatten(parse(text.replace(".end\n", "") + shown)), "va")
+    assert circuit.output_hints == (("ca",),)
+    (note,) = [p for p in circuit.problems if p.code == "circuit-independent"]
+    assert note.message.endswith("asks to see there: v(out2), v(cb,eb)")
+    plain = restrict(flatten(parse(text)), "va")
+    (note,) = [p for p in plain.problems if p.code == "circuit-independent"]
+    assert "print" not in note.message
+
+
 def test_supplies_and_their_decoupling_belong_to_every_circuit() -> None:
     more = "CD vcc 0 100u\nV2 vbb vcc 5\nRX vbb lamp 1k\nRY lamp 0 1k\n"
     circuit = flatten(parse("two\n" + LEFT + more + _CARD))

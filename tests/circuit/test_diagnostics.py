@@ -257,6 +257,7 @@ def test_nothing_is_passed_over_in_silence(line: str, unused: str, tmp_path: Pat
         (".temp -273.15", "value-unusable", "absolute zero", (2, 7)),
         (".temp 1e6", "value-out-of-range", "1000 °C", (2, 7)),
         (".options tnom=-400", "value-unusable", "absolute zero", (2, 15)),
+        (".options gmin={-1p}", "value-unusable", "GMIN is -1e-12 S; expected zero", (2, 15)),
         ("Q1 a b 0 m\n.model m npn(bf=0)", "value-out-of-range", "BF is 0", (3, 14)),
         ("Q1 a b 0 m\n.model m pnp(vaf=80 bf=-5)", "value-out-of-range", "BF is -5", (3, 21)),
         ("Q1 a b 0 m\n.model m npn(is=0)", "value-out-of-range", "IS is 0", (3, 14)),
@@ -276,7 +277,8 @@ def test_values_that_make_no_sense_are_told_once(
 
 
 def test_limits_of_sense_are_not_warned_of(tmp_path: Path) -> None:
-    text = "t\n.temp -273\n.options tnom=1000\nQ1 a a 0 m\n.model m npn(vaf=0 var=0)\nR2 a 0 1p\n"
+    settings = ".temp -273\n.options tnom=1000 gmin=0\n"
+    text = f"t\n{settings}Q1 a a 0 m\n.model m npn(vaf=0 var=0)\nR2 a 0 1p\n"
     assert not problems_of(_written(tmp_path, text.encode()))
 
 

@@ -10,7 +10,7 @@ import pytest
 from hypothesis import HealthCheck, assume, given, settings
 from hypothesis import strategies as st
 
-from netlist.ngspice_values import ngspice_values
+import ngspice
 from tauledger.circuit.evaluate import (
     EvaluationError,
     UserFunction,
@@ -63,7 +63,7 @@ def reading_in_source(text: str) -> float:
 @pytest.mark.referee
 def test_parameters_have_the_values_ngspice_gives_them() -> None:
     texts = [*listed(BOTH), "1||0&&0", "0||0", *listed(PARAMETER_ONLY)]
-    found = ngspice_values([f"V{{n}} n{{n}} 0 {{{text}}}" for text in texts], PARAMETER_CARD)
+    found = ngspice.values([f"V{{n}} n{{n}} 0 {{{text}}}" for text in texts], PARAMETER_CARD)
     expected = dict(zip(texts, found, strict=True))
     read = {text: reading_of_parameter(text) for text in texts}
     assert read == pytest.approx(expected, rel=1e-14)
@@ -72,7 +72,7 @@ def test_parameters_have_the_values_ngspice_gives_them() -> None:
 @pytest.mark.referee
 def test_sources_have_the_values_ngspice_gives_them() -> None:
     texts = [*listed(BOTH), "1||0&&0", *listed(SOURCE_ONLY)]
-    found = ngspice_values([f"B{{n}} n{{n}} 0 v={text}" for text in texts], PARAMETER_CARD)
+    found = ngspice.values([f"B{{n}} n{{n}} 0 v={text}" for text in texts], PARAMETER_CARD)
     expected = dict(zip(texts, found, strict=True))
     read = {text: reading_in_source(text) for text in texts}
     # ngspice hands constants to a source with eleven digits.

@@ -17,7 +17,6 @@ from tauledger.configuration.reading import read_configuration
 from tauledger.decide.asked import parse_asked
 from tauledger.decide.bench import bench_of, measure_values
 from tauledger.decide.choose import choose
-from tauledger.decide.patch import patch, spice_value
 from tauledger.decide.search import Wish
 from tauledger.decide.series import mantissas
 from tauledger.decide.sizing import least_total
@@ -242,60 +241,3 @@ def test_a_part_that_cannot_be_chosen_is_refused(wish: Wish, code: str) -> None:
     with pytest.raises(ProblemError) as raised:
         choose(run(STAGE), wish)
     assert raised.value.problems[0].code == code
-
-
-# Patch --------------------------------------------------------------------------------------------
-
-
-def apply(old: bytes, diff: bytes) -> bytes:
-    """The one file of a unified diff, changed line by line."""
-    lines = old.splitlines(keepends=True)
-    result, at = [], 0
-    for line in diff.splitlines(keepends=True)[2:]:
-        if line.startswith(b"@@"):
-            start = int(line.split()[1].split(b",")[0][1:]) - 1
-            result += lines[at:start]
-            at = start
-        elif line.startswith(b"+"):
-            result.append(line[1:])
-        else:
-            assert lines[at] == line[1:]
-            if line.startswith(b" "):
-                result.append(lines[at])
-            at += 1
-    return b"".join(result + lines[at:])
-
-
-@pytest.mark.parametrize("ending", [b"\n", b"\r\n"])
-def test_the_patch_changes_only_the_values(tmp_path: Path, ending: bytes) -> None:
-    netlist = tmp_path / "stage.cir"
-    text = STAGE.replace("CE e 0 100u", "ce   e 0\t100uF  ; bypass \u00fc").encode("latin-1")
-    netlist.write_bytes(text.replace(b"\n", ending))
-    analysis = analyze(read(netlist), output="out")
-    choice = choose(analysis, Wish("low", 20.0))
-    changed = apply(netlist.read_bytes(), patch(analysis.circuit, choice.alternatives[0]))
-    netlist.write_bytes(changed)
-    again = analyze(read(netlist), output="out")
-    assert again.corners.low.exact_hz == pytest.approx(choice.alternatives[0].corner_hz, rel=1e-7)
-    assert b"  ; bypass \xfc" + ending in changed
-    assert changed.count(ending) == text.count(b"\n")
-
-
-def test_a_value_that_is_no_number_is_not_patched(tmp_path: Path) -> None:
-    netlist = tmp_path / "stage.cir"
-    text = STAGE.replace("CE e 0 100u", "CE e 0 {cbig}\n.param cbig=100u")
-    netlist.write_text(text)
-    analysis = analyze(read(netlist), output="out")
-    choice = choose(analysis, Wish("low", 20.0, only=("CE", "C1")))
-    with pytest.raises(ProblemError) as raised:
-        patch(analysis.circuit, choice.alternatives[0])
-    (problem,) = raised.value.problems
-    assert problem.code == "patch-value"
-    assert problem.span is not None
-    assert "CE" in problem.message
-
-
-def test_values_are_written_as_netlists_have_them() -> None:
-    assert [spice_value(v) for v in (4.7e-12, 1e-9, 2.2e-6, 1e-3, 1.0)] == [
-        "4.7p", "1n", "2.2u", "1m", "1",
-    ]  # fmt: skip

@@ -105,7 +105,7 @@ def test_the_patch_is_printed_alone(
         (("choose",), "--low-corner"),
         (("choose", "--low-corner", "20Hz", "--series", "E7"), "one of E3"),
         (("choose", "--low-corner", "20Hz", "--shares", "CE=50,C1=20"), "100 together"),
-        (("choose", "--low-corner", "30Hz", "--patch", "9"), "one that exists"),
+        (("choose", "--low-corner", "30Hz", "--patch", "9"), "that exists; there are 3"),
         (("stress", "--margin", "120%"), "0 to below 100"),
         (("temperature",), "a range such as 0..60"),
         (("temperature", "--range", "9"), "two temperatures"),

@@ -8,12 +8,15 @@ from pathlib import Path
 
 import pytest
 
+import ngspice
 from decide.circuits import STAGE, run
+from tauledger.analysis import analyze
 from tauledger.configuration.reading import read_configuration
 from tauledger.configuration.settings import PathSettings
 from tauledger.decide.dielectric import code_limits
 from tauledger.decide.stress import stress
 from tauledger.decide.temperature import steps, temperature_sweep
+from tauledger.netlist import parse
 from tauledger.problems import ProblemError, Severity
 from tauledger.report.decision_json import decision_json
 from tauledger.report.decision_parts import stress_page, temperature_page
@@ -169,6 +172,105 @@ def test_heat_in_resistors(tmp_path: Path) -> None:
     assert (first.power_w, first.load) == (pytest.approx(0.06), pytest.approx(1.2))
     assert codes(result)["resistor-overloaded"] == {"R1"}
     assert next(r for r in result.resistors if r.part == "R2").load is None
+
+
+HOT = """one of each, emitters and sources above ground
+VP p 0 20
+VM m 0 -5
+Q1 p b e hot m=2
+VB b 0 3 AC 1
+RE e m 470
+D1 p k dz
+RD k 0 1k
+J1 p 0 s jf
+RS s 0 220
+M1 p g t 0 mo w=100u l=10u
+VG g 0 6
+RM t 0 330
+C1 e k 1u
+C2 k s 1u
+C3 s t 1u
+C4 t out 1u
+RL out 0 10k
+.model hot npn (is=20f bf=150 vaf=90 rb=40 re=0.5 ptot=0.05)
+.model dz d (is=1n rs=3)
+.model jf njf (beta=2m vto=-2 lambda=5m rd=20 rs=20)
+.model mo nmos (level=1 vto=1 kp=50u lambda=0.01 gamma=0.4)
+.end
+"""
+
+
+def test_ratings_of_devices_come_from_class_or_card(tmp_path: Path) -> None:
+    """Two devices in parallel stand twice the rating; a word as a rating is none."""
+    worded = HOT.replace("rs=3", "rs=3 pd=lots mfg=somebody")
+    bare = {row.part: row for row in stress(run(worded)).devices}
+    assert set(bare) == {"Q1", "D1", "J1", "M1"}
+    assert bare["Q1"].rated_w == pytest.approx(0.1)
+    assert bare["Q1"].basis == "ptot of model hot"
+    assert bare["Q1"].load == pytest.approx(bare["Q1"].power_w / 0.1)
+    assert {bare[part].rated_w for part in ("D1", "J1", "M1")} == {None}
+    text = """
+[transistors.signal]
+match = "[qj]*"
+current_gain = "30 %"
+rated_power = "75 mW"
+[diodes.small]
+match = "D?"
+rated_power = "5 mW"
+"""
+    result = stress(run(HOT), settings_of(tmp_path, text))
+    rated = {row.part: (row.rated_w, row.basis) for row in result.devices}
+    assert rated == {
+        "Q1": (pytest.approx(0.15), "class signal"),
+        "J1": (pytest.approx(0.075), "class signal"),
+        "D1": (pytest.approx(5e-3), "class small"),
+        "M1": (None, ""),
+    }
+    hotter = {row.part for row in result.devices if row.rated_w and row.power_w > row.rated_w}
+    assert hotter == codes(result)["device-overloaded"]
+    assert hotter == {"Q1", "D1"}
+    (problem, _) = [p for p in result.problems if p.code == "device-overloaded"]
+    assert problem.message.endswith("and is rated 150 mW (class signal)")
+    assert problem.severity is Severity.ERROR
+    assert problem.span is not None
+    assert "Caution" in problem.advice
+    page = plain(stress_page(Page(100, str), result))
+    assert "Transistors and diodes, hottest first" in page
+    assert "rated by class small" in page
+    assert json.loads(decision_json(result))["devices"][0]["basis"] == "class signal"
+
+
+@pytest.mark.referee
+def test_heat_of_devices_against_ngspice(tmp_path: Path) -> None:
+    """Source: ngspice 39.3 run here [P: its output]."""
+    netlist = tmp_path / "hot.cir"
+    netlist.write_text(HOT)
+    powers = {f"@{row.part.lower()}[p]": row.power_w for row in stress(run(HOT)).devices}
+    assert len(powers) == 4
+    assert powers == pytest.approx(ngspice.operating_point(netlist, powers).figures, rel=1e-5)
+
+
+def test_the_load_of_the_configuration_is_no_part_of_the_board(tmp_path: Path) -> None:
+    text = """
+output = { node = "out", load_resistance = "50 Ω", load_capacitance = "1 nF" }
+[capacitors.all]
+match = "C*"
+polarised = true
+rated_voltage = "50 V"
+[resistors.all]
+match = "R*"
+rated_power = "1 nW"
+[path.x.limits]
+capacitor_voltage_margin = { min = "10 %" }
+"""
+    settings = settings_of(tmp_path, text)
+    netlist = "x\nVS in 0 AC 1\nC2 in out 1u\nRB out 0 100k\n.end\n"
+    analysis = analyze(parse(netlist), settings=settings)
+    assert analysis.circuit.attached == {"Rload", "Cload"}
+    result = stress(analysis, settings)
+    assert [r.part for r in result.capacitors] == ["C2"]
+    assert [r.part for r in result.resistors] == ["RB"]
+    assert codes(result)["capacitor-unbiased"] == {"C2"}
 
 
 def test_settling_of_one_time_constant() -> None:

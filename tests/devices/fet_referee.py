@@ -11,7 +11,7 @@ from typing import Any
 
 import numpy as np
 
-from devices.ngspice_point import operating_points
+import ngspice
 from devices.solve_point import branch_voltages
 from tauledger.devices.interface import AnyDevice, Card, OperatingValues
 
@@ -22,6 +22,8 @@ CURRENT, CONDUCTANCE, CAPACITANCE = 1e-4, 2e-3, 5e-3
 _TYPES = {"vdmosn": "vdmos (nchan", "vdmosp": "vdmos (pchan"}
 """The channel must stand inside the bracket: before it, ngspice 39 fills the memory and hangs."""
 Bias = tuple[float, ...]
+Figures = Mapping[str, tuple[str, float, float]]
+"""Our figure to ngspice's name of it, the relative and the absolute tolerance."""
 
 
 @dataclass(frozen=True)
@@ -43,9 +45,12 @@ class Bench:
     def nodes(self) -> str:
         return "dgsb"[: self.device.outer]
 
-    def deck(self, small_signal: str = "") -> str:
+    def elements(self, bias: Bias | None = None) -> str:
+        """The transistor with its sources at a bias, that of the gate with an AC value of 1 V."""
+        outer = self.outer(bias) if bias else [0.0] * len(self.nodes)
         sources = "".join(
-            f"v{node} {node} 0 0 ac {int(node == small_signal)}\n" for node in self.nodes
+            f"v{node} {node} 0 {volts!r} ac {int(node == 'g')}\n"
+            for node, volts in zip(self.nodes, outer, strict=True)
         )
         instance = " ".join(f"{name}={value!r}" for name, value in self.instance.items())
         model = " ".join(f"{name}={value!r}" for name, value in self.model.items())
@@ -66,13 +71,24 @@ class Bench:
             for bias in biases
         ]
         own = [f"@{self.letter}1[{name}]" for name in names]
-        vectors = [f"v{node}#branch" for node in self.nodes]
-        found = operating_points(self.deck(), points, [*own, *vectors], self.temperature_c)
+        vectors = [*own, *self._source_currents]
+        found = ngspice.bias_points(self.elements(), points, vectors, self.temperature_c)
         return [
-            {node: -row[f"v{node}#branch"] for node in self.nodes}
+            {node: -row[f"i(v{node})"] for node in self.nodes}
             | {name: row[vector] for name, vector in zip(names, own, strict=True)}
             for row in found
         ]
+
+    def gate_driven(self, bias: Bias, omega: float) -> dict[str, complex]:
+        """Small-signal currents into the terminals, in A for 1 V at the gate, by ngspice."""
+        found = ngspice.phasors(
+            self.elements(bias), omega / (2.0 * np.pi), self._source_currents, self.temperature_c
+        )
+        return {node: -found[f"i(v{node})"] for node in self.nodes}
+
+    @property
+    def _source_currents(self) -> list[str]:
+        return [f"i(v{node})" for node in self.nodes]
 
     def slopes(self, biases: Sequence[Bias]) -> list[tuple[float, ...]]:
         """Central differences of ngspice's drain current to drain, gate (and bulk) voltage."""
@@ -122,13 +138,10 @@ def close(ours: float, theirs: float, relative: float, absolute: float) -> bool:
     return abs(ours - theirs) <= relative * abs(theirs) + absolute
 
 
-def assert_agreement(
-    bench: Bench, biases: Sequence[Bias], names: Mapping[str, tuple[str, float, float]]
-) -> None:
-    """Every terminal current and our figures against ngspice's.
+def assert_agreement(bench: Bench, biases: Sequence[Bias], names: Figures) -> None:
+    """Every terminal current and the figures named against ngspice's.
 
-    Currents to 1e-4 and 1e-13 A of leakage, the threshold to 1 µV. ``names`` gives for each of our
-    figures ngspice's name of it, the relative and the absolute tolerance.
+    Currents to 1e-4, 1e-13 A of leakage, and what 1 µV of threshold makes.
     """
     rows = bench.ngspice(biases, [their_name for their_name, _, _ in names.values()])
     currents, figures = bench.ours(biases)

@@ -14,8 +14,8 @@ import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
-from devices.ngspice_point import alternating_currents, operating_points
-from devices.solve_point import branch_voltages
+import ngspice
+from devices.solve_point import assert_exact_derivatives, branch_voltages
 from tauledger.devices.bipolar import BIPOLAR
 from tauledger.devices.interface import Card, OperatingValues
 
@@ -93,9 +93,9 @@ def test_agrees_with_ngspice(name: str, kind: str, temperature_c: float) -> None
     sizes = {"area": 2.0, "areab": 1.5, "areac": 3.0, "m": 3.0} if temperature_c == 27.0 else {}
     instance = " ".join(f"{key}={value}" for key, value in sizes.items())
     parameters = BIPOLAR.prepare([Card("q1", kind, model, sizes)], temperature_c, 27.0)
-    currents = [f"v{terminal}#branch" for terminal in "cbes"]
+    currents = [f"i(v{terminal})" for terminal in "cbes"]
     asked = ["gm", "gpi", "go", "gmu", "gx", "cpi", "cmu", "cbx", "csub"]
-    points = operating_points(
+    points = ngspice.bias_points(
         deck(model, kind, instance),
         [{"vc": sign * vc, "vb": sign * vb, "vs": -1.0} for vc, vb in BIASES],
         [*currents, *(f"@q1[{figure}]" for figure in asked)],
@@ -107,7 +107,7 @@ def test_agrees_with_ngspice(name: str, kind: str, temperature_c: float) -> None
         terminal = [float(result.values[key][0, 0]) for key in ("ic", "ib", "ie", "isub")]
         reference = [-point[current] for current in currents]
         assert terminal == pytest.approx(reference, rel=1e-4, abs=2e-14), (vc, vb)
-        power = -sign * (vc * point["vc#branch"] + vb * point["vb#branch"]) + point["vs#branch"]
+        power = -sign * (vc * point["i(vc)"] + vb * point["i(vb)"]) + point["i(vs)"]
         assert float(result.values["power"][0, 0]) == pytest.approx(power, rel=1e-4, abs=1e-13)
         found = figures(result)
         # ngspice's gm is a small difference of large numbers in saturation.
@@ -132,14 +132,14 @@ def test_input_and_transfer_admittance_agree_with_ngspice(
     sign = 1.0 if kind == "npn" else -1.0
     source = deck(model, kind, "").replace("vc c 0 0", f"vc c 0 {sign * bias[0]}")
     source = source.replace("vb b 0 0", f"vb b 0 {sign * bias[1]}").replace("vs s 0 0", "vs s 0 -9")
-    reference = alternating_currents(source, 1e8, ["vc#branch", "vb#branch"])
+    reference = ngspice.phasors(source, 1e8, ["i(vc)", "i(vb)"])
     parameters = BIPOLAR.prepare([Card("q1", kind, model, {})], 27.0, 27.0)
     outer = (sign * bias[0], sign * bias[1], 0.0, -9.0)
     voltages = branch_voltages(BIPOLAR, parameters, outer)
     admittance = small_signal_admittance(parameters, voltages, 2.0 * math.pi * 1e8)
     drive = np.array([0.0, 1.0, 0.0, 0.0])
     collector, base = -(admittance @ drive)[:2]
-    for found, wanted in ((collector, reference["vc#branch"]), (base, reference["vb#branch"])):
+    for found, wanted in ((collector, reference["i(vc)"]), (base, reference["i(vb)"])):
         assert abs(found) == pytest.approx(abs(wanted), rel=1e-4)
         assert cmath.phase(found / wanted) == pytest.approx(0.0, abs=1e-4)
 
@@ -149,13 +149,13 @@ def test_input_and_transfer_admittance_agree_with_ngspice(
 def test_instance_temperature_agrees_with_ngspice(own: Mapping[str, float]) -> None:
     model = MODELS["textbook"]
     instance = " ".join(f"{key}={value}" for key, value in own.items())
-    (point,) = operating_points(
-        deck(model, "npn", instance), [{"vc": 5.0, "vb": 0.6}], ["vc#branch"], 40.0
+    (point,) = ngspice.bias_points(
+        deck(model, "npn", instance), [{"vc": 5.0, "vb": 0.6}], ["i(vc)"], 40.0
     )
     parameters = BIPOLAR.prepare([Card("q1", "npn", model, own)], 40.0, 27.0)
     voltages = branch_voltages(BIPOLAR, parameters, (5.0, 0.6, 0.0, 0.0))
     current = float(BIPOLAR.operating(parameters, voltages, GMIN).values["ic"][0, 0])
-    assert current == pytest.approx(-point["vc#branch"], rel=1e-4)
+    assert current == pytest.approx(-point["i(vc)"], rel=1e-4)
 
 
 @pytest.mark.referee
@@ -167,8 +167,8 @@ def test_modulated_base_resistance_has_the_slope_of_ngspice_currents(
     model = {**SMALL_SIGNAL, "rb": 300.0, "rbm": 20.0, **rolloff}
     step = 1e-5
     sweep = [{"vc": 5.0, "vb": base_v + side * step} for side in (-1.0, 1.0)]
-    names = ["vc#branch", "vb#branch"]
-    low, high = operating_points(deck(model, "npn", ""), sweep, names)
+    names = ["i(vc)", "i(vb)"]
+    low, high = ngspice.bias_points(deck(model, "npn", ""), sweep, names)
     parameters = BIPOLAR.prepare([Card("q1", "npn", model, {})], 27.0, 27.0)
     voltages = branch_voltages(BIPOLAR, parameters, (5.0, base_v, 0.0, 0.0))
     slope = small_signal_admittance(parameters, voltages, 0.0)[:2, 1].real
@@ -222,21 +222,7 @@ def test_derivatives_are_exact_and_currents_sum_to_zero(
     parameters = BIPOLAR.prepare([Card("q1", kind, MODELS[name], {"area": 1.5})], 27.0, 27.0)
     sign = 1.0 if kind == "npn" else -1.0
     voltages = np.array([[[sign * v for v in junctions] + list(drops)]])
-    found = BIPOLAR.evaluate(parameters, voltages, GMIN)
-    scale = np.abs(found.current).max()
-    assert abs(found.current.sum()) <= 1e-14 * scale
-    assert np.abs(found.jacobian.sum(axis=2)).max() <= 1e-14 * np.abs(found.jacobian).max()
-    step = 1e-6
-    for branch in range(6):
-        up, down = voltages.copy(), voltages.copy()
-        up[..., branch] += step
-        down[..., branch] -= step
-        rise = BIPOLAR.evaluate(parameters, up, GMIN).current
-        fall = BIPOLAR.evaluate(parameters, down, GMIN).current
-        slope = (rise - fall)[0, 0] / (2.0 * step)
-        exact = found.jacobian[0, 0, :, branch]
-        noise = 1e-9 * scale + 1e-16
-        assert np.abs(slope - exact).max() <= 1e-6 * np.abs(exact).max() + noise, branch
+    assert_exact_derivatives(BIPOLAR, parameters, voltages)
 
 
 @given(

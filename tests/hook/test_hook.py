@@ -122,7 +122,7 @@ def test_many_netlists_give_in_workers_what_they_give_alone(
     assert main(["check", "--format", "json"]) == 1
     alone = capfd.readouterr().out
     monkeypatch.setattr("tauledger.checking.FEW", 1)
-    monkeypatch.setattr("tauledger.checking._cores", lambda: 2)
+    monkeypatch.setattr("tauledger.checking.usable_cores", lambda: 2)
     assert main(["check", "--format", "json"]) == 1
     assert capfd.readouterr().out == alone
 

@@ -93,7 +93,7 @@ R2 a 0 1-3k // c
 def check(content: bytes) -> None:
     """Read and flatten; the only exception that may come out is a ProblemError."""
     from tauledger.circuit import flatten
-    from tauledger.circuit.graph import element_graph, find_floating_nodes
+    from tauledger.circuit.graph import find_floating_nodes
     from tauledger.netlist import parse
     from tauledger.netlist.source import decode
     from tauledger.problems import ProblemError
@@ -106,7 +106,6 @@ def check(content: bytes) -> None:
             _check_span(entry)
         circuit = flatten(netlist)
         _check_values(circuit)
-        element_graph(circuit)
         problems = circuit.problems + find_floating_nodes(circuit)
     except ProblemError as error:
         problems = error.problems

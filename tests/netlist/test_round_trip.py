@@ -15,8 +15,11 @@ from tauledger.quantity import format_spice
 
 NAME_START = st.sampled_from("RCLVIQDJMXE")
 NAME = st.text("abcXYZ019_-+/#~.:", min_size=1, max_size=8)
-# A word that begins with two slashes begins a comment.
+# Two slashes begin a comment at the head of a word, within braces too.
 WORD = NAME.filter(lambda text: not text.startswith(("//", "+")))
+EXPRESSION = st.text("ab+*/()12 ,?:<>=", max_size=12).filter(
+    lambda text: " //" not in text and ",//" not in text
+)
 NODE = st.one_of(
     WORD,
     st.builds("Net-({}-{})".format, st.sampled_from(["Q1", "U2A", "R10"]), NAME),
@@ -24,7 +27,7 @@ NODE = st.one_of(
 )
 ITEM = st.one_of(
     NODE,
-    st.builds("{{{}}}".format, st.text("ab+*/()12 ,?:<>=", max_size=12)),
+    st.builds("{{{}}}".format, EXPRESSION),
     st.builds("'{}'".format, st.text("ab+* {}12", max_size=12)),
     st.builds("{}={}".format, st.text("abc", min_size=1), st.text("xyz019.", min_size=1)),
     st.builds("{}=({} {})".format, st.text("abc", min_size=1), WORD, WORD),

@@ -7,8 +7,8 @@ from pathlib import Path
 import numpy as np
 import pytest
 
+import ngspice
 from decide.circuits import PAIR, TRANSISTOR, run
-from referee import ngspice
 from tauledger.circuit.elements import Capacitor, Resistor
 from tauledger.decide.asked import parse_asked
 from tauledger.decide.bench import bench_of, measure

@@ -23,23 +23,17 @@ Figures of ngspice that are not compared, and why (numbers: tests/devices and th
 from __future__ import annotations
 
 import functools
-import os
-import resource
-import shutil
-import subprocess
-import tempfile
-from pathlib import Path
 
 import numpy as np
 import pytest
 
+import ngspice
 from referee import (
     circuits_bipolar,
     circuits_diode,
     circuits_fet,
     circuits_hard,
     circuits_linear,
-    ngspice,
 )
 from tauledger.bias import BiasSolution, solve_bias
 from tauledger.bias.newton import starting_state
@@ -98,50 +92,20 @@ def ours(name: str, temperature_c: float) -> BiasSolution:
     return solve_bias(flatten(parse(f"{name}\n{CIRCUITS[name]}\n.end\n")), None, temperature_c)
 
 
-def referee_name(name: str) -> str:
-    *path, own = name.lower().split(".")
-    return ".".join([own[0], *path, own]) if path else own
-
-
 @functools.cache
 def theirs(name: str, temperature_c: float) -> tuple[dict[str, float], ngspice.Sweep]:
     """Vectors of the operating point, and the response at ``out``."""
     figures = " ".join(
-        f"@{referee_name(device.name)}[{figure}]"
+        f"@{ngspice.flat_name(device.name)}[{figure}]"
         for device in ours(name, temperature_c).point.devices.values()
         for figure in FIGURES[device.kind].values()
     )
-    deck = [
-        name,
-        CIRCUITS[name],
-        ngspice.OPTIONS,
-        f".options temp={temperature_c}",
-        ".control",
-        "set filetype=binary",
-        *("op", f"write 0.raw all {figures}"),
-        "reset",  # without it ngspice 39 multiplies a diode's area by its m once more
-        *(SWEEP, "write 1.raw v(out)"),
-        *("quit", ".endc", ".end", ""),
-    ]
-    program = shutil.which("ngspice")
-    assert program is not None
-    with tempfile.TemporaryDirectory(prefix="referee-") as folder:
-        (Path(folder) / "deck.cir").write_text("\n".join(deck))
-        done = subprocess.run(
-            [program, "-n", "-b", "deck.cir"],
-            cwd=folder,
-            env={"PATH": os.environ.get("PATH", ""), "HOME": folder},
-            stdin=subprocess.DEVNULL,
-            capture_output=True,
-            text=True,
-            timeout=30,
-            check=False,
-            preexec_fn=lambda: resource.setrlimit(resource.RLIMIT_AS, (2 << 30, 2 << 30)),
-        )
-        try:
-            point, sweep = (ngspice.read_raw(Path(folder) / f"{k}.raw") for k in (0, 1))
-        except (OSError, ValueError):
-            pytest.fail(f"ngspice did not solve {name}:\n{done.stdout}\n{done.stderr}")
+    options = f"{ngspice.OPTIONS}\n.options temp={temperature_c}"
+    point, sweep = ngspice.run(
+        f"{name}\n{CIRCUITS[name]}",
+        [("op", f"all {figures}"), (f"{ngspice.RESET}\n{SWEEP}", "v(out)")],
+        options,
+    )
     values = {vector: float(value[0].real) for vector, value in point.items()}
     return values, ngspice.Sweep(sweep["frequency"].real, sweep["v(out)"])
 
@@ -172,7 +136,7 @@ def test_node_voltages(name: str, temperature_c: float) -> None:
 def test_device_figures(name: str, temperature_c: float) -> None:
     vectors, _ = theirs(name, temperature_c)
     for device in ours(name, temperature_c).point.devices.values():
-        own = f"@{referee_name(device.name)}"
+        own = f"@{ngspice.flat_name(device.name)}"
         for figure, their_name in FIGURES[device.kind].items():
             if figure in NOT_SLOPES.get(name, ()):
                 continue

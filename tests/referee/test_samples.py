@@ -12,7 +12,7 @@ from pathlib import Path
 
 import pytest
 
-from referee import ngspice
+import ngspice
 from tauledger.analysis import Analysis, analyze, read
 from tauledger.bias.point import DevicePoint
 from tauledger.review.rows import CornerRow, PathRow
@@ -57,15 +57,9 @@ def output_of(analysis: Analysis) -> str:
     return f"{path.output_node},{path.output_reference}"
 
 
-def referee_name(name: str) -> str:
-    """``X1.Q2`` as ngspice names it once subcircuits are expanded: ``q.x1.q2``."""
-    *path, own = name.lower().split(".")
-    return ".".join([own[0], *path, own]) if path else own
-
-
 def expected_figures(device: DevicePoint, point: ngspice.Point) -> dict[str, float]:
     return {
-        ours: point.figures[f"@{referee_name(device.name)}[{theirs}]"] ** power
+        ours: point.figures[f"@{ngspice.flat_name(device.name)}[{theirs}]"] ** power
         for ours, (theirs, power) in FIGURES[device.kind].items()
     }
 
@@ -75,7 +69,7 @@ def referee_point(netlist: Path) -> ngspice.Point:
     return ngspice.operating_point(
         netlist,
         [
-            f"@{referee_name(device.name)}[{theirs}]"
+            f"@{ngspice.flat_name(device.name)}[{theirs}]"
             for device in analysis_of(netlist).point.devices.values()
             for theirs, _ in FIGURES[device.kind].values()
         ],
@@ -137,7 +131,7 @@ def test_gain_by_inspection(netlist: Path) -> None:
     assert path.midband_hz is not None
     assert path.gain_by_inspection is not None
     values = {
-        referee_name(row.name): row.value * factor[row.end]
+        ngspice.flat_name(row.name): row.value * factor[row.end]
         for row in path.time_constants
         if row.name in parts and row.end in factor
     }
@@ -181,7 +175,7 @@ def corner_moves(
     analyses = [middle, edge]
     back = ""
     for name, value in values.items():
-        own = referee_name(name)
+        own = ngspice.flat_name(name)
         analyses += [back + ngspice.altered({own: STEP * value}) + middle, edge]
         back = ngspice.altered({own: value})
     found = ngspice.sweeps(netlist, output_of(analysis), analyses)

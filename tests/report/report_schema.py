@@ -73,8 +73,7 @@ def _row(row: Any, definitions: dict[str, Any]) -> dict[str, Any]:
     for name, text in notes.items():
         if name in properties:
             properties[name] = {"description": text, **properties[name]}
-    described = inspect.getdoc(row) or ""
-    head = {} if described.startswith(f"{row.__name__}(") else {"description": described}
+    head = {"description": inspect.cleandoc(row.__doc__)} if row.__doc__ else {}
     return {**head, "type": "object", "required": names, "properties": properties}
 
 

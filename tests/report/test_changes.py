@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import html
 import re
 from dataclasses import replace
 
@@ -14,6 +15,7 @@ from report.fixtures import ONE_STAGE
 from tauledger.problems import SourceSpan
 from tauledger.report.alphabet import alphabet
 from tauledger.report.changes import comparison_page, comparison_section
+from tauledger.report.html_bias import changes
 from tauledger.report.inert import display_width
 from tauledger.report.layout import plain
 from tauledger.report.markdown_changes import changes_section
@@ -96,6 +98,10 @@ def test_a_value_has_the_digits_that_tell(old: float, new: float | None, said: s
     [
         (FigureChange("f", "", "Hz", 100.0, 150.0, 50.0, 0.5), "+50 %"),
         (FigureChange("f", "", "dB", 40.0, 38.0, -2.0, None), "-2.00 dB"),
+        (FigureChange("f", "", "dB", 40.0, 40.0 - 5.36e-5, -5.36e-5, None), "<0.005 dB"),
+        (FigureChange("f", "", "dB", 40.0, 39.994, -0.006, None), "-0.01 dB"),
+        (FigureChange("f", "", "dB", 0.0, 12.346, 12.346, None), "+12.35 dB"),
+        (FigureChange("f", "", "V", 0.0, 1.5e-3, 1.5e-3, None), "+1.50 mV"),
         (FigureChange("f", "", "Hz", 100.0, 100.0, 0.0, 0.0), "none"),
         (FigureChange("f", "", "Hz", 1e6, 1e6 + 1, 1.0, 1e-6), "<0.05 %"),
         (FigureChange("f", "", "Hz", None, 100.0, None, None), "new"),
@@ -131,10 +137,9 @@ def test_words_of_a_netlist_are_inert_in_markdown(a: str, b: str) -> None:
     assert kinds.count("heading_open") == 1
     inner = [child for token in tokens for child in token.children or ()]
     assert not {child.type for child in inner} & {"link_open", "image"}
-    html = [token.content for token in (*tokens, *inner) if token.type.startswith("html")]
+    raw = [token.content for token in (*tokens, *inner) if token.type.startswith("html")]
     assert (
-        re.sub(r"</?(details|summary|span)>|\$|All figures, old and new|\s", "", "".join(html))
-        == ""
+        re.sub(r"</?(details|summary|span)>|\$|All figures, old and new|\s", "", "".join(raw)) == ""
     )
     rows = [line for line in section.splitlines() if line.startswith("|")]
     assert {line.count("|") for line in rows} == {5, 6}
@@ -142,6 +147,24 @@ def test_words_of_a_netlist_are_inert_in_markdown(a: str, b: str) -> None:
 
 def test_no_comparison_is_no_section() -> None:
     assert comparison_section(Page(100, alphabet("utf-8")), ONE_STAGE.comparison) == []
+
+
+@pytest.mark.parametrize("unit", ["dB", "Hz"])
+def test_an_edit_that_hardly_moves_a_figure_has_no_digits(unit: str) -> None:
+    """Half a unit of the last decimal shown: 0.005 dB, or 0.05 % of the old 60 Hz."""
+    effects = (EditEffect("C3", ("C3",), -5.36e-5, 2.0, 0.006, 0.003),)
+    whole = Attribution("f", unit, 60.0, 62.0, effects, 1.9, -0.0123)
+    comparison = replace(_comparison(), attributions=(whole,))
+    page = plain(comparison_page(Page(100, alphabet("utf-8")), comparison)).replace("\u00a0", " ")
+    least, rest = {
+        "dB": ("<0.005 dB", "-0.01 dB (-0.6 %)"),
+        "Hz": ("<30 mHz", "<30 mHz (-0.6 %)"),
+    }[unit]
+    assert re.search(rf"^ C3 +{least} ", page, re.MULTILINE)
+    assert f"remainder {rest}" in page
+    for text in (changes_section(comparison), changes(comparison)):
+        assert "5.36e-5" not in text
+        assert least in html.unescape(text).replace("\\", "").replace("\u00a0", " ")
 
 
 def test_a_move_too_small_to_print_is_not_called_one() -> None:

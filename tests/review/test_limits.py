@@ -128,6 +128,26 @@ rated_voltage = "16 V"
     assert [problem.code for problem in findings(rows)] == ["limit-unknown", "limit-missed"]
 
 
+def test_the_load_that_the_configuration_attaches_needs_no_rating(tmp_path: Path) -> None:
+    file = tmp_path / "tauledger.toml"
+    file.write_text("""\
+[capacitors.all]
+match = "C[12E]"
+rated_voltage = "25 V"
+[path.stage]
+netlist = "stage.cir"
+output = { node = "out", load_capacitance = "220 pF" }
+limits.capacitor_voltage_margin = { min = "10 %" }
+""")
+    (settings,) = read_configuration(file).paths
+    analysis = analyze(parse(STAGE), settings=settings)
+    (path,) = analysis.review.paths
+    assert "Cload" in {row.name for row in path.time_constants}
+    rows = check_limits(settings, analysis.review, path)
+    assert {row.part for row in rows} == {"C1", "C2", "CE"}
+    assert findings(rows) == ()
+
+
 def test_dominance_names_what_leads_instead(tmp_path: Path, review: Review) -> None:
     rows = _rows(tmp_path, review, 'low_corner_set_by = "C1"\nhigh_corner_set_by = "C9"')
     first, second = findings(rows)

@@ -44,7 +44,7 @@ EXPRESSIONS = [
 @pytest.mark.referee
 def test_every_function_means_the_same_to_ngspice() -> None:
     lines = ["formulas", "VIN in 0 AC 1", "RP p 0 500"]
-    lines += [f"V{node} {node} 0 {value}" for node, value in VOLTAGES.items() if node != "in"]
+    lines += [f"V{node} {node} 0 {volts}" for node, volts in VOLTAGES.items() if node != "in"]
     lines += [f"B{k} o{k} 0 v={text}\nR{k} o{k} 0 1k" for k, text in enumerate(EXPRESSIONS)]
     circuit = flatten(parse("\n".join((*lines, ".end")), "formulas.cir"))
     sources = [e for e in circuit.elements if isinstance(e, BehaviouralSource)]

@@ -12,7 +12,7 @@ from pathlib import Path
 import numpy as np
 import pytest
 
-from referee import ngspice
+import ngspice
 from simulate.circuits import BAND_PASS, EVERY_KIND, LEVEL_ONE, band_pass
 from tauledger.analysis import analyze, read
 from tauledger.circuit import flatten

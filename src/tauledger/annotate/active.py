@@ -4,9 +4,10 @@ from __future__ import annotations
 
 import re
 from collections.abc import Mapping
-from dataclasses import dataclass, field
+from dataclasses import field
 
 from tauledger.problems import Problem, Severity, SourceSpan
+from tauledger.records import dataclass
 
 _ACTIVE = frozenset(("script", "iframe", "object", "embed", "handler", "audio", "video"))
 _OUTSIDE = re.compile(r"\s*(?:javascript:|vbscript:|data:text/|https?:|ftp:|file:|//)", re.I)

@@ -12,10 +12,10 @@ from __future__ import annotations
 import codecs
 import re
 from collections.abc import Iterable, Mapping
-from dataclasses import dataclass
 
 from tauledger.annotate.notes import PartNote, part_notes, summary_of
 from tauledger.problems import Problem, ProblemError, Severity, SourceSpan
+from tauledger.records import dataclass
 from tauledger.review.rows import Review
 
 MARKER = "*tauledger> "

@@ -4,10 +4,10 @@ from __future__ import annotations
 
 import re
 from collections.abc import Iterable, Mapping, Sequence
-from dataclasses import dataclass
 
 from tauledger.annotate.geometry import Box
 from tauledger.annotate.scan import Label
+from tauledger.records import dataclass
 
 MOST_PLACES = 8
 """Where one part is marked; a name that stands more often is in use for something else too."""

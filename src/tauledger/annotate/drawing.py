@@ -9,7 +9,6 @@ from __future__ import annotations
 
 import statistics
 from collections.abc import Callable, Mapping, Sequence
-from dataclasses import dataclass
 from xml.parsers import expat
 
 from tauledger.annotate.designators import Place, find_places
@@ -19,6 +18,7 @@ from tauledger.annotate.notes import PartNote, part_notes, summary_of
 from tauledger.annotate.placement import Room
 from tauledger.annotate.scan import Label, Sheet, drawing_fault, encoding_of, parse, scan
 from tauledger.problems import Problem, Severity
+from tauledger.records import dataclass
 from tauledger.review.rows import Review
 
 _BEGIN, _END = "tauledger:marks", "/tauledger:marks"

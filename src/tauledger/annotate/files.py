@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import os
 import stat
+import sys
 import tempfile
 from collections.abc import Sequence
 from pathlib import Path
@@ -70,6 +71,8 @@ def replace_file(path: Path, content: bytes) -> None:
     """
     try:
         target = path.resolve()
+        if target.is_symlink():  # a loop of links, which Python 3.13 and later resolve to itself
+            raise _unwritable(path, "it is a loop of links")
         present = target.stat() if target.exists() else None
         if present is not None and not stat.S_ISREG(present.st_mode):
             raise _unwritable(path, "it is a folder, device or pipe")
@@ -104,7 +107,7 @@ def _take_over(name: str, present: os.stat_result | None) -> None:
         os.umask(mask)
         os.chmod(name, 0o666 & ~mask)
         return
-    if hasattr(os, "chown") and os.geteuid() == 0:
+    if sys.platform != "win32" and os.geteuid() == 0:
         os.chown(name, present.st_uid, present.st_gid)
     os.chmod(name, stat.S_IMODE(present.st_mode))
 

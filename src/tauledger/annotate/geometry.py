@@ -9,7 +9,8 @@ from __future__ import annotations
 import math
 import re
 from collections.abc import Iterable, Iterator
-from dataclasses import dataclass
+
+from tauledger.records import dataclass
 
 Point = tuple[float, float]
 

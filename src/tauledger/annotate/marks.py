@@ -10,11 +10,11 @@ from __future__ import annotations
 
 import textwrap
 from collections.abc import Iterable, Sequence
-from dataclasses import dataclass
 
 from tauledger.annotate.geometry import Box
 from tauledger.annotate.metrics import ASCENT, text_width
 from tauledger.annotate.notes import PartNote, Summary
+from tauledger.records import dataclass
 
 INK, PAPER, GREY = "#16324f", "#ffffff", "#8a99a8"
 _LEADING = 1.22

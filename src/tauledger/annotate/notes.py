@@ -3,9 +3,9 @@
 from __future__ import annotations
 
 from collections.abc import Iterator
-from dataclasses import dataclass
 
 from tauledger.quantity import format_quantity
+from tauledger.records import dataclass
 from tauledger.review.rows import CornerRow, PathRow, Review, TimeConstantRow, TransistorRow
 
 

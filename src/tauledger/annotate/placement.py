@@ -122,7 +122,7 @@ class Room:
         line = self._count(self.lines, box) * self.cell / self.unit
         outside = (box.width * box.height - box.overlap(self.page)) / square
         wide = box.grown(0.2 * self.unit)
-        marks = sum(wide.overlap(mark) for mark in self.marks) / square
+        marks = math.fsum(wide.overlap(mark) for mark in self.marks) / square
         cost = _TEXT_COST * text + (_OPAQUE_COST if opaque else _LINE_COST) * line
         return cost + _MARK_COST * marks + _OUTSIDE_COST * outside
 

@@ -9,7 +9,7 @@ from __future__ import annotations
 
 import codecs
 from collections.abc import Callable, Mapping
-from dataclasses import dataclass, field
+from dataclasses import field
 from xml.parsers import expat
 
 from tauledger.annotate.active import ActiveContent
@@ -26,6 +26,7 @@ from tauledger.annotate.shapes import SHAPES, nested_map, view_box_of
 from tauledger.annotate.style import INHERITED, StyleSheet, is_none, specified
 from tauledger.annotate.textline import Chunk, TextElement
 from tauledger.problems import Problem, ProblemError, Severity
+from tauledger.records import dataclass
 
 MAXIMUM_DEPTH = 500
 MAXIMUM_ELEMENTS = 500_000

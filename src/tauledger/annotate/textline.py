@@ -3,10 +3,11 @@
 from __future__ import annotations
 
 from collections.abc import Iterator, Mapping
-from dataclasses import dataclass, replace
+from dataclasses import replace
 
 from tauledger.annotate.geometry import length
 from tauledger.annotate.metrics import ASCENT, DESCENT, text_width
+from tauledger.records import dataclass
 
 _TOUCHING = 0.25
 """Space between spans of one word, in em."""

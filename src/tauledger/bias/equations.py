@@ -15,7 +15,7 @@ analysis", IEEE Trans. Circuits and Systems CAS-22 (1975) 504-509 (from memory, 
 from __future__ import annotations
 
 from collections.abc import Iterable, Mapping, Sequence
-from dataclasses import dataclass, field
+from dataclasses import field
 from typing import Any
 
 import numpy as np
@@ -40,6 +40,7 @@ from tauledger.circuit.elements import (
 from tauledger.devices import device_for
 from tauledger.devices.interface import AnyDevice, BoolArray, Card, FloatArray, Value
 from tauledger.problems import Problem, ProblemError, Severity
+from tauledger.records import dataclass
 
 IntArray = NDArray[np.intp]
 Variations = Mapping[str, FloatArray]
@@ -463,11 +464,11 @@ def _value(variations: Variations, key: str, nominal: float) -> Value:
 
 
 def _boards(values: Iterable[Value]) -> int:
-    return max((np.size(value) for value in values), default=1)
+    return max((value.size for value in values if isinstance(value, np.ndarray)), default=1)
 
 
 def _columns(values: Sequence[Value], boards: int) -> FloatArray:
     """Values as (boards, m)."""
     if boards == 1:
-        return np.array([float(np.ravel(v)[0]) for v in values]).reshape(1, -1)
+        return np.array([[v.item() if isinstance(v, np.ndarray) else v for v in values]], float)
     return np.stack([np.broadcast_to(v, (boards,)) for v in values], axis=1)

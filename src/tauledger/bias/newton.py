@@ -11,7 +11,6 @@ from __future__ import annotations
 import contextlib
 import dataclasses
 from collections.abc import Sequence
-from dataclasses import dataclass
 from typing import Any
 
 import numpy as np
@@ -22,6 +21,7 @@ from tauledger.circuit.elements import BehaviouralSource
 from tauledger.circuit.evaluate import evaluate_with_derivatives, leaves_of
 from tauledger.devices.interface import BoolArray, FloatArray
 from tauledger.netlist.expression import Expression, NodeVoltage
+from tauledger.records import dataclass
 
 IntArray = NDArray[np.intp]
 

@@ -8,7 +8,6 @@ the circuit as drawn.
 from __future__ import annotations
 
 from collections.abc import Callable, Mapping
-from dataclasses import dataclass
 
 import numpy as np
 
@@ -27,6 +26,7 @@ from tauledger.bias.point import DevicePoint, OperatingPoint
 from tauledger.circuit.elements import Circuit
 from tauledger.devices.interface import OperatingValues, Value
 from tauledger.problems import Problem, ProblemError, Severity
+from tauledger.records import dataclass
 
 LARGEST_SYSTEM = 4000
 """Unknowns; a dense matrix of that order takes 128 MB."""

@@ -3,14 +3,23 @@
 from __future__ import annotations
 
 from collections.abc import Iterator, Sequence
-from dataclasses import dataclass
 
 from tauledger.netlist import Subcircuit
 from tauledger.netlist.statements import Statement, Word
+from tauledger.records import dataclass
+
+DEFINITIONS = frozenset((".param", ".params", ".parameters", ".func", ".csparam"))
+"""Statements that give names a value or a formula."""
 
 
 @dataclass(slots=True)
 class Block:
+    """Statements by purpose, each list in the order of the file.
+
+    Where there are conditionals, only ``conditional`` and ``subcircuits`` are filled: what counts
+    is known when the conditions are.
+    """
+
     definitions: list[Statement]
     models: list[Statement]
     settings: list[Statement]
@@ -22,6 +31,7 @@ class Block:
 
     @classmethod
     def of(cls, statements: Sequence[Statement], subcircuits: tuple[Subcircuit, ...]) -> Block:
+        """Sort the statements of the top level, or of one body."""
         block = cls([], [], [], [], [], [], subcircuits)
         for statement in statements:
             block.put(statement)
@@ -31,14 +41,16 @@ class Block:
 
     @property
     def defines_names(self) -> bool:
+        """Whether a scope of its own is needed for parameters, models or subcircuits."""
         return bool(self.definitions or self.models or self.subcircuits or self.conditional)
 
     def put(self, statement: Statement) -> None:
+        """Sort in one statement; ``.global`` is not kept (see :func:`global_nodes`)."""
         if statement.name.text[0] != ".":
             self.elements.append(statement)
             return
         keyword = statement.keyword
-        if keyword in (".param", ".params", ".parameters", ".func", ".csparam"):
+        if keyword in DEFINITIONS:
             self.definitions.append(statement)
         elif keyword == ".model":
             self.models.append(statement)

@@ -100,7 +100,12 @@ def complete(circuit: Circuit, settings: PathSettings) -> tuple[Circuit, str | N
         raise ProblemError(*work.problems)
     if not work.added:
         return circuit, source, output
-    return replace(circuit, elements=(*circuit.elements, *work.added)), source, output
+    completed = replace(
+        circuit,
+        elements=(*circuit.elements, *work.added),
+        attached=circuit.attached | {element.name for element in work.added},
+    )
+    return completed, source, output
 
 
 class _Completion:

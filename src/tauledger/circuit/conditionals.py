@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 
+from tauledger.circuit.block import DEFINITIONS
 from tauledger.circuit.expansion import Expansion
 from tauledger.circuit.parameters import Definition, collect, resolve
 from tauledger.circuit.scope import Scope
@@ -11,7 +12,6 @@ from tauledger.netlist.codes import fault
 from tauledger.netlist.statements import Statement, Word
 from tauledger.problems import Problem, ProblemError
 
-_DEFINITIONS = frozenset((".param", ".params", ".parameters", ".func", ".csparam"))
 _BRANCHES = frozenset((".if", ".elseif", ".else", ".endif"))
 
 
@@ -30,7 +30,7 @@ def decide(
     outside, depth = [], 0
     for statement in statements:
         depth += (statement.keyword == ".if") - (statement.keyword == ".endif")
-        if depth == 0 and statement.keyword in _DEFINITIONS:
+        if depth == 0 and statement.keyword in DEFINITIONS:
             outside.append(statement)
     definitions = defaults + collect(run, scope, outside)
     resolve(run, scope, definitions, overrides, quiet=True)
@@ -43,7 +43,7 @@ def decide(
         if keyword not in _BRANCHES:
             if live:
                 kept.append(statement)
-                if levels and keyword in _DEFINITIONS:
+                if levels and keyword in DEFINITIONS:
                     definitions = definitions + collect(run, scope, [statement])
                     resolve(run, scope, definitions, overrides, quiet=True)
         elif keyword == ".if":

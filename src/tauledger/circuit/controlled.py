@@ -7,7 +7,7 @@ from collections.abc import Sequence
 
 from tauledger.circuit.elements import BehaviouralSource, ControlledSource, VoltageSource
 from tauledger.circuit.evaluate import EvaluationError, substitute
-from tauledger.circuit.expansion import Expansion, ignored
+from tauledger.circuit.expansion import Expansion, ignored, unevaluable
 from tauledger.circuit.operands import is_word, node_words, ungrouped
 from tauledger.circuit.scope import Scope
 from tauledger.netlist.codes import fault
@@ -21,35 +21,95 @@ from tauledger.netlist.expression import (
     SourceCurrent,
 )
 from tauledger.netlist.statements import Assignment, Formula, Group, Item, Statement, Table, Word
+from tauledger.records import dataclass
 
-_OUTPUT = {"e": "voltage", "h": "voltage", "g": "current", "f": "current"}
+_OUTPUT = {"E": "voltage", "H": "voltage", "G": "current", "F": "current"}
 _EXPRESSION_NAMES = frozenset(("value", "vol", "cur", "v", "i"))
 _LEFT_OUT = frozenset(("laplace", "freq", "chebyshev", "delay"))
 MAXIMUM_TERMS = 1000
 """Of one POLY or TABLE."""
 
 
+@dataclass(frozen=True, slots=True)
+class _Source:
+    """One element on its way into the circuit, its output nodes known."""
+
+    run: Expansion
+    scope: Scope
+    statement: Statement
+    nodes: tuple[str, ...]
+
+    @property
+    def letter(self) -> str:
+        return self.statement.name.text[0].upper()
+
+    @property
+    def name(self) -> str:
+        return self.scope.prefix + self.statement.name.text
+
+    def number(self, item: Item) -> float:
+        return self.run.number(item, self.scope, self.statement)
+
+    def named(self, source: str, item: Item) -> str:
+        """Flat name of the voltage source whose current controls; known at the end only."""
+        return self.run.element_name(source, self.scope, self.statement, item, VoltageSource)
+
+    def add_linear(self, control: list[Word], gain: float) -> None:
+        run, span = self.run, self.statement.span()
+        if self.letter in "EG":
+            nodes = run.nodes(control, self.scope)
+            run.add(ControlledSource(self.name, self.nodes, span, self.letter, gain, nodes))
+            return
+        [word] = control
+        run.add_later(
+            lambda: ControlledSource(
+                self.name, self.nodes, span, self.letter, gain, (), self.named(word.text, word)
+            ),
+            span,
+        )
+
+    def add_expression(self, expression: Expression, item: Item, output: str = "") -> None:
+        """``item`` is where the expression stands; ``output`` is that of the letter if not said."""
+
+        def build() -> BehaviouralSource:
+            try:
+                flat = substitute(
+                    expression,
+                    self.scope.parameters,
+                    self.scope.functions,
+                    lambda node: self.run.expression_node(node, self.scope),
+                    lambda name: self.named(name, item),
+                )
+            except EvaluationError as error:
+                raise unevaluable(error, item, self.statement) from None
+            return BehaviouralSource(
+                self.name, self.nodes, self.statement.span(), output or _OUTPUT[self.letter], flat
+            )
+
+        self.run.add_later(build, self.statement.span())
+
+
 def controlled(run: Expansion, scope: Scope, statement: Statement) -> None:
-    """Add an E, F, G or H source."""
+    """Add an E, F, G or H source. Raises ProblemError where the line does not say one."""
     items = _with_nodes_ungrouped(statement)
     if len(items) < 2 and statement.name.text[0] in "hH":
         run.leave_out(statement, "it has no two nodes and reads as a mounting hole", scope)
         return
     if len(items) < 3:
         raise _incomplete(statement)
-    output = run.nodes(_words(statement, items[:2]), scope)
+    source = _Source(run, scope, statement, run.nodes(_words(statement, items[:2]), scope))
     head = items[2]
     keyword = _keyword(head)
     if keyword in _LEFT_OUT:
         run.leave_out(statement, f"{keyword.upper()} is not supported", scope)
     elif keyword in _EXPRESSION_NAMES:
-        _value(run, scope, statement, output, items[2:])
+        _value(source, items[2:])
     elif keyword == "table":
-        _table(run, scope, statement, output, items[2:])
+        _table(source, items[2:])
     elif keyword == "poly":
-        _polynomial(run, scope, statement, output, items[3:])
+        _polynomial(source, items[3:])
     else:
-        _linear(run, scope, statement, output, ungrouped(tuple(items[2:])))
+        _linear(source, ungrouped(tuple(items[2:])))
 
 
 def behavioural(run: Expansion, scope: Scope, statement: Statement) -> None:
@@ -60,7 +120,8 @@ def behavioural(run: Expansion, scope: Scope, statement: Statement) -> None:
     letter, _, text = word.text.partition("=")
     output = "voltage" if letter.strip() in "vV" else "current"
     body = Word(text, word.offset + len(letter) + 1)
-    _add_expression(run, scope, statement, nodes, output, _unwrapped(text), body)
+    expression = run.expression(_unwrapped(text), body, statement)
+    _Source(run, scope, statement, nodes).add_expression(expression, body, output)
 
 
 def _unwrapped(text: str) -> str:
@@ -101,61 +162,21 @@ def _incomplete(statement: Statement) -> Exception:
     )
 
 
-def _linear(
-    run: Expansion,
-    scope: Scope,
-    statement: Statement,
-    output: tuple[str, ...],
-    items: list[Item],
-) -> None:
-    letter = statement.name.text[0].upper()
-    count = 2 if letter in "EG" else 1
+def _linear(source: _Source, items: list[Item]) -> None:
+    statement = source.statement
+    count = 2 if source.letter in "EG" else 1
     if len(items) <= count:
         raise _incomplete(statement)
     control = _words(statement, items[:count])
-    gain = run.number(items[count], scope, statement)
+    gain = source.number(items[count])
     for extra in items[count + 1 : count + 2]:
-        ignored(run, statement, extra)
-    _add_linear(run, scope, statement, output, control, gain)
+        ignored(source.run, statement, extra)
+    source.add_linear(control, gain)
 
 
-def _add_linear(
-    run: Expansion,
-    scope: Scope,
-    statement: Statement,
-    output: tuple[str, ...],
-    control: list[Word],
-    gain: float,
-) -> None:
-    letter = statement.name.text[0].upper()
-    name = scope.prefix + statement.name.text
-    if letter in "EG":
-        nodes = run.nodes(control, scope)
-        run.add(ControlledSource(name, output, statement.span(), letter, gain, nodes))
-        return
-    word = control[0]
-    run.add_later(
-        lambda: ControlledSource(
-            name,
-            output,
-            statement.span(),
-            letter,
-            gain,
-            (),
-            run.element_name(word.text, scope, statement, word, VoltageSource),
-        ),
-        statement.span(),
-    )
-
-
-def _value(
-    run: Expansion,
-    scope: Scope,
-    statement: Statement,
-    output: tuple[str, ...],
-    items: list[Item],
-) -> None:
+def _value(source: _Source, items: list[Item]) -> None:
     """``VALUE={…}``, ``VALUE {…}``, or ``VALUE=`` with bare arithmetic up to the line's end."""
+    statement = source.statement
     head = items[0]
     value: Item
     if isinstance(head, Assignment):
@@ -168,71 +189,20 @@ def _value(
         text = value.text
         after = items[1:] if isinstance(head, Assignment) else items[2:]
         for extra in after[:1]:
-            ignored(run, statement, extra)
+            ignored(source.run, statement, extra)
     else:
         text = statement.line.text[value.offset :]
         value = Word(text.rstrip(), value.offset)
-    letter = statement.name.text[0].lower()
-    _add_expression(run, scope, statement, output, _OUTPUT[letter], text, value)
+    source.add_expression(source.run.expression(text, value, statement), value)
 
 
-def _add_expression(
-    run: Expansion,
-    scope: Scope,
-    statement: Statement,
-    nodes: tuple[str, ...],
-    output: str,
-    text: str,
-    item: Item,
-) -> None:
-    expression = run.expression(text, item, statement)
-    _add_behavioural(run, scope, statement, nodes, output, expression, item)
-
-
-def _add_behavioural(
-    run: Expansion,
-    scope: Scope,
-    statement: Statement,
-    nodes: tuple[str, ...],
-    output: str,
-    expression: Expression,
-    item: Item,
-) -> None:
-    def build() -> BehaviouralSource | ControlledSource:
-        try:
-            flat = substitute(
-                expression,
-                scope.parameters,
-                scope.functions,
-                lambda node: run.expression_node(node, scope),
-                lambda name: run.element_name(name, scope, statement, item, VoltageSource),
-            )
-        except EvaluationError as error:
-            raise fault(
-                "expression-invalid",
-                f"{statement.name.text}: {error}",
-                statement.span(item),
-                "Correct the expression, or define what it names with .param or .func.",
-            ) from None
-        name = scope.prefix + statement.name.text
-        return BehaviouralSource(name, nodes, statement.span(), output, flat)
-
-    run.add_later(build, statement.span())
-
-
-def _polynomial(
-    run: Expansion,
-    scope: Scope,
-    statement: Statement,
-    output: tuple[str, ...],
-    items: list[Item],
-) -> None:
+def _polynomial(source: _Source, items: list[Item]) -> None:
+    run, statement = source.run, source.statement
     if not items or not isinstance(items[0], Group) or len(items[0].items) != 1:
         raise _incomplete(statement)
-    dimension = run.number(items[0].items[0], scope, statement)
+    dimension = source.number(items[0].items[0])
     rest = ungrouped(tuple(items[1:]))
-    letter = statement.name.text[0].upper()
-    width = 2 if letter in "EG" else 1
+    width = 2 if source.letter in "EG" else 1
     if not 1 <= dimension <= 50 or dimension != int(dimension):
         raise fault(
             "polynomial-dimension",
@@ -242,7 +212,7 @@ def _polynomial(
         )
     count = int(dimension)
     controls = _words(statement, rest[: width * count])
-    coefficients = [run.number(item, scope, statement) for item in rest[width * count :]]
+    coefficients = [source.number(item) for item in rest[width * count :]]
     if len(controls) < width * count or not coefficients or len(coefficients) > MAXIMUM_TERMS:
         raise _incomplete(statement)
     if count == 1 and len(coefficients) == 1:
@@ -254,7 +224,7 @@ def _polynomial(
             "Write 0 and the gain, or leave POLY out.",
         )
     if count == 1 and len(coefficients) == 2 and coefficients[0] == 0.0:
-        _add_linear(run, scope, statement, output, controls, coefficients[1])
+        source.add_linear(controls, coefficients[1])
         return
     quantities: list[Expression] = [
         NodeVoltage(controls[2 * k].text, controls[2 * k + 1].text)
@@ -262,8 +232,7 @@ def _polynomial(
         else SourceCurrent(controls[k].text)
         for k in range(count)
     ]
-    expression = polynomial(quantities, coefficients)
-    _add_behavioural(run, scope, statement, output, _OUTPUT[letter.lower()], expression, items[0])
+    source.add_expression(polynomial(quantities, coefficients), items[0])
 
 
 def polynomial(quantities: Sequence[Expression], coefficients: Sequence[float]) -> Expression:
@@ -287,14 +256,9 @@ def _balanced(operator: str, parts: Sequence[Expression]) -> Expression:
     return Apply(operator, (_balanced(operator, parts[:half]), _balanced(operator, parts[half:])))
 
 
-def _table(
-    run: Expansion,
-    scope: Scope,
-    statement: Statement,
-    output: tuple[str, ...],
-    items: list[Item],
-) -> None:
+def _table(source: _Source, items: list[Item]) -> None:
     """``TABLE {expression} = (x, y) (x, y) …``, with or without the equals sign."""
+    statement = source.statement
     pairs: list[Item] = []
     formula: Formula | None = None
     for item in items:
@@ -307,7 +271,7 @@ def _table(
             formula = item
         elif not is_word(item, "table"):
             pairs.extend(ungrouped((item,)))
-    values = [run.number(item, scope, statement) for item in pairs]
+    values = [source.number(item) for item in pairs]
     if formula is None or len(values) < 4 or len(values) % 2 or len(values) > 2 * MAXIMUM_TERMS:
         raise fault(
             "element-incomplete",
@@ -315,7 +279,6 @@ def _table(
             statement.span(),
             "Give an expression in braces and at least two pairs.",
         )
-    argument = run.expression(formula.text, formula, statement)
+    argument = source.run.expression(formula.text, formula, statement)
     expression = Apply("table", (argument, *(Number(value) for value in values)))
-    letter = statement.name.text[0].lower()
-    _add_behavioural(run, scope, statement, output, _OUTPUT[letter], expression, formula)
+    source.add_expression(expression, formula)

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import re
 from collections.abc import Iterator
-from dataclasses import dataclass, field
+from dataclasses import field
 
 from tauledger.circuit.expansion import Expansion
 from tauledger.circuit.operands import operands
@@ -13,6 +13,7 @@ from tauledger.circuit.scope import Scope
 from tauledger.netlist.codes import fault, problem
 from tauledger.netlist.statements import Call, Item, Statement, Word
 from tauledger.problems import Problem, ProblemError
+from tauledger.records import dataclass
 
 OUTPUTS = frozenset(
     (
@@ -73,12 +74,25 @@ def read_settings(run: Expansion, scope: Scope, statement: Statement, found: Dir
         elif name == "tnom":
             run.nominal_temperature_c = _temperature(run, scope, statement, item.value)
         elif name == "gmin":
-            found.gmin = run.number(item.value, scope, statement)
+            found.gmin = _gmin(run, scope, statement, item.value)
 
 
 def _temperature(run: Expansion, scope: Scope, statement: Statement, item: Item | Call) -> float:
     value = run.number(item, scope, statement)
     check_temperature(run, statement, item, value)
+    return value
+
+
+def _gmin(run: Expansion, scope: Scope, statement: Statement, item: Item | Call) -> float:
+    value = run.number(item, scope, statement)
+    if value < 0.0:
+        raise fault(
+            "value-unusable",
+            f"{statement.name.text}: GMIN is {value:g} S; expected zero or above, since a negative "
+            "conductance across every junction feeds power into the circuit",
+            statement.span(item),
+            "Write a small conductance such as gmin=1e-12, or leave it out.",
+        )
     return value
 
 

@@ -8,10 +8,11 @@ SI base units. Model and instance parameter names are lower case, as SPICE defin
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass, field
+from dataclasses import field
 
 from tauledger.netlist.expression import Expression
 from tauledger.problems import Problem, SourceSpan
+from tauledger.records import dataclass
 
 GROUND = "0"
 
@@ -134,6 +135,14 @@ class MosFet(SemiconductorDevice):
 
 
 @dataclass(frozen=True, slots=True)
+class Unread(Element):
+    """An element whose model or value cannot be read; ``nodes`` are all that it may touch."""
+
+    problems: tuple[Problem, ...]
+    """Why not: errors, wherever the element belongs to the circuit that is analysed."""
+
+
+@dataclass(frozen=True, slots=True)
 class Circuit:
     """A flat circuit ready for the equations. Element names are unique ignoring letter case."""
 
@@ -150,6 +159,10 @@ class Circuit:
     initial_conditions: Mapping[str, float] = field(default_factory=dict)
     problems: tuple[Problem, ...] = ()
     """Warnings and notes met on the way; an error would have been raised."""
+    attached: frozenset[str] = frozenset()
+    """Elements that the configuration put in: supplies, source and load, no parts of the board."""
+    unread: tuple[Unread, ...] = ()
+    """In none of ``elements``; empty once :func:`tauledger.circuit.islands.restrict` has passed."""
 
     @property
     def nodes(self) -> tuple[str, ...]:

@@ -12,7 +12,6 @@ from __future__ import annotations
 
 import math
 from collections.abc import Callable, Iterable, Mapping
-from dataclasses import dataclass
 
 from tauledger.circuit.derivatives import evaluate_with_derivatives
 from tauledger.circuit.functions import (
@@ -35,6 +34,7 @@ from tauledger.netlist.expression import (
     Number,
     SourceCurrent,
 )
+from tauledger.records import dataclass
 
 __all__ = [
     "EvaluationError",

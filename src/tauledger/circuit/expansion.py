@@ -62,13 +62,18 @@ class Expansion:
         """Of each subcircuit expanded so far, by its id."""
         self.substitute: Substitute | None = None
         """What to put in place of a missing model; None to refuse."""
+        self.put_aside: Callable[[Scope, Statement, ProblemError], bool] = lambda *_: False
+        """Takes what is wrong with an element, when that can wait."""
         self.directives: list[tuple[Scope, Statement]] = []
         """Dot statements met, to be read once every node is known."""
 
     # problems -------------------------------------------------------------------------------------
 
     def report(self, problems: Iterable[Problem]) -> None:
-        """Add problems; the same one in every instance of a subcircuit counts once."""
+        """Add problems; the same one in every instance of a subcircuit counts once.
+
+        Raises ProblemError with all of them when there are more errors than are listed.
+        """
         for entry in problems:
             span = entry.span
             place = entry.message if span is None else (span.path, span.line, span.column)
@@ -94,7 +99,7 @@ class Expansion:
                 )
 
     def absorb(self, error: ProblemError) -> None:
-        """Report what an exception carries, unless the work cannot go on."""
+        """Report what an exception carries; raises ProblemError where the work cannot go on."""
         fatal = error.problems[-1].code in _FATAL
         if fatal and len(error.problems) > 1:
             raise error  # complete: it has been here before
@@ -104,6 +109,7 @@ class Expansion:
 
     @property
     def has_errors(self) -> bool:
+        """Whether the circuit cannot be used."""
         return self._errors > 0
 
     def listed_problems(self, path: str) -> tuple[Problem, ...]:
@@ -126,7 +132,10 @@ class Expansion:
         return (*ordered, *omitted)
 
     def count_work(self, amount: int) -> None:
-        """Bound what subcircuits called many times, each with many parameters, can cost."""
+        """Bound what subcircuits called many times, each with many parameters, can cost.
+
+        ``amount`` is about microseconds. Raises ProblemError beyond :data:`MAXIMUM_WORK`.
+        """
         self._work += amount
         if self._work > MAXIMUM_WORK:
             raise fault(
@@ -146,6 +155,7 @@ class Expansion:
         return f"; near it: {', '.join(near)}" if near else ""
 
     def warn(self, code: str, message: str, span: SourceSpan, advice: str) -> None:
+        """Report one problem, of the severity that its code has."""
         self.report([problem(code, message, span, advice)])
 
     def leave_out(self, statement: Statement, reason: str, scope: Scope) -> None:
@@ -160,7 +170,10 @@ class Expansion:
     # numbers --------------------------------------------------------------------------------------
 
     def number(self, item: Item | Call, scope: Scope, statement: Statement) -> float:
-        """The value of a word, expression or parameter name, in SI units."""
+        """The value of a word, expression or parameter name, in SI units.
+
+        Raises ProblemError where it has none.
+        """
         self.count_work(_WORK_OF_NUMBER)
         if isinstance(item, Word):
             return self._word(item, scope, statement)
@@ -200,20 +213,19 @@ class Expansion:
     def arithmetic(
         self, text: str, item: Item | Call | None, scope: Scope, statement: Statement
     ) -> float:
+        """The value of arithmetic text without its braces; ``item`` is where it stands.
+
+        Raises ProblemError where it cannot be read or has no value.
+        """
         self.count_work(_WORK_OF_ARITHMETIC)
         expression = self.expression(text, item, statement)
         try:
             return evaluate(expression, scope.parameters, scope.functions)
         except EvaluationError as error:
-            raise fault(
-                "expression-invalid",
-                f"{statement.name.text}: {error}",
-                statement.span(item),
-                "Correct the expression, or define what it names with .param or .func.",
-            ) from None
+            raise unevaluable(error, item, statement) from None
 
     def expression(self, text: str, item: Item | Call | None, statement: Statement) -> Expression:
-        """Parse arithmetic, once for the same text."""
+        """Parse arithmetic, once for the same text; raises ProblemError where it is none."""
         known = self._expressions.get(text)
         if known is not None:
             return known
@@ -255,6 +267,7 @@ class Expansion:
         return flat
 
     def nodes(self, words: Sequence[Word], scope: Scope) -> tuple[str, ...]:
+        """Flat names of several nodes, in their order."""
         return tuple([self.node(word.text, scope) for word in words])
 
     def find_node(self, name: str, scope: Scope) -> str | None:
@@ -271,9 +284,14 @@ class Expansion:
         return self.find_node(name, scope) or self.node(name, scope)
 
     def add(self, element: Element) -> None:
+        """The next element; raises ProblemError for a name in use, or for one too many."""
         self._register(element)
         self._elements.append(element)
         self._check_size(element.span)
+
+    def has_element(self, name: str) -> bool:
+        """Whether an element of this flat name has been built, letter case ignored."""
+        return name.lower() in self._names
 
     def add_later(self, build: Callable[[], Element], span: SourceSpan) -> None:
         """An element that names others: built in its place once all of them are known."""
@@ -305,7 +323,10 @@ class Expansion:
     def element_name(
         self, name: str, scope: Scope, statement: Statement, item: Item, kind: type[Element]
     ) -> str:
-        """Flat name of an element named by another; call only from :meth:`add_later`."""
+        """Flat name of an element named by another; call only from :meth:`add_later`.
+
+        Raises ProblemError when there is none of this kind.
+        """
         for candidate in (scope.prefix + name, name, name.split(".", 1)[-1]):
             element = self._names.get(candidate.lower())
             if isinstance(element, kind):
@@ -343,7 +364,20 @@ def ignored(run: Expansion, statement: Statement, item: Item) -> None:
     )
 
 
+def unevaluable(
+    error: EvaluationError, item: Item | Call | None, statement: Statement
+) -> ProblemError:
+    """What to raise for an expression that names what is not there, or has no value."""
+    return fault(
+        "expression-invalid",
+        f"{statement.name.text}: {error}",
+        statement.span(item),
+        "Correct the expression, or define what it names with .param or .func.",
+    )
+
+
 def too_large(span: SourceSpan | None) -> ProblemError:
+    """What to raise where the circuit grows beyond :data:`MAXIMUM_ELEMENTS`."""
     return fault(
         "circuit-too-large",
         f"the circuit expands to more than {MAXIMUM_ELEMENTS} elements",

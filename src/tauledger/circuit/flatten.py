@@ -7,6 +7,7 @@ from collections.abc import Callable, Sequence
 from typing import TypeVar
 
 from tauledger.circuit import controlled, passives, sources
+from tauledger.circuit.aside import Aside
 from tauledger.circuit.block import Block, global_nodes
 from tauledger.circuit.conditionals import decide
 from tauledger.circuit.directives import (
@@ -55,14 +56,20 @@ _LEFT_OUT = {
 }
 
 
-def flatten(netlist: Netlist, substitute: Substitute | None = None) -> Circuit:
+def flatten(
+    netlist: Netlist, substitute: Substitute | None = None, *, keep_unread: bool = False
+) -> Circuit:
     """Expand a netlist; ``substitute`` gives what stands in for a missing model, if anything.
 
     Raises ProblemError with every error found, those of reading included, when there is any;
-    warnings and notes go into :attr:`Circuit.problems`.
+    warnings and notes go into :attr:`Circuit.problems`. With ``keep_unread`` the errors of single
+    elements that may belong to a circuit apart go into :attr:`Circuit.unread` instead, when there
+    are no others; :func:`tauledger.circuit.islands.restrict` then judges them.
     """
     run = Expansion()
     run.substitute = substitute
+    aside = Aside()
+    run.put_aside = aside.take
     found = Directives()
     scope = top_scope()
     block = Block.of(netlist.statements, netlist.subcircuits)
@@ -72,11 +79,12 @@ def flatten(netlist: Netlist, substitute: Substitute | None = None) -> Circuit:
     _attempt_each(run, scope, active.settings, lambda r, s, t: read_settings(r, s, t, found))
     _expand(run, scope, active)
     elements = run.finish()
+    unread = aside.settle(run, scope, keep_unread)
     run.report(without_unused(netlist, run.blocks))
     for place, statement in run.directives:
         _attempt_each(run, place, [statement], lambda r, s, t: read_directive(r, s, t, found))
     _attempt_each(run, scope, netlist.commands, lambda r, s, t: read_command(r, s, t, found))
-    if not elements and not run.has_errors:
+    if not elements and not unread and not run.has_errors:
         run.report([_empty(netlist.path)])
     if run.has_errors:
         raise ProblemError(*run.listed_problems(netlist.path))
@@ -92,6 +100,7 @@ def flatten(netlist: Netlist, substitute: Substitute | None = None) -> Circuit:
         found.node_sets,
         found.initial_conditions,
         run.listed_problems(netlist.path),
+        unread=unread,
     )
 
 
@@ -178,7 +187,8 @@ def _expand(run: Expansion, scope: Scope, block: Block) -> None:
         try:
             builder(run, scope, statement)
         except ProblemError as error:
-            run.absorb(error)
+            if not run.put_aside(scope, statement, error):
+                run.absorb(error)
             run.failed.add(id(statement))
 
 

@@ -8,7 +8,8 @@ from __future__ import annotations
 import itertools
 import math
 from collections.abc import Callable, Iterable, Mapping, Sequence
-from dataclasses import dataclass
+
+from tauledger.records import dataclass
 
 
 class EvaluationError(ValueError):
@@ -63,6 +64,8 @@ def _rising(points: Sequence[float]) -> Sequence[float]:
 
 @dataclass(frozen=True, slots=True)
 class BuiltIn:
+    """A function of ``fewest`` to ``most`` numbers; ``apply`` may raise as those of ``math`` do."""
+
     fewest: int
     most: int
     apply: Callable[..., float]
@@ -153,7 +156,10 @@ _BEYOND_ANALYSIS = frozenset(
 
 
 def built_in(name: str, count: int, known: Mapping[str, BuiltIn]) -> BuiltIn:
-    """The built-in function, or the error that says why it cannot be applied."""
+    """The function of that name, in lower case, for ``count`` arguments.
+
+    Raises EvaluationError that says why it cannot be applied.
+    """
     function = known.get(name)
     if function is None:
         if name in _BEYOND_ANALYSIS:
@@ -172,6 +178,10 @@ def built_in(name: str, count: int, known: Mapping[str, BuiltIn]) -> BuiltIn:
 
 
 def apply(name: str, function: BuiltIn, arguments: list[float]) -> float:
+    """The function's value, a finite number.
+
+    Raises EvaluationError for a division by zero, a number too large, or no real value.
+    """
     try:
         result = function.apply(*arguments)
     except ZeroDivisionError:
@@ -197,6 +207,7 @@ def _spelt(name: str, arguments: list[float]) -> str:
 
 
 def near_names(name: str, known: Iterable[str]) -> str:
+    """A clause such as ``; did you mean sqrt?``, or nothing."""
     import difflib
 
     words = [word for word in dict.fromkeys(known) if word[:1].isalpha()]

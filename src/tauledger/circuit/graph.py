@@ -1,8 +1,7 @@
-"""The circuit as a graph, and what the graph alone tells: nodes without a DC path to ground."""
+"""The graph of what carries direct current: nodes without a DC path to ground."""
 
 from __future__ import annotations
 
-import itertools
 from collections.abc import Iterator
 
 import networkx as nx
@@ -25,12 +24,6 @@ from tauledger.circuit.elements import (
 from tauledger.netlist.codes import problem
 from tauledger.problems import Problem
 
-_TERMINALS: dict[type[Element], tuple[str, ...]] = {
-    Diode: ("anode", "cathode"),
-    BipolarTransistor: ("collector", "base", "emitter", "substrate"),
-    JunctionFet: ("drain", "gate", "source"),
-    MosFet: ("drain", "gate", "source", "bulk"),
-}
 # Pairs of terminals (by position) that carry direct current inside a device. A gate insulated by
 # oxide has none; a substrate is a junction to the collector.
 _DC_PAIRS: dict[type[Element], tuple[tuple[int, int], ...]] = {
@@ -41,66 +34,28 @@ _DC_PAIRS: dict[type[Element], tuple[tuple[int, int], ...]] = {
 }
 
 
-def element_graph(circuit: Circuit) -> nx.MultiGraph:
-    """Nodes are circuit nodes; edges are elements between two of their terminals.
-
-    Edge key and attribute ``name``: the element's flat name, with the terminals added for a
-    device (``Q1:base-emitter``). Attribute ``element``: the element; for devices ``terminals``:
-    the two terminal names in the edge's order ``nodes``. A controlled source is an edge at its
-    output; couplings have none. An edge whose ends are one node is a loop.
-    """
-    graph = nx.MultiGraph()
-    graph.add_node(GROUND)
-    for element in circuit.elements:
-        if isinstance(element, Coupling):
-            continue
-        if isinstance(element, SemiconductorDevice):
-            for (first, one), (second, other) in itertools.combinations(
-                enumerate(element.nodes), 2
-            ):
-                names = _TERMINALS[type(element)]
-                pair = (names[first], names[second])
-                graph.add_edge(
-                    one,
-                    other,
-                    key=f"{element.name}:{pair[0]}-{pair[1]}",
-                    name=element.name,
-                    element=element,
-                    terminals=pair,
-                    nodes=(one, other),
-                )
-        else:
-            one, other = element.nodes
-            graph.add_edge(
-                one, other, key=element.name, name=element.name, element=element, nodes=(one, other)
-            )
-    return graph
-
-
 def find_floating_nodes(circuit: Circuit) -> tuple[Problem, ...]:
     """One ``node-floating`` error for each part of the circuit without a DC path to ground.
 
     Capacitors, current sources and the gate of a MOSFET give no path; inductors, resistors,
     voltage sources (E, H and B included) and junctions do.
     """
-    parent = {node: node for node in (GROUND, *circuit.nodes)}
-    for element in circuit.elements:
-        for one, other in _dc_edges(element):
-            parent[_root(parent, one)] = _root(parent, other)
-    ground = _root(parent, GROUND)
-    islands: dict[str, list[str]] = {}
-    for node in circuit.nodes:
-        root = _root(parent, node)
-        if root != ground:
-            islands.setdefault(root, []).append(node)
-    if not islands:
+    graph = nx.Graph()
+    graph.add_nodes_from((GROUND, *circuit.nodes))
+    graph.add_edges_from(pair for element in circuit.elements for pair in _dc_edges(element))
+    grounded, *apart = nx.connected_components(graph)
+    if not apart:
         return ()
-    touching: dict[str, list[Element]] = {}
+    island = {node: number for number, nodes in enumerate(apart) for node in nodes}
+    nodes: list[list[str]] = [[] for _ in apart]
+    for node in circuit.nodes:
+        if node not in grounded:
+            nodes[island[node]].append(node)
+    touching: list[list[Element]] = [[] for _ in apart]
     for element in circuit.elements:
-        for root in {_root(parent, node) for node in element.nodes}:
-            if root != ground:
-                touching.setdefault(root, []).append(element)
-    return tuple(_floating(nodes, touching[root]) for root, nodes in islands.items())
+        for number in {island[node] for node in element.nodes if node not in grounded}:
+            touching[number].append(element)
+    return tuple(_floating(*found) for found in zip(nodes, touching, strict=True))
 
 
 def _dc_edges(element: Element) -> Iterator[tuple[str, str]]:
@@ -133,13 +88,6 @@ def _sees_itself(element: BehaviouralSource) -> bool:
         for node in (leaf.positive, leaf.negative)
     }
     return not seen.isdisjoint(set(element.nodes) - {GROUND})
-
-
-def _root(parent: dict[str, str], node: str) -> str:
-    while parent[node] != node:
-        parent[node] = parent[parent[node]]
-        node = parent[node]
-    return node
 
 
 def _floating(nodes: list[str], parts: list[Element]) -> Problem:

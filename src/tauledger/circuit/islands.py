@@ -2,8 +2,8 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator
-from dataclasses import dataclass, replace
+from collections.abc import Iterator, Sequence, Set
+from dataclasses import replace
 
 import networkx as nx
 
@@ -17,7 +17,8 @@ from tauledger.circuit.elements import (
     Element,
     VoltageSource,
 )
-from tauledger.problems import Problem, Severity
+from tauledger.problems import Problem, ProblemError, Severity, SourceSpan
+from tauledger.records import dataclass
 
 _SHOWN_CIRCUITS = 8
 _SHOWN_PARTS = 6
@@ -42,7 +43,7 @@ def islands(circuit: Circuit, source: str = "") -> tuple[Island, ...]:
     graph = nx.Graph()
     sources = {element.name: element for element in circuit.elements}
     homes: list[tuple[Element, str]] = []
-    for element in circuit.elements:
+    for element in (*circuit.elements, *circuit.unread):
         if isinstance(element, Coupling):
             touched = [n for name in element.inductors for n in sources[name].nodes]
         else:
@@ -70,27 +71,58 @@ def restrict(circuit: Circuit, source: str | None = None) -> Circuit:
 
     Without a name it is the only source with an AC value. Where that leaves several or none, or
     the source stands between supplies, the circuit is returned as it is.
+
+    Elements that could not be read are warned of in the circuits left out. Raises ProblemError
+    with their problems where they may belong to the circuit that is returned.
     """
     driven = _driven(circuit, source)
-    if driven is None:
-        return circuit
-    found = islands(circuit, driven.name)
+    found = islands(circuit, driven.name) if driven is not None else ()
     others = [island for island in found if all(e is not driven for e in island.elements)]
-    if not others or len(others) == len(found):
+    if driven is None or not others or len(others) == len(found):
+        _judge_unread(circuit, set())
         return circuit
     left_out = {element.name for island in others for element in island.elements}
     nodes: set[str] = set().union(*(island.nodes for island in others))
     kept = tuple(e for e in circuit.elements if e.name not in left_out)
+    hints = tuple(hint for hint in circuit.output_hints if nodes.isdisjoint(hint))
+    dropped = [hint for hint in dict.fromkeys(circuit.output_hints) if hint not in hints]
     return replace(
         circuit,
         elements=kept,
-        output_hints=tuple(hint for hint in circuit.output_hints if nodes.isdisjoint(hint)),
+        output_hints=hints,
         node_sets={node: v for node, v in circuit.node_sets.items() if node not in nodes},
         initial_conditions={
             node: v for node, v in circuit.initial_conditions.items() if node not in nodes
         },
-        problems=(*circuit.problems, _note(driven, others)),
+        problems=(*_judge_unread(circuit, left_out), _note(driven, others, dropped)),
+        unread=(),
     )
+
+
+def _judge_unread(circuit: Circuit, left_out: Set[str]) -> tuple[Problem, ...]:
+    """The circuit's problems with those of unread elements; raises them when one is left in."""
+    if not circuit.unread:
+        return circuit.problems
+    found = list(circuit.problems)
+    for element in circuit.unread:
+        if element.name in left_out:
+            found += (_excused(entry) for entry in element.problems)
+        else:
+            found += element.problems
+    found.sort(key=lambda entry: _place(circuit, entry.span))
+    if any(entry.severity is Severity.ERROR for entry in found):
+        raise ProblemError(*found)
+    return tuple(found)
+
+
+def _excused(entry: Problem) -> Problem:
+    message = f"{entry.message}; it stands in another circuit of the file, which is left out"
+    return replace(entry, severity=Severity.WARNING, message=message)
+
+
+def _place(circuit: Circuit, span: SourceSpan | None) -> tuple[bool, str, int]:
+    """By position, those of the netlist before those of its includes."""
+    return (span.path != circuit.path, span.path, span.line) if span else (True, "", 0)
 
 
 def _driven(circuit: Circuit, name: str | None) -> VoltageSource | CurrentSource | None:
@@ -152,7 +184,7 @@ def _currents_of(element: BehaviouralSource) -> Iterator[str]:
             yield leaf.source
 
 
-def _note(driven: Element, others: list[Island]) -> Problem:
+def _note(driven: Element, others: Sequence[Island], dropped: Sequence[tuple[str, ...]]) -> Problem:
     listed = [_describe(island) for island in others[:_SHOWN_CIRCUITS]]
     if len(others) > _SHOWN_CIRCUITS:
         listed.append(f"{len(others) - _SHOWN_CIRCUITS} more")
@@ -161,10 +193,21 @@ def _note(driven: Element, others: list[Island]) -> Problem:
         "circuit-independent",
         Severity.NOTE,
         f"the report covers the circuit that {driven.name} drives; the file holds {count}, joined "
-        f"to it by ground and supplies at most and left out: {'; '.join(listed)}",
+        f"to it by ground and supplies at most and left out: {'; '.join(listed)}"
+        + _said_of(dropped),
         others[0].elements[0].span,
         "Name a source of another circuit with --input NAME to see that one.",
     )
+
+
+def _said_of(dropped: Sequence[tuple[str, ...]]) -> str:
+    """What .print and statements like it ask to see of the circuits left out."""
+    if not dropped:
+        return ""
+    more = len(dropped) - _SHOWN_PARTS
+    shown = ", ".join(f"v({','.join(hint)})" for hint in dropped[:_SHOWN_PARTS])
+    shown += f" and {more} more" if more > 0 else ""
+    return f"; so is what .print or a statement like it asks to see there: {shown}"
 
 
 def _describe(island: Island) -> str:

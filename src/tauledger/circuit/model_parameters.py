@@ -133,8 +133,10 @@ def is_known(kind: str, level: float, name: str) -> bool:
 
 
 def is_rating(name: str) -> bool:
+    """Whether a parameter, in lower case, is a rating or maker's data that no equation uses."""
     return name in _RATINGS
 
 
 def known_names(kind: str) -> frozenset[str]:
+    """The parameters of ngspice's models of this kind, of any level; empty for an unknown kind."""
     return _KNOWN.get(kind, frozenset())

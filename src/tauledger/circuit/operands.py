@@ -2,10 +2,9 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
-
 from tauledger.netlist.codes import fault
 from tauledger.netlist.statements import Assignment, Group, Item, Statement, Table, Word
+from tauledger.records import dataclass
 
 
 @dataclass(frozen=True, slots=True)
@@ -17,6 +16,7 @@ class Operands:
 
 
 def operands(statement: Statement) -> Operands:
+    """Sort what follows the statement's name."""
     positional: list[Item] = []
     named: dict[str, Assignment] = {}
     for item in statement.items:
@@ -63,4 +63,5 @@ def ungrouped(items: tuple[Item, ...]) -> list[Item]:
 
 
 def is_word(item: Item | None, text: str) -> bool:
+    """Whether an item is this word, given in lower case."""
     return isinstance(item, Word) and item.text.lower() == text

@@ -4,7 +4,6 @@ from __future__ import annotations
 
 import re
 from collections.abc import Iterable, Iterator, Mapping
-from dataclasses import dataclass
 
 from tauledger.circuit.evaluate import UserFunction
 from tauledger.circuit.expansion import Expansion
@@ -13,6 +12,7 @@ from tauledger.netlist.codes import fault
 from tauledger.netlist.expression import Call, Expression, Name
 from tauledger.netlist.statements import Assignment, Formula, Statement, Word
 from tauledger.problems import ProblemError, SourceSpan
+from tauledger.records import dataclass
 
 _FUNCTION = re.compile(r"([A-Za-z_]\w*)\s*\(([^()]*)\)$")
 # ".func f(x,y) {x*y}", with the equals sign left out.

@@ -41,6 +41,10 @@ _OHMS_FOR_ZERO = 1e-3
 
 
 def resistor(run: Expansion, scope: Scope, statement: Statement) -> None:
+    """Add an R element, its value at its own temperature; 0 Ω becomes 1 mΩ with a note.
+
+    Like the others here, raises ProblemError where the line does not say one.
+    """
     nodes = node_words(statement, 2, "Rname node node value")
     value = _Reading(run, scope, statement).value()
     if value == 0.0:
@@ -63,6 +67,7 @@ def resistor(run: Expansion, scope: Scope, statement: Statement) -> None:
 
 
 def capacitor(run: Expansion, scope: Scope, statement: Statement) -> None:
+    """Add a C element with the name of its model, which ratings may be given for."""
     nodes = node_words(statement, 2, "Cname node node value")
     reading = _Reading(run, scope, statement)
     value, initial = reading.value(), reading.named("ic")
@@ -73,6 +78,7 @@ def capacitor(run: Expansion, scope: Scope, statement: Statement) -> None:
 
 
 def inductor(run: Expansion, scope: Scope, statement: Statement) -> None:
+    """Add an L element."""
     nodes = node_words(statement, 2, "Lname node node value")
     value = _Reading(run, scope, statement).value()
     _check_storage(run, statement, value, "inductance", "H", "a short circuit at any frequency")
@@ -102,6 +108,7 @@ def _check_storage(
 
 
 def coupling(run: Expansion, scope: Scope, statement: Statement) -> None:
+    """Add a K element once the inductors it names are known."""
     words = [item for item in statement.items[:-1] if isinstance(item, Word)]
     if len(words) < 2 or len(words) != len(statement.items) - 1:
         raise fault(

@@ -9,12 +9,13 @@ from __future__ import annotations
 
 from collections import ChainMap
 from collections.abc import MutableMapping
-from dataclasses import dataclass, field
+from dataclasses import field
 
 from tauledger.circuit.elements import Model
 from tauledger.circuit.evaluate import UserFunction
 from tauledger.netlist import Subcircuit
 from tauledger.netlist.statements import Statement
+from tauledger.records import dataclass
 
 
 @dataclass(slots=True)
@@ -51,6 +52,7 @@ class Scope:
 
 
 def top_scope() -> Scope:
+    """The scope of the netlist itself: no prefix, no names yet."""
     return Scope("", ChainMap(), ChainMap(), ChainMap(), ChainMap(), {})
 
 

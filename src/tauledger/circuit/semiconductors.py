@@ -47,6 +47,11 @@ _FLAGS = frozenset(("off", "thermal"))
 
 
 def semiconductor(run: Expansion, scope: Scope, statement: Statement) -> None:
+    """Add a D, Q, J or M element with its model and instance parameters.
+
+    One whose model level has no equations is left out with a warning. Raises ProblemError where
+    nodes or model are missing or of another kind.
+    """
     letter = statement.name.text[0].lower()
     given = operands(statement)
     words = [item for item in given.positional if isinstance(item, Word)]

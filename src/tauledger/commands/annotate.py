@@ -5,7 +5,7 @@ from __future__ import annotations
 import argparse
 from pathlib import Path
 
-from tauledger.commands.arguments import path_arguments, settings_of
+from tauledger.commands.arguments import expanded, path_arguments, settings_of
 from tauledger.commands.output import FINDING, FINE, UNUSABLE, explain, refuse
 from tauledger.problems import ProblemError
 
@@ -31,7 +31,7 @@ def add_arguments(parser: argparse.ArgumentParser) -> None:
 
 def run(arguments: argparse.Namespace) -> int:
     """Write the results beside the parts, into netlists or onto the drawings of one."""
-    netlists: list[str] = arguments.netlists
+    netlists = expanded(arguments.netlists)
     if len(netlists) > 1 and (arguments.drawing or arguments.output):
         refuse("usage", "--drawing and --output take one netlist", "Name one netlist at a time.")
     worst = FINE

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import argparse
+import sys
 from collections.abc import Sequence
 from dataclasses import replace
 from pathlib import Path
@@ -27,6 +28,15 @@ def path_arguments(parser: argparse.ArgumentParser, output: str = "--output") ->
     )
 
 
+def expanded(names: Sequence[str]) -> list[str]:
+    """The files that wildcards stand for, which the shells of Windows leave to the program."""
+    if sys.platform != "win32":
+        return list(names)
+    import glob
+
+    return [found for name in names for found in sorted(glob.glob(name)) or [name]]
+
+
 def midband_argument(parser: argparse.ArgumentParser) -> None:
     parser.add_argument(
         "--midband", metavar="FREQ", type=frequency, help="judge gain there (1kHz): equalisers"
@@ -34,13 +44,14 @@ def midband_argument(parser: argparse.ArgumentParser) -> None:
 
 
 def frequency(text: str) -> float:
+    from tauledger.configuration.settings import HIGHEST_MIDBAND_HZ, LOWEST_MIDBAND_HZ
     from tauledger.quantity import parse_si
 
     try:
         value, unit = parse_si(text)
     except ValueError as error:
         raise argparse.ArgumentTypeError(str(error)) from None
-    if unit not in ("", "Hz") or not 1e-3 <= value <= 1e12:
+    if unit not in ("", "Hz") or not LOWEST_MIDBAND_HZ <= value <= HIGHEST_MIDBAND_HZ:
         expected = "a frequency from 1mHz to 1THz such as 1kHz"
         raise argparse.ArgumentTypeError(f"expected {expected}, found {text!r}")
     return value

@@ -6,6 +6,7 @@ import argparse
 import sys
 from pathlib import Path
 
+from tauledger.commands.arguments import expanded
 from tauledger.commands.output import deliver, save_details, write_utf8
 from tauledger.problems import Severity
 
@@ -16,7 +17,6 @@ def add_arguments(parser: argparse.ArgumentParser) -> None:
         "netlists",
         metavar="NETLIST",
         nargs="*",
-        type=Path,
         help="netlists to check; left out, all that tauledger.toml is for",
     )
     parser.add_argument(
@@ -45,7 +45,8 @@ def run(arguments: argparse.Namespace) -> int:
     from tauledger.review.check import exit_code
 
     if arguments.netlists:
-        targets = named_targets(arguments.netlists, arguments.config)
+        netlists = list(map(Path, expanded(arguments.netlists)))
+        targets = named_targets(netlists, arguments.config)
     else:
         targets = configured_targets(Path.cwd(), arguments.config)
     checks = check_on_all_cores(targets, sys.stderr)

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import argparse
+import os
 from collections.abc import Mapping
 from typing import TYPE_CHECKING
 
@@ -16,6 +17,7 @@ from tauledger.commands.deciding import (
     tolerance_argument,
 )
 from tauledger.commands.output import FINDING, FINE, deliver, explain, write_bytes
+from tauledger.problems import Problem, Severity
 
 if TYPE_CHECKING:
     from tauledger.analysis import Analysis
@@ -30,15 +32,15 @@ def add_arguments(parser: argparse.ArgumentParser) -> None:
 
 def _own_arguments(parser: argparse.ArgumentParser) -> None:
     end = parser.add_mutually_exclusive_group(required=True)
-    end.add_argument("--low-corner", metavar="FREQ", help="to be met from below, such as 20Hz")
-    end.add_argument("--high-corner", metavar="FREQ", help="to be met from above")
+    end.add_argument("--low-corner", metavar="FREQ", help="at most this, such as 20Hz")
+    end.add_argument("--high-corner", metavar="FREQ", help="at least this, and near it")
     parser.add_argument("--only", metavar="PARTS", default="", help="change only these: C1,C3")
     parser.add_argument(
         "--shares", metavar="SHARES", default="", help="of the low corner: CE=80,C1=10,C2=10"
     )
     parser.add_argument("--series", metavar="NAME", default="", help="E3 to E192, for every part")
     parser.add_argument(
-        "--margin", metavar="PERCENT", default="0%", help="kept to the target: 10%%"
+        "--margin", metavar="PERCENT", default="0%", help="keep so far from the target (0%%)"
     )
     parser.add_argument(
         "--worst-case", action="store_true", help="meet it with every tolerance at its worst"
@@ -61,12 +63,13 @@ def run(arguments: argparse.Namespace) -> int:
     analysis, settings = analysis_of(arguments)
     result = _asked_for(arguments, analysis, settings)
     explain(result.problems)
+    code = FINDING if result.infeasible else FINE
     if arguments.patch is not None:
-        change = _patch_of(arguments, analysis, result)
+        change = _patch_of(arguments, analysis, settings, result)
         deliver(lambda: write_bytes(change))
-        return FINE
+        return code
     show_decision(arguments.format, result, choice_page)
-    return FINDING if result.infeasible else FINE
+    return code
 
 
 def _asked_for(
@@ -78,7 +81,11 @@ def _asked_for(
     from tauledger.decide.search import Wish
     from tauledger.decide.series import SERIES
 
-    if arguments.series and arguments.series not in SERIES:
+    if arguments.tolerance and not arguments.worst_case:
+        found = " ".join(arguments.tolerance)
+        raise refused("--tolerance", found, "--worst-case beside it, which is what it counts for")
+    series = arguments.series.upper()
+    if series and series not in SERIES:
         raise refused("--series", arguments.series, f"one of {', '.join(SERIES)}")
     target = arguments.low_corner or arguments.high_corner
     option = "--low-corner" if arguments.low_corner else "--high-corner"
@@ -90,7 +97,7 @@ def _asked_for(
         target_hz=frequency(option, target),
         only=tuple(name.strip() for name in arguments.only.split(",") if name.strip()),
         shares=shares or None,
-        series=arguments.series,
+        series=series,
         margin=percent("--margin", arguments.margin),
         with_tolerance=arguments.worst_case,
         midband_hz=analysis.asked_midband_hz,
@@ -98,15 +105,31 @@ def _asked_for(
     return choose(analysis, wish, settings, [parse_asked(text) for text in arguments.tolerance])
 
 
-def _patch_of(arguments: argparse.Namespace, analysis: Analysis, choice: Choice) -> bytes:
-    """The alternative asked for as a unified diff."""
+def _patch_of(
+    arguments: argparse.Namespace,
+    analysis: Analysis,
+    settings: PathSettings | None,
+    choice: Choice,
+) -> bytes:
+    """The alternative asked for as a unified diff; what to know of it goes to standard error."""
     from tauledger.decide.patch import patch
 
     count = len(choice.alternatives)
+    if count == 0:
+        message = f"there is nothing to patch: {choice.infeasible or choice.notes[0]}"
+        explain([Problem("patch-empty", Severity.NOTE, message)])
+        return b""
     if not 1 <= arguments.patch <= count:
-        found = choice.infeasible or f"there are {count} alternatives"
-        raise refused("--patch", str(arguments.patch), f"one that exists; {found}")
-    return patch(analysis.circuit, choice.alternatives[arguments.patch - 1])
+        there = f"there {'is' if count == 1 else 'are'} {count}"
+        raise refused("--patch", str(arguments.patch), f"an alternative that exists; {there}")
+    found = patch(analysis, choice.alternatives[arguments.patch - 1], settings)
+    if not found.diff:
+        message = f"alternative {arguments.patch} is the netlist as it stands"
+        explain([Problem("patch-empty", Severity.NOTE, message)])
+    elif found.folder != os.getcwd():
+        message = f"its paths are relative to {found.folder}: apply the patch there"
+        explain([Problem("patch-folder", Severity.NOTE, message)])
+    return found.diff
 
 
 def _shares(text: str) -> Mapping[str, float]:

@@ -3,12 +3,11 @@
 from __future__ import annotations
 
 import argparse
-import sys
 from collections.abc import Callable
 from typing import TYPE_CHECKING, TypeVar
 
 from tauledger.commands.arguments import midband_argument, path_arguments
-from tauledger.commands.output import deliver, show_page
+from tauledger.commands.output import hand_over, show_page
 from tauledger.problems import Problem, ProblemError, Severity
 from tauledger.quantity import parse_si
 
@@ -23,7 +22,7 @@ if TYPE_CHECKING:
 def tolerance_argument(parser: argparse.ArgumentParser) -> None:
     parser.add_argument(
         "--tolerance",
-        metavar="PARTS=WINDOW",
+        metavar="WINDOW",
         action="append",
         default=[],
         help="'R*=5%%', 'C*=-20..+80%%', 'Q*.current_gain=50%%'; repeat",
@@ -31,28 +30,45 @@ def tolerance_argument(parser: argparse.ArgumentParser) -> None:
 
 
 def decision_arguments(
-    parser: argparse.ArgumentParser, own: Callable[[argparse.ArgumentParser], None]
+    parser: argparse.ArgumentParser,
+    own: Callable[[argparse.ArgumentParser], None],
+    has_page: bool = False,
 ) -> None:
-    """The arguments of a decision on one amplifier: its own, then those all share."""
+    """The arguments of a decision on one amplifier: its own, then those all share.
+
+    ``has_page`` for one that can be a page of HTML, which wants a file.
+    """
     parser.usage = "%(prog)s [OPTIONS] NETLIST"
     parser.add_argument("netlist", metavar="NETLIST", help="SPICE netlist of the amplifier")
     own(parser)
     parser.add_argument(
-        "--format", choices=("text", "json"), default="text", help="text (default) or json"
+        "--format",
+        metavar="FORMAT",
+        choices=("text", "json", "html") if has_page else ("text", "json"),
+        default="text",
+        help="text (default), json or html" if has_page else "text (default) or json",
     )
+    if has_page:
+        parser.add_argument("--save", metavar="FILE", help="write there, not to standard output")
     path_arguments(parser)
     midband_argument(parser)
 
 
 def show_decision(
-    form: str, decision: Decided, page: Callable[[Page, Decided], list[Line]]
+    form: str,
+    decision: Decided,
+    page: Callable[[Page, Decided], list[Line]],
+    save: str | None = None,
 ) -> None:
-    """Print the rows of a decision as JSON, or as the page that ``page`` lays out."""
+    """Print the rows of a decision as JSON, or as the page that ``page`` lays out; or save them."""
     if form == "json":
         from tauledger.report.decision_json import decision_json
 
-        text = decision_json(decision)
-        deliver(lambda: sys.stdout.write(text))
+        hand_over(decision_json(decision).encode(), save)
+    elif save:
+        from tauledger.report.terminal import page_text
+
+        hand_over(page_text(lambda on: page(on, decision)).encode(), save)
     else:
         show_page(lambda on: page(on, decision))
 

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import errno
 import os
 import sys
 from collections.abc import Callable, Iterable, Sequence
@@ -27,9 +28,10 @@ def refuse(code: str, message: str, advice: str) -> NoReturn:
 
 
 def explain(problems: Iterable[Problem]) -> None:
+    from tauledger.report.alphabet import alphabet
     from tauledger.report.problems import format_problems
 
-    sys.stderr.write(format_problems(problems))
+    sys.stderr.write(alphabet(sys.stderr.encoding)(format_problems(problems)))
     sys.stderr.flush()
 
 
@@ -41,6 +43,9 @@ def deliver(write: Callable[[], object]) -> None:
     except BrokenPipeError:
         raise
     except OSError as error:
+        if sys.platform == "win32" and error.errno == errno.EINVAL:
+            # So Windows says it of a pipe whose reader has gone (from memory).
+            raise BrokenPipeError from None
         silence_stdout()
         message = f"the result could not be written: {error.strerror or error}"
         refuse("output-unwritable", message, "Check the disk or send the output elsewhere.")
@@ -79,10 +84,12 @@ def write_raw(content: bytes) -> None:
 def write_bytes(content: bytes) -> None:
     """A patch as it is, which may hold any bytes of the netlist; harmless on a terminal."""
     if sys.stdout.isatty() or not hasattr(sys.stdout, "buffer"):
+        from tauledger.report.alphabet import alphabet
         from tauledger.report.inert import inert
 
+        spell = alphabet(sys.stdout.encoding)
         for line in content.decode("utf-8", "replace").splitlines():
-            sys.stdout.write(inert(line) + "\n")
+            sys.stdout.write(spell(inert(line)) + "\n")
     else:
         sys.stdout.buffer.write(content)
 

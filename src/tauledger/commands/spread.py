@@ -13,7 +13,7 @@ from tauledger.commands.deciding import (
     show_decision,
     tolerance_argument,
 )
-from tauledger.commands.output import FINE, explain
+from tauledger.commands.output import FINE, explain, hand_over
 from tauledger.commands.workers import progress, workers
 
 if TYPE_CHECKING:
@@ -24,7 +24,7 @@ if TYPE_CHECKING:
 
 def add_arguments(parser: argparse.ArgumentParser) -> None:
     """Its own, then those that all decisions share."""
-    decision_arguments(parser, _own_arguments)
+    decision_arguments(parser, _own_arguments, has_page=True)
 
 
 def _own_arguments(parser: argparse.ArgumentParser) -> None:
@@ -36,7 +36,7 @@ def _own_arguments(parser: argparse.ArgumentParser) -> None:
         metavar="NAME",
         choices=("uniform", "normal", "truncated"),
         default="",
-        help="uniform (default), normal (tolerance is 3 sigma) or truncated",
+        help="uniform (default), normal (to 3 sigma) or truncated",
     )
 
 
@@ -47,7 +47,12 @@ def run(arguments: argparse.Namespace) -> int:
     analysis, settings = analysis_of(arguments)
     result = _asked_for(arguments, analysis, settings)
     explain(result.problems)
-    show_decision(arguments.format, result, spread_page)
+    if arguments.format == "html":
+        from tauledger.report.decision_html import spread_html
+
+        hand_over(spread_html(result).encode(), arguments.save)
+    else:
+        show_decision(arguments.format, result, spread_page, arguments.save)
     return FINE
 
 

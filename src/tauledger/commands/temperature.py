@@ -7,7 +7,7 @@ from typing import TYPE_CHECKING
 
 from tauledger.commands.arguments import analysis_of
 from tauledger.commands.deciding import decision_arguments, parsed, refused, show_decision
-from tauledger.commands.output import FINE, explain
+from tauledger.commands.output import FINE, explain, hand_over
 
 if TYPE_CHECKING:
     from tauledger.analysis import Analysis
@@ -17,7 +17,7 @@ if TYPE_CHECKING:
 
 def add_arguments(parser: argparse.ArgumentParser) -> None:
     """Its own, then those that all decisions share."""
-    decision_arguments(parser, _own_arguments)
+    decision_arguments(parser, _own_arguments, has_page=True)
 
 
 def _own_arguments(parser: argparse.ArgumentParser) -> None:
@@ -34,7 +34,12 @@ def run(arguments: argparse.Namespace) -> int:
     analysis, settings = analysis_of(arguments)
     result = _asked_for(arguments, analysis, settings)
     explain(result.problems)
-    show_decision(arguments.format, result, temperature_page)
+    if arguments.format == "html":
+        from tauledger.report.decision_html_temperature import temperature_html
+
+        hand_over(temperature_html(result).encode(), arguments.save)
+    else:
+        show_decision(arguments.format, result, temperature_page, arguments.save)
     return FINE
 
 

@@ -24,13 +24,14 @@ def find_configuration(netlist: Path, roots: Sequence[Path]) -> Path | None:
     ``roots`` are resolved folders. Raises ProblemError when the file found is a link that leads
     out of them.
     """
-    folder = netlist.resolve().parent
+    folder = Path(os.path.realpath(netlist)).parent
     for candidate in (folder, *folder.parents):
         if not any(candidate.is_relative_to(root) for root in roots):
             return None
         found = candidate / FILE_NAME
         if os.path.lexists(found):
-            if not any(found.resolve().is_relative_to(root) for root in roots):
+            target = Path(os.path.realpath(found))
+            if not any(target.is_relative_to(root) for root in roots):
                 raise ProblemError(_refused(f"{found} is a link that leads", roots[0], None))
             return found
     return None
@@ -139,7 +140,7 @@ def _refused(what: str, folder: Path, span: SourceSpan | None) -> Problem:
 
 def is_match(netlist: Path, pattern: str, folder: Path) -> bool:
     """Whether a netlist inside ``folder`` has the path that ``pattern`` describes."""
-    path, top = netlist.resolve(), folder.resolve()
+    path, top = Path(os.path.realpath(netlist)), folder.resolve()
     if not path.is_relative_to(top):
         return False
     parts = path.relative_to(top).parts

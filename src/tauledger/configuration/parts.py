@@ -6,6 +6,7 @@ from collections.abc import Iterator, Mapping
 
 from tauledger.configuration.settings import (
     CapacitorClass,
+    DiodeClass,
     Quantity,
     ResistorClass,
     SpreadSettings,
@@ -29,7 +30,8 @@ TRANSISTOR_WINDOWS: Mapping[str, str] = {
     "threshold_voltage": "V",
 }
 """Key → unit of its window."""
-TRANSISTOR_KEYS = ("match", *TRANSISTOR_WINDOWS, "matched")
+TRANSISTOR_KEYS = ("match", *TRANSISTOR_WINDOWS, "matched", "rated_power")
+DIODE_KEYS = ("match", "rated_power")
 SPREAD_KEYS = ("distribution", "supply", "temperature")
 DISTRIBUTIONS = ("uniform", "normal", "truncated")
 SERIES = ("E3", "E6", "E12", "E24", "E48", "E96", "E192")
@@ -58,12 +60,11 @@ def capacitors(table: Table) -> Iterator[CapacitorClass]:
 def resistors(table: Table) -> Iterator[ResistorClass]:
     """The classes of resistors, in the order of the file."""
     for name, inner in table.tables("resistors", *RESISTOR_KEYS):
-        power = inner.quantity("rated_power", "W", above=0.0)
         yield ResistorClass(
             name,
             _match(inner, 'match = "R*"'),
             _tolerance(inner),
-            power.value if power else None,
+            _rated_power(inner),
             _matched(inner),
             inner.span,
         )
@@ -83,7 +84,14 @@ def transistors(table: Table) -> Iterator[TransistorClass]:
             windows["threshold_voltage"],
             bool(_truth(inner, "matched")),
             inner.span,
+            _rated_power(inner),
         )
+
+
+def diodes(table: Table) -> Iterator[DiodeClass]:
+    """The classes of diodes, in the order of the file."""
+    for name, inner in table.tables("diodes", *DIODE_KEYS):
+        yield DiodeClass(name, _match(inner, 'match = "D*"'), _rated_power(inner), inner.span)
 
 
 def spread(table: Table) -> SpreadSettings | None:
@@ -153,6 +161,11 @@ def _ends(window: Table, unit: str, key: str) -> Window | None:
 
 def _scaled(quantity: Quantity) -> float:
     return quantity.value / 100.0 if quantity.unit == "%" else quantity.value
+
+
+def _rated_power(table: Table) -> float | None:
+    power = table.quantity("rated_power", "W", above=0.0)
+    return power.value if power else None
 
 
 def _matched(table: Table) -> float | None:

@@ -17,17 +17,21 @@ from tauledger.configuration.files import (
 )
 from tauledger.configuration.parts import (
     CAPACITOR_KEYS,
+    DIODE_KEYS,
     RESISTOR_KEYS,
     SPREAD_KEYS,
     TRANSISTOR_KEYS,
     WINDOW_KEYS,
     capacitors,
+    diodes,
     resistors,
     spread,
     transistors,
 )
 from tauledger.configuration.positions import Positions
 from tauledger.configuration.settings import (
+    HIGHEST_MIDBAND_HZ,
+    LOWEST_MIDBAND_HZ,
     Configuration,
     Dominance,
     GenericModels,
@@ -44,6 +48,7 @@ from tauledger.problems import Problem, ProblemError, SourceSpan
 
 __all__ = [
     "CAPACITOR_KEYS",
+    "DIODE_KEYS",
     "RESISTOR_KEYS",
     "SPREAD_KEYS",
     "TRANSISTOR_KEYS",
@@ -52,7 +57,7 @@ __all__ = [
 
 SHARED_KEYS = (
     "supplies", "models", "temperature", "generic_models", "capacitors", "resistors",
-    "transistors", "spread",
+    "transistors", "diodes", "spread",
 )  # fmt: skip
 """May stand at the top, for all paths, or in a path, which then counts first."""
 TOP_KEYS = ("path", *SHARED_KEYS)
@@ -136,6 +141,7 @@ def _shared(table: Table, folder: Path) -> PathSettings:
         capacitors=tuple(capacitors(table)),
         resistors=tuple(resistors(table)),
         transistors=tuple(transistors(table)),
+        diodes=tuple(diodes(table)),
         spread=spread(table),
     )
 
@@ -156,7 +162,7 @@ def _path(name: str, table: Table, folder: Path, shared: PathSettings) -> PathSe
         netlist=netlist or "",
         input=_input(table),
         output=_output(table),
-        midband=table.quantity("midband", "Hz", above=0.0),
+        midband=table.quantity("midband", "Hz", least=LOWEST_MIDBAND_HZ, most=HIGHEST_MIDBAND_HZ),
         supplies=(*own.supplies, *(s for s in shared.supplies if s.node.casefold() not in nets)),
         models=(*shared.models, *own.models),
         temperature=own.temperature or shared.temperature,
@@ -164,6 +170,7 @@ def _path(name: str, table: Table, folder: Path, shared: PathSettings) -> PathSe
         capacitors=(*own.capacitors, *shared.capacitors),
         resistors=(*own.resistors, *shared.resistors),
         transistors=(*own.transistors, *shared.transistors),
+        diodes=(*own.diodes, *shared.diodes),
         spread=own.spread or shared.spread,
         limits=tuple(_limits(limits)) if limits else (),
         dominance=tuple(_dominance(limits)) if limits else (),

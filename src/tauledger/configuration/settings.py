@@ -3,10 +3,14 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass, field
+from dataclasses import field
 from pathlib import Path
 
 from tauledger.problems import SourceSpan
+from tauledger.records import dataclass
+
+LOWEST_MIDBAND_HZ, HIGHEST_MIDBAND_HZ = 1e-3, 1e12
+"""Between them the gain may be judged, by the configuration and by ``--midband`` alike."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -120,6 +124,17 @@ class TransistorClass:
     matched: bool
     """Whether all of them stray alike."""
     span: SourceSpan
+    rated_power_w: float | None = None
+
+
+@dataclass(frozen=True, slots=True)
+class DiodeClass:
+    """Rating of the diodes whose designators match."""
+
+    name: str
+    match: tuple[str, ...]
+    rated_power_w: float | None
+    span: SourceSpan
 
 
 @dataclass(frozen=True, slots=True)
@@ -191,6 +206,8 @@ class PathSettings:
     spread: SpreadSettings | None = None
     midband: Quantity | None = None
     """Where the gain is judged; None for the middle of the flat stretch."""
+    diodes: tuple[DiodeClass, ...] = ()
+    """The first class that matches counts."""
 
 
 @dataclass(frozen=True, slots=True)

@@ -10,7 +10,7 @@ from tauledger.configuration.codes import near, problem
 from tauledger.configuration.positions import Keys, Positions
 from tauledger.configuration.settings import Quantity
 from tauledger.problems import Problem, SourceSpan
-from tauledger.quantity import parse_si
+from tauledger.quantity import format_quantity, parse_si
 
 EXAMPLES = {
     "Hz": "20 Hz", "V": "12 V", "A": "1.5 mA", "Ω": "10 kΩ", "F": "220 pF", "dB": "26 dB",
@@ -69,8 +69,9 @@ class Table:
         *units: str,
         least: float = -math.inf,
         above: float = -math.inf,
+        most: float = math.inf,
     ) -> Quantity | None:
-        """A quantity in one of ``units``, at least ``least`` and greater than ``above``."""
+        """A quantity in one of ``units``, from ``least`` to ``most`` and above ``above``."""
         if key not in self.content:
             return None
         value = self.content[key]
@@ -90,9 +91,15 @@ class Table:
                 key, f"{_shown(value)} {found}; expected {expected}, {example[9:]}", "config-unit"
             )
             return None
-        if number < least or number <= above:
-            bound = f"at least {least:g}" if number < least else f"more than {above:g}"
-            self.refuse(key, f"{_shown(value)} makes no sense here; expected {bound} {unit}")
+        bound = ""
+        if number < least:
+            bound = f"at least {least:g} {unit}"
+        elif number > most:
+            bound = f"at most {format_quantity(most, unit, 1)}"
+        elif number <= above:
+            bound = f"more than {above:g} {unit}"
+        if bound:
+            self.refuse(key, f"{_shown(value)} makes no sense here; expected {bound}")
             return None
         return Quantity(number, unit, value.strip(), self.place(key))
 

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Sequence
-from dataclasses import dataclass, replace
+from dataclasses import replace
 
 import numpy as np
 
@@ -13,6 +13,7 @@ from tauledger.corners.effects import Ends, switching_effect
 from tauledger.corners.model import PartAccount
 from tauledger.corners.ports import EndModel
 from tauledger.quantity import format_quantity
+from tauledger.records import dataclass
 from tauledger.smallsignal.network import FloatArray, ReactivePart
 
 

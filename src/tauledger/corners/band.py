@@ -4,10 +4,10 @@ from __future__ import annotations
 
 import math
 from collections.abc import Callable
-from dataclasses import dataclass
 
 import numpy as np
 
+from tauledger.records import dataclass
 from tauledger.smallsignal.modes import ComplexArray
 from tauledger.smallsignal.network import FloatArray
 from tauledger.smallsignal.response import Response
@@ -95,12 +95,12 @@ def find_passband(sweep: Sweep, *, cut: bool = False) -> Passband:
 
 def _extents(level: FloatArray) -> tuple[np.ndarray, np.ndarray]:
     """For every point, how far the response stays within ±3 dB of it on either side."""
-    count = level.size
     outside = np.abs(level[None, :] - level[:, None]) > HALF_POWER_DB
-    index = np.arange(count)
-    left = np.where(outside & (index[None, :] < index[:, None]), index[None, :], -1).max(axis=1)
-    right = np.where(outside & (index[None, :] > index[:, None]), index[None, :], count)
-    return left + 1, right.min(axis=1) - 1
+    before, after = np.tril(outside, -1), np.triu(outside, 1)
+    last = level.size - 1
+    left = np.where(before.any(axis=1), last - before[:, ::-1].argmax(axis=1) + 1, 0)
+    right = np.where(after.any(axis=1), after.argmax(axis=1) - 1, last)
+    return left, right
 
 
 def _middle(frequency: FloatArray, begin: int, end: int, last: int) -> float:

@@ -4,13 +4,13 @@ from __future__ import annotations
 
 import math
 from collections.abc import Collection, Sequence
-from dataclasses import dataclass
 
 import numpy as np
 
 from tauledger.corners.band import HALF_POWER, TWO_PI
 from tauledger.corners.ports import EndModel, midband_network
 from tauledger.corners.sides import HeldPairs, Sides, tied_by
+from tauledger.records import dataclass
 from tauledger.smallsignal.network import FloatArray, ReactivePart
 from tauledger.smallsignal.response import Response
 

@@ -4,7 +4,6 @@ from __future__ import annotations
 
 import math
 from collections.abc import Iterable, Sequence
-from dataclasses import dataclass
 
 import numpy as np
 
@@ -45,6 +44,7 @@ from tauledger.corners.sides import (
     split_sides,
 )
 from tauledger.problems import Problem, ProblemError, Severity
+from tauledger.records import dataclass
 from tauledger.smallsignal.modes import ComplexArray, natural_frequencies
 from tauledger.smallsignal.network import ReactivePart
 from tauledger.smallsignal.response import (

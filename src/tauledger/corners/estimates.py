@@ -16,12 +16,12 @@ b₂ = Σ τ_i⁰ τ_jⁱ are open-circuit time constants, a₁ and a₂ transfe
 from __future__ import annotations
 
 import math
-from dataclasses import dataclass
 
 import numpy as np
 
 from tauledger.corners.band import HALF_POWER, TWO_PI, false_position
 from tauledger.corners.ports import EndModel
+from tauledger.records import dataclass
 from tauledger.smallsignal.modes import ComplexArray
 from tauledger.smallsignal.network import FloatArray
 

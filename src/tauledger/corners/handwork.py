@@ -5,7 +5,6 @@ from __future__ import annotations
 import functools
 import math
 from collections.abc import Callable, Iterable, Mapping, Sequence
-from dataclasses import dataclass
 
 import numpy as np
 
@@ -31,6 +30,7 @@ from tauledger.corners.inspection import (
 )
 from tauledger.corners.model import Corners, PartAccount
 from tauledger.corners.ports import midband_network
+from tauledger.records import dataclass
 from tauledger.smallsignal import DeviceAdmittance, LinearNetwork, ReactivePart, Response
 from tauledger.smallsignal.network import FloatArray
 

@@ -20,7 +20,6 @@ from __future__ import annotations
 
 import math
 from collections.abc import Iterable, Mapping, Sequence
-from dataclasses import dataclass
 
 from tauledger.corners.symbols import (
     GROUND,
@@ -35,6 +34,7 @@ from tauledger.corners.symbols import (
     series,
     symbol,
 )
+from tauledger.records import dataclass
 
 MAXIMUM_DEPTH = 24
 MAXIMUM_STEPS = 300

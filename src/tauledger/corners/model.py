@@ -2,9 +2,8 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
-
 from tauledger.corners.ports import EndModel, Midband
+from tauledger.records import dataclass
 from tauledger.smallsignal.network import ReactivePart
 
 

@@ -11,12 +11,13 @@ from __future__ import annotations
 
 import math
 from collections.abc import Sequence
-from dataclasses import dataclass, replace
+from dataclasses import replace
 
 import numpy as np
 
 from tauledger.corners.band import TWO_PI
 from tauledger.corners.ports import Midband, midband_network
+from tauledger.records import dataclass
 from tauledger.smallsignal.network import FloatArray, ReactivePart
 from tauledger.smallsignal.response import Response
 

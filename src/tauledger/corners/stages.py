@@ -4,13 +4,13 @@ from __future__ import annotations
 
 import math
 from collections.abc import Mapping
-from dataclasses import dataclass
 
 from tauledger.corners.handwork import AGREEMENT, IDEAL, Workbench
 from tauledger.corners.inspection import ActiveDevice, NoExpressionError, SignalNetwork
 from tauledger.corners.model import Corners
 from tauledger.corners.symbols import OPEN, Term
 from tauledger.quantity import format_quantity
+from tauledger.records import dataclass
 from tauledger.smallsignal import LinearNetwork
 from tauledger.topology.model import StageOutline, Topology, TransistorRole
 

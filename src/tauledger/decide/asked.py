@@ -2,11 +2,10 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
-
 from tauledger.configuration.tolerances import Window, letter_window
 from tauledger.problems import Problem, ProblemError, Severity
 from tauledger.quantity import parse_si
+from tauledger.records import dataclass
 
 VALUE, SUPPLY, TEMPERATURE = "value", "supply", "temperature"
 QUANTITIES = {

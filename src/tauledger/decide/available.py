@@ -4,10 +4,10 @@ from __future__ import annotations
 
 from bisect import bisect_left
 from collections.abc import Sequence
-from dataclasses import dataclass
 
 from tauledger.configuration.settings import PathSettings
 from tauledger.decide.series import within
+from tauledger.records import dataclass
 from tauledger.review.limits import class_of
 
 ELECTROLYTIC_F = 1e-6

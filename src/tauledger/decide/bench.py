@@ -9,7 +9,7 @@ frequency.
 from __future__ import annotations
 
 from collections.abc import Callable, Mapping, Sequence
-from dataclasses import dataclass, replace
+from dataclasses import field, replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -20,11 +20,14 @@ from tauledger.bias.equations import Variations
 from tauledger.circuit.elements import Circuit, IndependentSource
 from tauledger.corners.band import HALF_POWER, find_passband, sweep_response
 from tauledger.decide.edges import find_edges
+from tauledger.decide.judged import RESISTANCES, Wanted, bias_figures, hold_of
 from tauledger.decide.networks import Networks
+from tauledger.decide.ports import port_resistances
 from tauledger.problems import Problem, ProblemError, Severity
+from tauledger.records import dataclass
 from tauledger.smallsignal import drive_vector, linear_network, response, sense_vector
-from tauledger.smallsignal.network import LinearNetwork
 from tauledger.smallsignal.modes import natural_frequencies
+from tauledger.smallsignal.network import LinearNetwork
 
 FloatArray = NDArray[np.float64]
 IntArray = NDArray[np.intp]
@@ -51,6 +54,10 @@ class Bench:
     high_hz: float | None
     size: int
     """Unknowns of its equations."""
+    wanted: Wanted = field(default_factory=Wanted)
+    """What else is measured on every board."""
+    responds: bool = True
+    """Whether gain and corners are measured; without them only what else is wanted is."""
 
     @property
     def most_boards(self) -> int:
@@ -74,6 +81,9 @@ class Figures:
     low_peak: FloatArray
     """Highest |H| between midband and the corner over |H| at midband, at least 1."""
     high_peak: FloatArray
+    others: Mapping[str, FloatArray] = field(default_factory=dict)
+    """What else the bench wanted, by name; for a part that must set a corner, how strongly it
+    holds it, the strongest being 1."""
 
     @property
     def measured(self) -> NDArray[np.bool_]:
@@ -81,9 +91,9 @@ class Figures:
         return ~np.isnan(self.gain)
 
     def figure(self, name: str) -> FloatArray:
-        """By name: ``gain``, ``low corner`` or ``high corner``."""
+        """By name: ``gain``, ``low corner``, ``high corner`` or one of ``others``."""
         columns = {"gain": self.gain, "low corner": self.low_hz, "high corner": self.high_hz}
-        return columns[name]
+        return columns[name] if name in columns else self.others[name]
 
 
 def bench_of(analysis: Analysis) -> Bench:
@@ -150,7 +160,7 @@ def measure(
         some = slice(start, start + bench.most_boards)
         part = {name: value[some] if value.size > 1 else value for name, value in varied.items()}
         at = warmth[some] if warmth is not None and warmth.size > 1 else temperature_c
-        found.append(measure_solution(bench, solve(bench, part, at), leaders))
+        found.append(measure_solution(bench, solve(bench, part, at), leaders, part))
     return found[0] if len(found) == 1 else _joined(found)
 
 
@@ -175,6 +185,7 @@ def _joined(found: Sequence[Figures]) -> Figures:
         parts,
         join(lambda f: f.low_peak),
         join(lambda f: f.high_peak),
+        {name: np.concatenate([f.others[name] for f in found]) for name in found[0].others},
     )
 
 
@@ -188,24 +199,62 @@ def solve(
         return solve_bias(bench.circuit, variations, temperature_c)
 
 
-def measure_solution(bench: Bench, solution: BiasSolution, leaders: bool = False) -> Figures:
-    """Figures of every board of a bias solution."""
+def measure_solution(
+    bench: Bench,
+    solution: BiasSolution,
+    leaders: bool = False,
+    variations: Variations | None = None,
+) -> Figures:
+    """Figures of every board of a bias solution, which was found with ``variations``."""
     with np.errstate(all="ignore"):
         network = linear_network(solution)
     alive = np.flatnonzero(
         solution.state.converged & np.isfinite(network.conductance).all(axis=(1, 2))
     )
+    found = _responses(bench, network, alive, leaders)
+    others = bias_figures(bench.wanted.figures, solution, alive)
+    others |= _resistances(bench, network, alive, variations or {})
+    others |= dict(zip(_holders(bench), found[_FIXED:], strict=True))
+    boards = solution.equations.boards
+    return replace(
+        _figures([_spread_out(values, alive, boards) for values in found[:_FIXED]], network),
+        others={name: _spread_out(values, alive, boards) for name, values in others.items()},
+    )
+
+
+def _responses(
+    bench: Bench, network: LinearNetwork, alive: IntArray, leaders: bool
+) -> list[FloatArray]:
+    """Gain, corners and leaders of the boards alive, with a pivoting solver where it takes one."""
+    if not bench.responds:
+        return [np.full(alive.size, np.nan) for _ in range(_FIXED + len(_holders(bench)))]
     networks = Networks.of(network, alive, *_ends(bench, network))
     found, unsure = _measure(bench, networks, network, leaders)
     if unsure.any():
-        # Boards on which the common order of elimination lost digits get a pivoting solver.
+        # Boards on which the common order of elimination lost digits.
         redo = np.flatnonzero(unsure)
         dense = Networks.of(network, alive[redo], *_ends(bench, network), dense=True)
         again, _ = _measure(bench, dense, network, leaders)
         for whole, part in zip(found, again, strict=True):
             whole[redo] = part
-    boards = solution.equations.boards
-    return _figures([_spread_out(values, alive, boards) for values in found], network)
+    return found
+
+
+def _resistances(
+    bench: Bench, network: LinearNetwork, alive: IntArray, variations: Variations
+) -> dict[str, FloatArray]:
+    ports = bench.wanted.ports
+    asked = [f.name for f in bench.wanted.figures if f.kind in RESISTANCES]
+    if ports is None or not asked:
+        return {}
+    ends = _ends(bench, network)
+    found = port_resistances(ports, network, alive, *ends, variations)
+    return {name: value for name, value in zip(RESISTANCES, found, strict=True) if name in asked}
+
+
+def _holders(bench: Bench) -> list[str]:
+    """Names of what :func:`_measure` gives after its figures, in its order."""
+    return [h.name for end in ("low", "high") for h in bench.wanted.holders if h.end == end]
 
 
 def measure_values(
@@ -221,7 +270,11 @@ def measure_values(
     if unsure.any():
         dense = replace(networks, plan=None)
         found, _ = _measure(bench, dense, network, leaders=False)
-    return _figures(found, network)
+    return _figures(found[:_FIXED], network)
+
+
+_FIXED = 7
+"""Figures of :func:`_measure` that are there whatever is wanted."""
 
 
 def _figures(found: Sequence[FloatArray], network: LinearNetwork) -> Figures:
@@ -239,11 +292,14 @@ def _ends(bench: Bench, network: LinearNetwork) -> tuple[FloatArray, FloatArray]
 def _measure(
     bench: Bench, networks: Networks, network: LinearNetwork, leaders: bool
 ) -> tuple[list[FloatArray], NDArray[np.bool_]]:
-    """Gain, corners and leaders of the boards alive, and which of them to solve again."""
+    """Gain, corners, leaders and holds of the boards alive, and which of them to solve again."""
     gain, middle_moves, doubt = networks.probe(bench.midband_hz, network.parts, leaders)
     target = np.log(gain * HALF_POWER)
-    edges, peaks, winners = [], [], []
+    edges, peaks, winners, holds = [], [], [], []
+    names = [part.name for part in network.parts]
     for nominal, upward in ((bench.low_hz, False), (bench.high_hz, True)):
+        wanted = [h.part for h in bench.wanted.holders if h.end == ("high" if upward else "low")]
+        held = [np.full(networks.boards, np.nan) for _ in wanted]
         edge = np.full(networks.boards, np.nan)
         peak = np.full(networks.boards, -np.inf)
         winner = np.full(networks.boards, np.nan)
@@ -255,10 +311,14 @@ def _measure(
             if leaders and len(moves):
                 winner = np.argmax(np.abs(moves - middle_moves), axis=0).astype(float)
                 winner[np.isnan(edge)] = np.nan
+                held = [hold_of(part, names, moves - middle_moves, upward) for part in wanted]
+                for hold in held:
+                    hold[np.isnan(edge)] = np.nan
         edges.append(edge)
         peaks.append(np.maximum(np.exp(peak) / gain, 1.0))
         winners.append(winner)
-    return [gain, *edges, *peaks, *winners], doubt > 1e-8
+        holds += held
+    return [gain, *edges, *peaks, *winners, *holds], doubt > 1e-8
 
 
 def _spread_out(values: FloatArray, alive: IntArray, boards: int) -> FloatArray:

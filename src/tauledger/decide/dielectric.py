@@ -3,11 +3,11 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass
 
 import numpy as np
 
 from tauledger.configuration.settings import CapacitorClass
+from tauledger.records import dataclass
 
 _LOWEST_C = {"X": -55.0, "Y": -30.0, "Z": 10.0}
 _HIGHEST_C = {

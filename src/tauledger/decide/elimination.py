@@ -14,10 +14,11 @@ equations with a threshold is common practice in circuit programs (both from mem
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
+
+from tauledger.records import dataclass
 
 ComplexArray = NDArray[np.complex128]
 FloatArray = NDArray[np.float64]

@@ -4,12 +4,13 @@ from __future__ import annotations
 
 import math
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass, replace
+from dataclasses import replace
 
 import numpy as np
 from numpy.typing import NDArray
 
 from tauledger.decide.elimination import Factors, Plan, plan_elimination
+from tauledger.records import dataclass
 from tauledger.smallsignal.network import LinearNetwork, ReactivePart
 
 FloatArray = NDArray[np.float64]

@@ -28,6 +28,8 @@ SIGMAS = 3.0
 """A tolerance is this many standard deviations of the normal (common practice, no source)."""
 _TAIL = 0.0013498980316300933
 """Φ(−3)."""
+_DENSITY = math.exp(-0.5 * SIGMAS**2) / math.sqrt(2.0 * math.pi)
+"""φ(3)."""
 _ROUNDS = 6
 
 
@@ -88,12 +90,25 @@ def deviations(draws: FloatArray, low: float, high: float, distribution: str) ->
 
 
 def standard_deviation(low: float, high: float, distribution: str) -> float:
-    """Of one deviation; for a lopsided window, that of the even one of the same width."""
+    """Of one deviation, exactly, lopsided windows included."""
     if distribution == "uniform":
         return (high - low) / math.sqrt(12.0)
-    # Variance of a normal cut at ±3σ: 1 − 2·3·φ(3)/(1 − 2Φ(−3)).
-    cut = 1.0 if distribution == "normal" else 0.9865784925167297
-    return cut * (high - low) / (2.0 * SIGMAS)
+    centre = 0.0 if low < 0.0 < high else (low + high) / 2.0
+    below, above = (centre - low) / SIGMAS, (high - centre) / SIGMAS
+    # The mean is (above − below)·E|z|/2, the mean square (below² + above²)·E[z²]/2.
+    square, size = _MOMENTS[distribution]
+    mean = (above - below) * size / 2.0
+    return math.sqrt((below**2 + above**2) * square / 2.0 - mean**2)
+
+
+_MOMENTS = {
+    "normal": (1.0, math.sqrt(2.0 / math.pi)),
+    "truncated": (
+        1.0 - 2.0 * SIGMAS * _DENSITY / (1.0 - 2.0 * _TAIL),
+        2.0 * (1.0 / math.sqrt(2.0 * math.pi) - _DENSITY) / (1.0 - 2.0 * _TAIL),
+    ),
+}
+"""E[z²] and E|z| of a standard normal, and of one cut off at ±3."""
 
 
 _CENTRE = (

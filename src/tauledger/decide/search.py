@@ -2,8 +2,10 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass, replace
+from dataclasses import replace
+from typing import NamedTuple
 
 import numpy as np
 from numpy.typing import NDArray
@@ -11,6 +13,7 @@ from numpy.typing import NDArray
 from tauledger.circuit.elements import Capacitor
 from tauledger.decide.available import Stock
 from tauledger.decide.bench import Bench, measure_values
+from tauledger.records import dataclass
 from tauledger.smallsignal.network import LinearNetwork
 
 FloatArray = NDArray[np.float64]
@@ -41,6 +44,17 @@ class Wish:
     """Where the gain is judged, when the user fixed it."""
 
 
+class Measured(NamedTuple):
+    """Of each board, (boards,)."""
+
+    corner_hz: FloatArray
+    """Exact −3 dB frequency; NaN where there is none."""
+    peak: FloatArray
+    """Highest response towards the corner, as a ratio to midband, at least 1."""
+    gain: FloatArray
+    """|H| at the midband frequency of the bench."""
+
+
 @dataclass(frozen=True, slots=True)
 class Search:
     """The bench, the capacitors that may change, and what they may become."""
@@ -55,18 +69,18 @@ class Search:
     """What the nominal exact corner has to meet."""
     highest_peak: float = HIGHEST_PEAK
     """Ratio to midband that the response may reach on its way to the corner."""
-
-    def corner(self, values_f: FloatArray) -> FloatArray:
-        """(boards,): exact corners with (parts, boards) capacitances; NaN where there is none."""
-        return self._measured(values_f)[0]
+    gains: tuple[float, float] = (0.0, math.inf)
+    """|H| at midband as the netlist stands, and with every part out of the way that ends the band:
+    a narrow one stays below that. Between them the band is still the amplifier's."""
 
     def met(self, values_f: FloatArray) -> NDArray[np.bool_]:
-        """(boards,): whether the corner meets the limit (no corner at all does) with a band that
-        is still the amplifier's: no more peak than allowed, and the gain as it was."""
-        corner, peak, gain = self._measured(values_f)
-        calm = peak <= self.highest_peak
-        same = np.abs(np.log(gain / self.bench.gain)) <= GAIN_KEPT
-        return np.asarray(self.reaches(corner) & calm & same)
+        """(boards,): whether (parts, boards) capacitances meet the limit with a band that is still
+        the amplifier's: no more peak than allowed, and the gain as it was."""
+        return self.good(self.measured(values_f))
+
+    def good(self, found: Measured) -> NDArray[np.bool_]:
+        """The same of what was measured."""
+        return np.asarray(self.reaches(found.corner_hz) & self.calm(found) & self.same(found))
 
     def reaches(self, corner_hz: FloatArray) -> NDArray[np.bool_]:
         """Whether corners meet the limit; none at all, as NaN, does."""
@@ -74,26 +88,41 @@ class Search:
         good = corner_hz <= self.limit_hz if low else corner_hz >= self.limit_hz
         return np.asarray(good | np.isnan(corner_hz))
 
+    def calm(self, found: Measured) -> NDArray[np.bool_]:
+        """Whether the response peaks no more than allowed."""
+        return np.asarray(found.peak <= self.highest_peak)
+
+    def gain_change(self, found: Measured) -> FloatArray:
+        """(boards,): how far the midband gain is outside :attr:`gains`, in nepers."""
+        lowest, highest = min(self.gains), max(self.gains)
+        with np.errstate(divide="ignore"):
+            off = np.maximum(np.log(lowest / found.gain), np.log(found.gain / highest))
+        return np.asarray(np.maximum(off, 0.0))
+
+    def same(self, found: Measured) -> NDArray[np.bool_]:
+        """Whether the midband gain is still what it was, or what a wider band makes it."""
+        return np.asarray(self.gain_change(found) <= GAIN_KEPT)
+
     def peak(self, values_f: FloatArray) -> float:
         """Of one board, as a ratio to midband."""
-        return float(self._measured(values_f[:, None])[1][0])
+        return float(self.measured(values_f[:, None]).peak[0])
 
-    def _measured(self, values_f: FloatArray) -> tuple[FloatArray, FloatArray, FloatArray]:
-        """Corner, peak towards it, and midband gain."""
+    def measured(self, values_f: FloatArray) -> Measured:
+        """Figures of boards with (parts, boards) capacitances in F."""
         found = []
+        low = self.end == "low"
         for start in range(0, values_f.shape[1], BLOCK):
             block = values_f[:, start : start + BLOCK]
             varied = {part.name: block[i] for i, part in enumerate(self.parts)}
             f = measure_values(self.bench, self.network, varied)
-            low = self.end == "low"
             found.append(
                 (f.low_hz if low else f.high_hz, f.low_peak if low else f.high_peak, f.gain)
             )
-        corner, peak, gain = (np.concatenate(columns) for columns in zip(*found, strict=True))
-        return corner, peak, gain
+        return Measured(*(np.concatenate(columns) for columns in zip(*found, strict=True)))
 
     @property
     def now_f(self) -> FloatArray:
+        """(parts,): capacitances as the netlist has them; a new array each time."""
         return np.array([part.capacitance_f for part in self.parts])
 
     def only(self, indices: Sequence[int]) -> Search:

@@ -4,8 +4,8 @@ from __future__ import annotations
 
 import math
 
-from tauledger.smallsignal.network import FloatArray
 from tauledger.smallsignal.modes import natural_frequencies
+from tauledger.smallsignal.network import FloatArray
 
 _STANDSTILL = 1e-6
 """rad/s: slower poles are nodes with no direct path, which never settle."""

@@ -9,19 +9,23 @@ from __future__ import annotations
 
 from collections.abc import Callable, Iterator, Mapping, Sequence
 from concurrent.futures import Executor
-from dataclasses import dataclass
+from dataclasses import field, replace
 
 import numpy as np
 from numpy.typing import NDArray
 
 from tauledger.analysis import Analysis
-from tauledger.configuration.settings import Limit, PathSettings, Quantity
+from tauledger.configuration.settings import Limit, PathSettings
+from tauledger.decide.apart import add_others, linear_names
 from tauledger.decide.asked import Asked
-from tauledger.decide.bench import Bench, bench_of, measure
+from tauledger.decide.bench import Bench, bench_of, measure, measure_solution
+from tauledger.decide.judged import demands_of, wanted_of
 from tauledger.decide.sampling import deviations, latin_hypercube, standard_deviation
-from tauledger.decide.statistics import Sums, histogram, percentiles, wilson_interval
+from tauledger.decide.statistics import Sums, histogram, percentiles
 from tauledger.decide.varied import Variety, board_values, variety_of
 from tauledger.decide.worst import FIGURES, Alone, each_alone, worst_cases
+from tauledger.decide.yields import demand_rows, kept_by, total_yield, yield_of
+from tauledger.records import dataclass
 from tauledger.review.decisions import (
     Contribution,
     DrawRow,
@@ -31,7 +35,6 @@ from tauledger.review.decisions import (
     Percentile,
     Spread,
     WorstCase,
-    Yield,
 )
 from tauledger.version import VERSION
 
@@ -43,7 +46,8 @@ BOARDS = 10_000
 MOST_BOARDS = 1_000_000
 INSIDE = "a board inside the tolerances"
 """In place of the ends, where a board is worse than every combination of them."""
-LIMITS = {"midband_gain": "gain", "low_corner": "low corner", "high_corner": "high corner"}
+_UNIT = {"V": 1.0, "A": 1e-3, "%": 1.0}
+"""What differences are counted in, so that their squares stay well above rounding."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -55,6 +59,16 @@ class Plan:
     boards: int
     seed: int
     distribution: str
+    others: Mapping[str, float] = field(default_factory=dict)
+    """Figures beside gain and corners, and what they are on the nominal board."""
+
+    @property
+    def names(self) -> tuple[str, ...]:
+        """Everything measured on every board."""
+        return (*FIGURES, *self.bench.wanted.names)
+
+    def nominal(self, name: str, alone: Alone) -> float:
+        return self.others[name] if name in self.others else float(alone.nominal.figure(name)[0])
 
 
 @dataclass(frozen=True, slots=True)
@@ -99,21 +113,33 @@ def spread(
     ProblemError
         When there is no passband or no tolerance is known.
     """
-    bench = bench_of(analysis)
+    demands = demands_of(analysis, settings)
+    plain = bench_of(analysis)
+    bench = replace(plain, wanted=wanted_of(demands, analysis))
     variety = variety_of(analysis.circuit, bench.source, settings, asked)
     configured = settings.spread.distribution if settings and settings.spread else ""
-    plan = Plan(bench, variety, boards, seed, distribution or configured or "uniform")
-    alone = each_alone(bench, variety)
-    blocks = list(_run(plan, executor, progress))
-    found = {name: np.concatenate([block.figures[name] for block in blocks]) for name in FIGURES}
-    nominal = {name: float(alone.nominal.figure(name)[0]) for name in FIGURES}
-    unit = "Ω" if analysis.topology.path.source_is_current else "V/V"
-    limits = {LIMITS[limit.figure]: limit for limit in _limits(settings, unit)}
-    rows = tuple(
-        _figure(plan, alone, blocks, name, found[name], limits.get(name), unit)
-        for name in FIGURES
-        if not np.isnan(nominal[name]) and not np.isnan(found[name]).all()
+    apart = replace(bench, responds=False)
+    nominal = measure_solution(apart, analysis.solution).others
+    plan = Plan(
+        bench,
+        variety,
+        boards,
+        seed,
+        distribution or configured or "uniform",
+        {figure.name: float(nominal[figure.name][0]) for figure in demands.figures},
     )
+    alone = add_others(each_alone(plain, variety), apart, variety)
+    blocks = list(_run(plan, executor, progress))
+    found = {name: np.concatenate([block.figures[name] for block in blocks]) for name in plan.names}
+    unit = "Ω" if analysis.topology.path.source_is_current else "V/V"
+    units = {"gain": unit} | {figure.name: figure.unit for figure in demands.figures}
+    limits = dict(reversed(demands.limits))
+    rows = tuple(
+        _figure(plan, alone, blocks, name, found[name], limits.get(name), units.get(name, "Hz"))
+        for name in (*FIGURES, *plan.others)
+        if np.isfinite(plan.nominal(name, alone)) and np.isfinite(found[name]).any()
+    )
+    notes = "; ".join(demands.unjudged)
     return Spread(
         title=analysis.circuit.title,
         netlist=analysis.circuit.path,
@@ -126,9 +152,10 @@ def spread(
         fixed=variety.fixed,
         figures=rows,
         leaders=tuple(_leaders(blocks)),
-        total=_total(found, limits) if limits else None,
-        notes=tuple(_notes(settings, limits)),
+        total=total_yield(demands, found),
+        notes=(f"not judged over the boards: {notes}",) if notes else (),
         problems=analysis.circuit.problems,
+        demands=tuple(demand_rows(demands, found, {row.figure for row in rows})),
     )
 
 
@@ -152,19 +179,29 @@ def run_block(plan: Plan, start: int) -> Block:
     drawn = board_deviations(plan, start, min(start + BLOCK, plan.boards))
     varied, temperature = board_values(plan.bench.circuit, plan.variety, drawn)
     found = measure(plan.bench, varied, temperature, leaders=True)
-    figures = {name: found.figure(name) for name in FIGURES}
-    reference = {
-        "gain": plan.bench.gain, "low corner": plan.bench.low_hz, "high corner": plan.bench.high_hz,
-    }  # fmt: skip
+    figures = {name: found.figure(name) for name in plan.names}
     sums = {
-        name: Sums.of(drawn, np.log(values / (reference[name] or 1.0)))
-        for name, values in figures.items()
+        name: Sums.of(drawn, _from_nominal(plan, name, figures[name]))
+        for name in (*FIGURES, *plan.others)
     }
     leaders = {
         "low": _count(found.low_leader, found.parts),
         "high": _count(found.high_leader, found.parts),
     }
     return Block(figures, sums, leaders)
+
+
+def _from_nominal(plan: Plan, name: str, values: FloatArray) -> FloatArray:
+    """How far each board is from the nominal one, as the correlations count it; else NaN."""
+    if name in (linear := linear_names(plan.bench)):
+        return (values - plan.others[name]) / _UNIT[linear[name]]
+    reference = {
+        "gain": plan.bench.gain, "low corner": plan.bench.low_hz, "high corner": plan.bench.high_hz,
+        **plan.others,
+    }  # fmt: skip
+    with np.errstate(divide="ignore", invalid="ignore"):
+        logs = np.log(values / (reference[name] or 1.0))
+    return np.where(np.isfinite(logs), logs, np.nan)
 
 
 def board_deviations(plan: Plan, start: int, stop: int) -> FloatArray:
@@ -197,33 +234,36 @@ def _figure(
     name: str,
     values: FloatArray,
     limit: Limit | None,
-    gain_unit: str,
+    unit: str,
 ) -> FigureSpread:
-    there = values[~np.isnan(values)]
-    low, high = worst_cases(plan.bench, plan.variety, alone, name)
-    if plan.distribution != "normal":
+    there = values[np.isfinite(values)]
+    linear = name in linear_names(plan.bench)
+    bench = replace(plan.bench, responds=name in FIGURES)
+    low, high = worst_cases(bench, plan.variety, alone, name)
+    edges, counts = histogram(there, linear)
+    if plan.distribution != "normal" and len(counts) > 1:
         # A figure may have its extreme between the ends (a bridge in balance has); a normal
         # deviation may lie outside them.
         low = min(low, (float(there.min()), (INSIDE,)))
         high = max(high, (float(there.max()), (INSIDE,)))
-    edges, counts = histogram(there)
-    nominal = float(alone.nominal.figure(name)[0])
+    nominal = plan.nominal(name, alone)
     sigma = np.array([standard_deviation(d.low, d.high, plan.distribution) for d in _draws(plan)])
-    slopes = np.nan_to_num(alone.slope[name])
+    deviation = float(np.sqrt(((np.nan_to_num(alone.slope[name]) * sigma) ** 2).sum()))
     return FigureSpread(
         figure=name,
-        unit=gain_unit if name == "gain" else "Hz",
+        unit=unit,
         nominal=nominal,
         mean=float(there.mean()),
         deviation=float(there.std(ddof=1)) if there.size > 1 else 0.0,
-        linear_deviation=nominal * float(np.sqrt(((slopes * sigma) ** 2).sum())),
+        linear_deviation=deviation if linear else nominal * deviation,
         percentiles=tuple(Percentile(*pair) for pair in percentiles(there)),
         worst_low=WorstCase(*low),
         worst_high=WorstCase(*high),
         missing=int(values.size - there.size),
-        contributions=_contributions(plan, alone, blocks, name),
+        contributions=_contributions(plan, alone, blocks, name, linear),
         histogram=Histogram(tuple(edges), tuple(counts)),
-        kept=_yield(_kept(values, limit), limit) if limit else None,
+        kept=yield_of(kept_by(values, limit), limit) if limit else None,
+        linear=linear,
     )
 
 
@@ -232,20 +272,22 @@ def _draws(plan: Plan) -> Sequence[DrawRow]:
 
 
 def _contributions(
-    plan: Plan, alone: Alone, blocks: Sequence[Block], name: str
+    plan: Plan, alone: Alone, blocks: Sequence[Block], name: str, linear: bool
 ) -> tuple[Contribution, ...]:
     total = blocks[0].sums[name]
     for block in blocks[1:]:
         total = total + block.sums[name]
     shares = total.shares()
     order = np.argsort(-shares, kind="stable")
+    at_ends = [alone.low[name], alone.high[name]]
+    low, high = at_ends if linear else map(np.expm1, at_ends)
     return tuple(
         Contribution(
             draw.label,
             float(shares[i]),
             float(alone.slope[name][i]) if not draw.unit else None,
-            float(np.expm1(alone.low[name][i])),
-            float(np.expm1(alone.high[name][i])),
+            float(low[i]),
+            float(high[i]),
         )
         for i in order
         for draw in (plan.variety.draws[i],)
@@ -261,56 +303,3 @@ def _leaders(blocks: Sequence[Block]) -> Iterator[LeaderRow]:
         whole = sum(counts.values())
         for part, count in sorted(counts.items(), key=lambda entry: (-entry[1], entry[0])):
             yield LeaderRow(end, part, count / whole)
-
-
-# Limits -------------------------------------------------------------------------------------------
-
-
-def _limits(settings: PathSettings | None, gain_unit: str) -> Iterator[Limit]:
-    """Those of figures that the boards have, in a unit these have."""
-    known = {"Hz", "V/V", "dB"} if gain_unit == "V/V" else {"Hz", gain_unit}
-    for limit in settings.limits if settings else ():
-        ends = [end for end in (limit.minimum, limit.maximum) if end]
-        if limit.figure in LIMITS and all(end.unit in known for end in ends):
-            yield limit
-
-
-def _notes(settings: PathSettings | None, judged: Mapping[str, Limit]) -> Iterator[str]:
-    left = [e for e in settings.limits if e not in judged.values()] if settings else []
-    if left:
-        names = ", ".join(sorted({limit.figure.replace("_", " ") for limit in left}))
-        yield f"not judged over the boards: the limits of {names}"
-
-
-def _kept(values: FloatArray, limit: Limit) -> NDArray[np.bool_]:
-    """Boards inside the limit; one without the figure is outside."""
-    kept = ~np.isnan(values)
-    with np.errstate(invalid="ignore"):
-        if limit.minimum:
-            kept &= _in_unit(values, limit.minimum) >= limit.minimum.value
-        if limit.maximum:
-            kept &= _in_unit(values, limit.maximum) <= limit.maximum.value
-    return kept
-
-
-def _in_unit(values: FloatArray, end: Quantity) -> FloatArray:
-    return 20.0 * np.log10(values) if end.unit == "dB" else values
-
-
-def _yield(kept: NDArray[np.bool_], limit: Limit | None) -> Yield:
-    passed, boards = int(kept.sum()), int(kept.size)
-    low, high = wilson_interval(passed, boards)
-    return Yield(
-        limit.minimum.text if limit and limit.minimum else "",
-        limit.maximum.text if limit and limit.maximum else "",
-        passed,
-        boards,
-        passed / boards,
-        low,
-        high,
-    )
-
-
-def _total(found: Mapping[str, FloatArray], limits: Mapping[str, Limit]) -> Yield:
-    kept = np.logical_and.reduce([_kept(found[name], limit) for name, limit in limits.items()])
-    return _yield(kept, None)

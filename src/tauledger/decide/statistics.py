@@ -3,10 +3,11 @@
 from __future__ import annotations
 
 import math
-from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
+
+from tauledger.records import dataclass
 
 FloatArray = NDArray[np.float64]
 
@@ -40,14 +41,21 @@ def percentiles(values: FloatArray) -> list[tuple[float, float]]:
     return [(percent, float(value)) for percent, value in zip(PERCENTS, found, strict=True)]
 
 
-def histogram(values: FloatArray) -> tuple[list[float], list[int]]:
-    """Edges and counts of equal bins in the logarithm; one bin when all values are the same."""
-    logs = np.log(values)
-    low, high = float(logs.min()), float(logs.max())
-    if high - low < 1e-9:
-        return [math.exp(low), math.exp(high)], [int(values.size)]
-    counts, edges = np.histogram(logs, BINS)
-    return [math.exp(edge) for edge in edges], [int(count) for count in counts]
+def histogram(values: FloatArray, linear: bool = False) -> tuple[list[float], list[int]]:
+    """Edges and counts of equal bins in the logarithm, or in the values themselves.
+
+    One bin when all values are the same.
+    """
+    seen = values if linear else np.log(values)
+    low, high = float(seen.min()), float(seen.max())
+    ends = [low, high] if linear else [math.exp(low), math.exp(high)]
+    # Voltages come from an iteration, which leaves their last digits open.
+    largest = 1e-3 + max(abs(low), abs(high)) if linear else 1.0
+    if high - low < 1e-9 * largest:
+        return ends, [int(values.size)]
+    counts, edges = np.histogram(seen, BINS)
+    shown = edges if linear else np.exp(edges)
+    return [float(edge) for edge in shown], [int(count) for count in counts]
 
 
 @dataclass(frozen=True, slots=True)

@@ -1,7 +1,7 @@
-"""Stress at the operating point: capacitor voltages and polarity, what discharges them, power.
+"""Stress at the operating point: capacitor voltages and polarity, what discharges them, heat.
 
-Only ratings that the configuration gives are held against anything. Figures that are merely
-remembered (leakage rules, surge factors) are no limits here.
+Only ratings that the configuration or a model card gives are held against anything. Figures that
+are merely remembered (leakage rules, surge factors) are no limits here.
 """
 
 from __future__ import annotations
@@ -11,16 +11,17 @@ from collections.abc import Iterator, Sequence
 import numpy as np
 
 from tauledger.analysis import Analysis
-from tauledger.circuit.elements import Capacitor, Element, Resistor
-from tauledger.configuration.settings import PathSettings, ResistorClass
+from tauledger.circuit.elements import Capacitor, Element, Resistor, SemiconductorDevice
+from tauledger.configuration.settings import PathSettings
 from tauledger.decide.bench import bench_of, measure_values
 from tauledger.decide.dielectric import Effective, code_limits, effective
 from tauledger.decide.discharge import Discharge
+from tauledger.decide.dissipation import device_heat, overloads, resistor_heat
 from tauledger.decide.settling import settling_time, slowest_pole
 from tauledger.problems import Problem, ProblemError, Severity
 from tauledger.quantity import format_quantity
 from tauledger.review.check import REVERSED_VOLTS, polarised_by
-from tauledger.review.decisions import CapacitorStress, ResistorStress, Stress
+from tauledger.review.decisions import CapacitorStress, DeviceStress, ResistorStress, Stress
 from tauledger.review.limits import class_of
 from tauledger.version import VERSION
 
@@ -43,13 +44,18 @@ CAUTION_CHARGED = (
 def stress(
     analysis: Analysis, settings: PathSettings | None = None, margin: float = MARGIN
 ) -> Stress:
-    """Stress of every capacitor and resistor of the netlist, with findings."""
+    """Stress of every capacitor, resistor, transistor and diode of the netlist, with findings.
+
+    The load that the configuration attaches is no part of the board and has no row.
+    """
     network = analysis.network
     capacitors: list[CapacitorStress] = []
     problems: list[Problem] = []
     changed: dict[str, float] = {}
     discharge = Discharge(analysis.circuit, analysis.topology.path.source)
-    for element in analysis.circuit.elements:
+    circuit = analysis.circuit
+    parts = [element for element in circuit.elements if element.name not in circuit.attached]
+    for element in parts:
         if isinstance(element, Capacitor):
             left = _effective(element, analysis, settings)
             row = _capacitor(element, analysis, settings, margin, discharge, left)
@@ -57,20 +63,23 @@ def stress(
             problems += _findings(element, row, left, settings, margin)
             if row.effective_f is not None:
                 changed[element.name] = row.effective_f
-    resistors = []
-    for element in analysis.circuit.elements:
+    resistors: list[ResistorStress] = []
+    devices: list[DeviceStress] = []
+    for element in parts:
         if isinstance(element, Resistor):
-            load = _resistor(element, analysis, settings)
-            resistors.append(load)
-            problems += _overload(element, load)
+            resistors.append(resistor_heat(element, analysis, settings))
+            problems += overloads(element, resistors[-1])
+        elif isinstance(element, SemiconductorDevice):
+            devices.append(device_heat(element, analysis, settings))
+            problems += overloads(element, devices[-1])
     rate = slowest_pole(network.conductance[0], network.reactance[0])
     corners = analysis.corners
     low, high = _with(analysis, changed)
     return Stress(
-        title=analysis.circuit.title,
-        netlist=analysis.circuit.path,
+        title=circuit.title,
+        netlist=circuit.path,
         version=VERSION,
-        temperature_c=analysis.circuit.temperature_c,
+        temperature_c=circuit.temperature_c,
         margin=margin,
         capacitors=tuple(capacitors),
         resistors=tuple(resistors),
@@ -80,8 +89,9 @@ def stress(
         low_effective_hz=low,
         high_hz=corners.high.exact_hz,
         high_effective_hz=high,
-        notes=tuple(_notes(capacitors, settings)),
-        problems=(*analysis.circuit.problems, *problems),
+        notes=tuple(_notes(capacitors, devices, settings)),
+        problems=(*circuit.problems, *problems),
+        devices=tuple(devices),
     )
 
 
@@ -201,8 +211,17 @@ def _with(analysis: Analysis, changed: dict[str, float]) -> tuple[float | None, 
     return (None if np.isnan(low) else low), (None if np.isnan(high) else high)
 
 
-def _notes(capacitors: Sequence[CapacitorStress], settings: PathSettings | None) -> Iterator[str]:
+def _notes(
+    capacitors: Sequence[CapacitorStress],
+    devices: Sequence[DeviceStress],
+    settings: PathSettings | None,
+) -> Iterator[str]:
     yield "voltages are direct ones; signal, ripple and the moment of switch-on come on top"
+    if devices:
+        yield (
+            "heat is that at rest, and a rating that of the device as it is cooled: data sheets "
+            "state it for one temperature, above which it falls"
+        )
     if not any(row.polarised for row in capacitors):
         yield (
             "nothing says which capacitors are polarised: a class with polarised = true in "
@@ -215,37 +234,3 @@ def _notes(capacitors: Sequence[CapacitorStress], settings: PathSettings | None)
                 f"{found.name}: what {found.dielectric.upper()} loses at direct voltage is not in "
                 "the code; bias_curve in tauledger.toml takes it from the maker's sheet"
             )
-
-
-# Resistors ----------------------------------------------------------------------------------------
-
-
-def _resistor(
-    element: Resistor, analysis: Analysis, settings: PathSettings | None
-) -> ResistorStress:
-    voltage = _voltage(element, analysis)
-    power = voltage * voltage / abs(element.resistance_ohm) if element.resistance_ohm else 0.0
-    found = _resistor_class(element.name, settings)
-    rated = found.rated_power_w if found else None
-    return ResistorStress(element.name, power, rated, power / rated if rated else None)
-
-
-def _resistor_class(name: str, settings: PathSettings | None) -> ResistorClass | None:
-    import fnmatch
-
-    for found in settings.resistors if settings else ():
-        if any(fnmatch.fnmatchcase(name.lower(), pattern) for pattern in found.match):
-            return found
-    return None
-
-
-def _overload(element: Resistor, row: ResistorStress) -> Iterator[Problem]:
-    if row.rated_w is not None and row.power_w > row.rated_w:
-        yield Problem(
-            "resistor-overloaded",
-            Severity.ERROR,
-            f"{row.part} turns {format_quantity(row.power_w, 'W')} into heat and is rated "
-            f"{format_quantity(row.rated_w, 'W')}",
-            element.span,
-            "Fit a larger one. Caution: it gets hot enough to burn skin and board.",
-        )

@@ -8,7 +8,6 @@ from __future__ import annotations
 
 import fnmatch
 from collections.abc import Callable, Iterable, Iterator, Mapping, Sequence
-from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
@@ -34,6 +33,7 @@ from tauledger.devices.interface import (
     ZERO_CELSIUS_K,
 )
 from tauledger.problems import Problem, ProblemError, Severity
+from tauledger.records import dataclass
 
 FloatArray = NDArray[np.float64]
 
@@ -109,8 +109,9 @@ class _Builder:
         if not group:
             indices = [self._draw(Draw(label, *window, unit))]
         else:
-            what = QUANTITIES.get(quantity, "")
-            together = f"{group}: {what} of all" if what else f"{group}: all"
+            # Classes of resistors and of capacitors may have one name: they do not stray together.
+            what = QUANTITIES.get(quantity) or _MEASURES[type(element)]
+            together = f"{group}: {what} of all"
             if together not in self._shared:
                 self._shared[together] = self._draw(Draw(together, *window, unit))
             indices = [self._shared[together]]
@@ -126,6 +127,9 @@ class _Builder:
     def _draw(self, draw: Draw) -> int:
         self.draws.append(draw)
         return len(self.draws) - 1
+
+
+_MEASURES: Mapping[type[Element], str] = {Resistor: "resistance", Capacitor: "capacitance"}
 
 
 def _label(element: Element, quantity: str) -> str:
@@ -155,7 +159,7 @@ def _windows(
             if entry.quantity == quantity and _fits(element.name, (entry.pattern,)):
                 used.add(entry)
                 by_hand.setdefault(quantity, entry.window)
-            if quantity == SUPPLY and entry.pattern == SUPPLY:
+            if quantity == SUPPLY and (entry.pattern == SUPPLY or _names_source(element, entry)):
                 used.add(entry)
                 by_hand.setdefault(quantity, entry.window)
     for quantity, window in by_hand.items():
@@ -164,6 +168,12 @@ def _windows(
         for found in _configured(element, settings):
             if found[0] not in by_hand and found[0] in quantities:
                 yield found
+
+
+def _names_source(element: Element, entry: Asked) -> bool:
+    """Whether a pattern is for voltage sources: ``*`` alone is for parts."""
+    own = entry.pattern.rpartition(".")[2]
+    return entry.quantity == VALUE and own.startswith("v") and _fits(element.name, (entry.pattern,))
 
 
 def _quantities(element: Element) -> tuple[str, ...]:
@@ -315,10 +325,19 @@ def _base_emitter_voltage(
     shift: FloatArray,
     varied: dict[str, FloatArray],
 ) -> None:
-    """VBE = n·(kT/q)·ln(IC/IS): a shift at constant current is a factor of IS."""
-    kelvin = circuit.temperature_c + ZERO_CELSIUS_K
-    thermal = card.get("nf", 1.0) * BOLTZMANN_J_PER_K * kelvin / ELEMENTARY_CHARGE_C
-    varied[f"{name}.is"] = card.get("is", 1e-16) * np.exp(-shift / thermal)
+    """VBE = n·(kT/q)·ln(I/IS): a shift at constant currents is a factor of IS.
+
+    So it is for the leakage ISE with its own n: else a shift of VBE would change the current gain.
+    """
+    thermal = BOLTZMANN_J_PER_K * (circuit.temperature_c + ZERO_CELSIUS_K) / ELEMENTARY_CHARGE_C
+    main = ("ibe", "ibc") if card.keys() >= {"ibe", "ibc"} else ("is",)
+    leakage = next((key for key in ("ise", "c2") if key in card), "")
+    for key in main:
+        factor = np.exp(-shift / (card.get("nf", 1.0) * thermal))
+        varied[f"{name}.{key}"] = card.get(key, 1e-16) * factor
+    if leakage:
+        factor = np.exp(-shift / (card.get("ne", 1.5) * thermal))
+        varied[f"{name}.{leakage}"] = card[leakage] * factor
 
 
 def _drain_current(
@@ -339,12 +358,21 @@ def _pinch_off(
     shift: FloatArray,
     varied: dict[str, FloatArray],
 ) -> None:
-    """IDSS = β·VTO² stays, so β falls as VTO² grows."""
+    """IDSS stays, so β falls as VTO² grows."""
     threshold = _threshold_key(card) or "vto"
-    varied[f"{name}.{threshold}"] = card.get(threshold, -2.0) * (1.0 + shift)
+    nominal = np.asarray(card.get(threshold, -2.0))
+    moved = nominal * (1.0 + shift)
+    varied[f"{name}.{threshold}"] = moved
     key = f"{name}.beta"
     beta = varied.get(key, np.full(shift.shape, card.get("beta", 1e-4)))
-    varied[key] = beta / (1.0 + shift) ** 2
+    varied[key] = beta * _per_beta(card, nominal) / _per_beta(card, moved)
+
+
+def _per_beta(card: Mapping[str, float], threshold: FloatArray) -> FloatArray:
+    """IDSS/β = v²·(B + (1 − B)·v/(PB + v)) with v = −VTO: see :mod:`tauledger.devices.jfet`."""
+    tail, reach = card.get("b", 1.0), -threshold
+    curved = (1.0 - tail) * reach / (card.get("pb", 1.0) + reach)
+    return np.asarray(reach**2 * (tail + curved))
 
 
 def _threshold_voltage(

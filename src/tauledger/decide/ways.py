@@ -1,4 +1,7 @@
-"""Ways to meet a corner: each a rule of what is best, and a search among the values at hand."""
+"""Ways to meet a low corner: each a rule of what is best, and a search among the values at hand.
+
+Those for a high corner are in :mod:`tauledger.decide.ways_high`.
+"""
 
 from __future__ import annotations
 
@@ -9,11 +12,10 @@ import numpy as np
 
 from tauledger.decide.available import common_values
 from tauledger.decide.search import BLOCK, FloatArray, Search, Wish
+from tauledger.decide.ways_high import FEWEST_CHANGES, UNCHANGED, high_ways
 
 LEAST_TOTAL = "least total capacitance"
 FEWEST_VALUES = "fewest different values"
-FEWEST_CHANGES = "fewest changes"
-CLOSEST = "closest to the target"
 AS_SHARED = "shares as asked"
 _MOST_COMBINATIONS = 4096
 _VALUES_EACH = 6
@@ -23,8 +25,9 @@ _FEW_COMBINATIONS = 600
 
 
 def ways(search: Search, wish: Wish) -> Iterator[tuple[str, FloatArray]]:
+    """Each way with its (parts,) capacitances in F, verified by the exact corner of ``search``."""
     if wish.end == "high":
-        yield from _closest(search)
+        yield from high_ways(search)
         return
     values = _least_total(search) if wish.shares is None else _as_shared(search)
     if values is not None:
@@ -35,23 +38,12 @@ def ways(search: Search, wish: Wish) -> Iterator[tuple[str, FloatArray]]:
         values = _fewest_values(search)
         if values is not None:
             yield FEWEST_VALUES, values
+    if bool(search.met(search.now_f[:, None])[0]):
+        yield UNCHANGED, search.now_f
+        return
     values = _fewest_changes(search)
     if values is not None:
         yield FEWEST_CHANGES, values
-
-
-def _closest(search: Search) -> Iterator[tuple[str, FloatArray]]:
-    """One capacitor at a time: the largest value that keeps the high corner."""
-    for i in range(min(len(search.parts), 3)):
-        one = search.only([i])
-        table = np.array([one.stocks[0].values_f])
-        good = one.met(table)
-        # From the smallest value on: far beyond the first failure the band is another one.
-        count = int(np.argmin(good)) if not good.all() else good.size
-        if count:
-            values = search.now_f
-            values[i] = table[0, count - 1]
-            yield CLOSEST, values
 
 
 def _least_total(search: Search, most: int = _MOST_COMBINATIONS) -> FloatArray | None:
@@ -153,8 +145,6 @@ def _two_values(search: Search) -> FloatArray | None:
 
 def _fewest_changes(search: Search) -> FloatArray | None:
     """As few capacitors changed as will do, the others as they stand; of those, the least total."""
-    if bool(search.met(search.now_f[:, None])[0]):
-        return search.now_f
     tried = min(len(search.parts), _PARTS_TRIED)
     for count in range(1, min(len(search.parts), 4)):
         best: FloatArray | None = None

@@ -1,23 +1,25 @@
-"""What each draw does alone, and the worst of all together: real solves, not extrapolation."""
+"""What each draw does alone, and the worst of all together: real solves, not extrapolation.
+
+Only the slopes at the nominal board need none; they come from :mod:`tauledger.decide.slopes`.
+"""
 
 from __future__ import annotations
 
 import itertools
 from collections.abc import Sequence
-from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
 
 from tauledger.decide.bench import Bench, Figures, measure
+from tauledger.decide.slopes import figure_slopes
 from tauledger.decide.varied import Draw, Variety, board_values
+from tauledger.records import dataclass
 
 FloatArray = NDArray[np.float64]
 
 LEADING = 6
 """So many of the strongest draws are tried at both ends in every combination."""
-_STEPS = {"": 1e-3, "V": 1e-4, "°C": 0.1}
-"""Of the central differences: relative, volts, kelvins."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -41,28 +43,20 @@ def measure_deviations(bench: Bench, variety: Variety, deviations: FloatArray) -
 
 
 def each_alone(bench: Bench, variety: Variety) -> Alone:
-    """Solve the nominal board and each draw at its ends and a small step either way."""
+    """Solve the nominal board and each draw at its ends; slopes from the nominal board."""
     draws = variety.draws
     size = len(draws)
-    columns = [
-        [draw.low for draw in draws],
-        [draw.high for draw in draws],
-        [-_STEPS[draw.unit] for draw in draws],
-        [_STEPS[draw.unit] for draw in draws],
-    ]
-    deviations = np.zeros((size, 1 + 4 * size))
-    for block, values in enumerate(columns):
-        start = 1 + block * size
-        deviations[np.arange(size), start + np.arange(size)] = values
+    deviations = np.zeros((size, 1 + 2 * size))
+    diagonal = np.arange(size)
+    deviations[diagonal, 1 + diagonal] = [draw.low for draw in draws]
+    deviations[diagonal, 1 + size + diagonal] = [draw.high for draw in draws]
     found = measure_deviations(bench, variety, deviations)
-    low, high, slope = {}, {}, {}
+    low, high = {}, {}
     for figure in FIGURES:
         with np.errstate(invalid="ignore"):
             logs = np.log(found.figure(figure))
-        parts = (logs[1:] - logs[0]).reshape(4, size)
-        low[figure], high[figure] = parts[0], parts[1]
-        slope[figure] = (parts[3] - parts[2]) / (2.0 * np.array(columns[3]))
-    return Alone(found, low, high, slope)
+        low[figure], high[figure] = (logs[1:] - logs[0]).reshape(2, size)
+    return Alone(found, low, high, figure_slopes(bench, variety))
 
 
 def worst_cases(

@@ -10,13 +10,13 @@ growth of beta, BF and BR ``(T/Tnom)^XTB``, and most parameters a quadratic in T
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass
 
 import numpy as np
 
 from tauledger.devices import junction
 from tauledger.devices.interface import Card, FloatArray, Value, columns
 from tauledger.devices.junction import Depletion
+from tauledger.records import dataclass
 
 
 @dataclass(frozen=True, slots=True)

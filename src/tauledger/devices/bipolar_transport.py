@@ -6,13 +6,12 @@ of an NPN. Every derivative is the analytic one.
 
 from __future__ import annotations
 
-from dataclasses import dataclass
-
 import numpy as np
 
 from tauledger.devices import junction
 from tauledger.devices.bipolar_parameters import BipolarParameters
 from tauledger.devices.interface import FloatArray
+from tauledger.records import dataclass
 
 BE, BC, SUB = 0, 1, 2
 """Junction voltages in forward polarity."""

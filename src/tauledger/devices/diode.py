@@ -30,7 +30,6 @@ Not modelled: tunnelling (JTUN), TLEV and TLEVC other than 0, self-heating, leve
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass
 
 import numpy as np
 
@@ -46,6 +45,7 @@ from tauledger.devices.interface import (
     columns,
 )
 from tauledger.devices.junction import Depletion
+from tauledger.records import dataclass
 
 _BOTTOM, _SIDEWALL, _RECOMBINATION = range(3)
 _NO_BREAKDOWN_V = 1e9

@@ -7,11 +7,10 @@ current and conductances that agree to rounding.
 
 from __future__ import annotations
 
-from dataclasses import dataclass
-
 import numpy as np
 
 from tauledger.devices.interface import BoolArray, FloatArray
+from tauledger.records import dataclass
 
 Plain = float | FloatArray
 

@@ -15,11 +15,12 @@ from __future__ import annotations
 
 from abc import ABC, abstractmethod
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass
 from typing import Any, Generic, TypeVar
 
 import numpy as np
 from numpy.typing import NDArray
+
+from tauledger.records import dataclass
 
 FloatArray = NDArray[np.float64]
 BoolArray = NDArray[np.bool_]

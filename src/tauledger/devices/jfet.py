@@ -18,7 +18,6 @@ tests/devices/test_jfet.py [P: its output].
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass
 
 import numpy as np
 
@@ -51,6 +50,7 @@ from tauledger.devices.junction import (
     temperatures,
     thermal_voltage,
 )
+from tauledger.records import dataclass
 
 _LARGEST_TANGENT = 0.95
 _DRAIN, _GATE, _SOURCE, _INNER_DRAIN, _INNER_SOURCE = range(5)

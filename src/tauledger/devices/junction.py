@@ -12,7 +12,6 @@ tests/devices [P: its output, not its text].
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass
 
 import numpy as np
 
@@ -25,6 +24,7 @@ from tauledger.devices.interface import (
     Value,
     columns,
 )
+from tauledger.records import dataclass
 
 REFERENCE_K = 300.15
 """SPICE's reference for the temperature laws of silicon: 27 °C."""

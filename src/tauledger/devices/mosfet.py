@@ -16,13 +16,13 @@ with ngspice 39 in tests/devices/test_mosfet.py [P: its output].
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass
 
 import numpy as np
 
 from tauledger.devices.interface import Card, FloatArray, stack
 from tauledger.devices.mosfet_common import Channel, Mosfet
 from tauledger.devices.mosfet_process import Process, Surroundings
+from tauledger.records import dataclass
 
 
 @dataclass(frozen=True, slots=True)

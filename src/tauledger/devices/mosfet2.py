@@ -18,7 +18,6 @@ UCB/ERL M80/7 (1980) [M]; agrees with ngspice 39 in tests/devices/test_mosfet2.p
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass
 
 import numpy as np
 
@@ -37,6 +36,7 @@ from tauledger.devices.junction import first_given, thermal_voltage
 from tauledger.devices.mosfet_common import Channel, Mosfet, depletion_root
 from tauledger.devices.mosfet_process import SILICON_F_PER_M, Process, Surroundings
 from tauledger.devices.quartic import smallest_positive_root
+from tauledger.records import dataclass
 
 _DEFAULT_OXIDE_M = 1e-7
 _UNDOPED_LEAST_M = 0.25e-6

@@ -16,7 +16,6 @@ UCB/ERL M80/7 (1980) [M]; agrees with ngspice 39 in tests/devices/test_mosfet3.p
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass
 
 import numpy as np
 
@@ -25,6 +24,7 @@ from tauledger.devices.interface import ELEMENTARY_CHARGE_C, Card, FloatArray, s
 from tauledger.devices.junction import thermal_voltage
 from tauledger.devices.mosfet_common import Channel, Mosfet, depletion_root
 from tauledger.devices.mosfet_process import SILICON_F_PER_M, Process, Surroundings
+from tauledger.records import dataclass
 
 _DEFAULT_OXIDE_M = 1e-7
 _ETA_F_M = 8.15e-22

@@ -12,7 +12,6 @@ from __future__ import annotations
 
 from abc import abstractmethod
 from collections.abc import Sequence
-from dataclasses import dataclass
 from typing import Generic, TypeVar
 
 import numpy as np
@@ -41,6 +40,7 @@ from tauledger.devices.junction import (
     thermal_voltage,
 )
 from tauledger.devices.mosfet_process import Process, Surroundings, process, surroundings
+from tauledger.records import dataclass
 
 _DRAIN, _GATE, _SOURCE, _BULK, _INNER_DRAIN, _INNER_SOURCE = range(6)
 _VGS, _VDS, _VBS, _VRD, _VRS = range(5)

@@ -13,7 +13,6 @@ tests/devices/test_mosfet.py [P: its output].
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass
 
 import numpy as np
 
@@ -33,6 +32,7 @@ from tauledger.devices.junction import (
     temperatures,
     thermal_voltage,
 )
+from tauledger.records import dataclass
 
 VACUUM_F_PER_M = 8.854214871e-12
 """As SPICE's MOS models take it; 3e-6 above the true constant."""

@@ -22,7 +22,6 @@ drain resistance constant (here its dependence on VDS counts). Not modelled: sel
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass
 
 import numpy as np
 
@@ -47,6 +46,7 @@ from tauledger.devices.interface import (
     stack,
 )
 from tauledger.devices.junction import first_given, quadratic, temperatures
+from tauledger.records import dataclass
 
 _TERMINALS = (
     "drain",

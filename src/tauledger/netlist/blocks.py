@@ -3,11 +3,11 @@
 from __future__ import annotations
 
 from collections.abc import Iterable
-from dataclasses import dataclass
 
 from tauledger.netlist.codes import fault, problem
 from tauledger.netlist.statements import Assignment, Statement, Word
 from tauledger.problems import Problem
+from tauledger.records import dataclass
 
 MAXIMUM_DEFINITION_DEPTH = 50
 """Of .subckt inside .subckt."""
@@ -57,7 +57,10 @@ def build_netlist(
     commands: Iterable[Statement],
     problems: list[Problem],
 ) -> Netlist:
-    """Nest subcircuits; problems are added to the list that reading has begun."""
+    """Nest subcircuits; problems are added to the list that reading has begun.
+
+    Raises ProblemError when they are nested too deeply.
+    """
     stack = [_Open(None)]
     for statement in statements:
         keyword = statement.keyword

@@ -9,10 +9,10 @@ from __future__ import annotations
 import functools
 import pkgutil
 import re
-from dataclasses import dataclass
 from typing import TYPE_CHECKING, Any
 
 from tauledger.quantity import TRAPS, parse_number, rejected_number
+from tauledger.records import dataclass
 
 if TYPE_CHECKING:
     from lark import Lark, Token
@@ -29,6 +29,8 @@ class Expression:
 
 @dataclass(frozen=True, slots=True)
 class Number(Expression):
+    """In SI units: a suffix such as ``k`` is applied."""
+
     value: float
 
 

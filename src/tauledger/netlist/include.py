@@ -2,26 +2,31 @@
 
 from __future__ import annotations
 
+import os
 import re
+import sys
 from collections.abc import Sequence
-from dataclasses import dataclass
 from pathlib import Path
 
 from tauledger.netlist.codes import fault, problem
 from tauledger.problems import Problem, SourceSpan
+from tauledger.records import dataclass
 
 _DRIVE = re.compile(r"[A-Za-z]:[\\/]")
 
 
 @dataclass(frozen=True, slots=True)
 class Found:
+    """The file to read, and a warning when it lies elsewhere than the line says."""
+
     path: Path
     problem: Problem | None = None
 
 
 def default_roots(netlist: Path) -> tuple[Path, ...]:
     """The top of the git working tree that holds the netlist, else the netlist's own folder."""
-    folder = netlist.resolve().parent
+    # Path.resolve, before Python 3.13, raises for a loop of links.
+    folder = Path(os.path.realpath(netlist)).parent
     for candidate in (folder, *folder.parents):
         if (candidate / ".git").exists():
             return (candidate,)
@@ -38,7 +43,11 @@ def find_include(
     with a warning. Raises ProblemError for a missing file or one outside ``roots``.
     """
     spelled = name.replace("\\", "/")
-    foreign = bool(_DRIVE.match(name)) or spelled.startswith("~")
+    # Windows would ask the server in //server/file for it, with the user's name, before the path
+    # could be held against the roots.
+    foreign = spelled.startswith(("~", "//"))
+    if sys.platform != "win32":
+        foreign = foreign or bool(_DRIVE.match(name))
     refused = foreign
     if not foreign:
         asked = including.parent / spelled

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import re
 from collections.abc import Iterator, Sequence
-from dataclasses import dataclass, field
+from dataclasses import field
 from pathlib import Path
 
 from tauledger.netlist.blocks import Netlist, build_netlist
@@ -21,6 +21,7 @@ from tauledger.netlist.source import (
 )
 from tauledger.netlist.statements import Statement, Word, parse_statement
 from tauledger.problems import Problem, ProblemError, SourceSpan
+from tauledger.records import dataclass
 
 MAXIMUM_INCLUDE_DEPTH = 20
 MAXIMUM_INCLUDES = 200
@@ -57,7 +58,11 @@ def read_library(path: Path, roots: Sequence[Path]) -> Netlist:
 
 
 def parse(text: str, path: str = "netlist") -> Netlist:
-    """Read a netlist from text; it cannot include files."""
+    """Read a netlist from text, which cannot include files; ``path`` is what messages call it.
+
+    Faults of single lines are collected in :attr:`Netlist.problems`. Raises ProblemError when the
+    text is empty or too long.
+    """
     if len(text) > MAXIMUM_BYTES:
         raise fault(
             "file-too-large",
@@ -70,7 +75,7 @@ def parse(text: str, path: str = "netlist") -> Netlist:
     return _Reading(Path(path), None, len(text)).netlist(source_file(text, path))
 
 
-@dataclass
+@dataclass(slots=True)
 class _Reading:
     """What one run of the reader keeps account of."""
 

@@ -7,11 +7,11 @@ import os
 import re
 import stat
 from collections.abc import Callable, Iterator
-from dataclasses import dataclass
 from pathlib import Path
 
 from tauledger.netlist.codes import fault, problem
 from tauledger.problems import Problem, ProblemError, SourceSpan
+from tauledger.records import dataclass
 
 MAXIMUM_BYTES = 8 * 1024 * 1024
 """Of one run: the netlist and all it includes."""
@@ -63,7 +63,10 @@ class LogicalLine:
 
 
 def read_bytes(path: Path, limit: int = MAXIMUM_BYTES) -> bytes:
-    """Read a regular file of at most ``limit`` bytes; never blocks on a pipe or device."""
+    """Read a regular file of at most ``limit`` bytes; never blocks on a pipe or device.
+
+    Raises ProblemError when there is no such file, it is of another kind, unreadable or larger.
+    """
     try:
         handle = os.open(path, os.O_RDONLY | getattr(os, "O_NONBLOCK", 0))
     except FileNotFoundError:
@@ -71,15 +74,13 @@ def read_bytes(path: Path, limit: int = MAXIMUM_BYTES) -> bytes:
             "file-missing", f"{path}: no such file", None, "Check the spelling of the path."
         ) from None
     except (OSError, ValueError) as error:
+        # Windows opens no folder, and calls that a matter of permissions.
+        if isinstance(error, PermissionError) and path.is_dir():
+            raise _not_regular(path) from None
         raise _unreadable(path, error) from None
     if not stat.S_ISREG(os.fstat(handle).st_mode):
         os.close(handle)
-        raise fault(
-            "file-not-regular",
-            f"{path}: expected a file, found a folder, device or pipe",
-            None,
-            "Give the path of the netlist file itself.",
-        )
+        raise _not_regular(path)
     with os.fdopen(handle, "rb") as stream:
         try:
             content = stream.read(limit + 1)
@@ -95,6 +96,15 @@ def read_bytes(path: Path, limit: int = MAXIMUM_BYTES) -> bytes:
     return content
 
 
+def _not_regular(path: Path) -> ProblemError:
+    return fault(
+        "file-not-regular",
+        f"{path}: expected a file, found a folder, device or pipe",
+        None,
+        "Give the path of the netlist file itself.",
+    )
+
+
 def _unreadable(path: Path, error: Exception) -> ProblemError:
     reason = getattr(error, "strerror", None) or "not a usable path"
     return fault(
@@ -106,7 +116,10 @@ def _unreadable(path: Path, error: Exception) -> ProblemError:
 
 
 def decode(content: bytes, path: str) -> SourceFile:
-    """Text in UTF-8 or UTF-16 with or without a mark, else Latin-1; binary files are refused."""
+    """Text in UTF-8 or UTF-16 with or without a mark, else Latin-1.
+
+    Raises ProblemError when the file is binary, empty or too long.
+    """
     text = _decode_text(content.removesuffix(b"\x1a"))  # the end-of-file mark of old systems
     if text is None or _CONTROL.search(text):
         raise fault(
@@ -121,6 +134,7 @@ def decode(content: bytes, path: str) -> SourceFile:
 
 
 def source_file(text: str, path: str) -> SourceFile:
+    """Text split into physical lines, of any kind of line end; ProblemError for too many."""
     if text.count("\n") + text.count("\r") > 2 * MAXIMUM_LINES:
         raise fault(
             "file-too-large",

@@ -8,12 +8,12 @@ from __future__ import annotations
 import functools
 import pkgutil
 import re
-from dataclasses import dataclass
 from typing import TYPE_CHECKING, Any
 
 from tauledger.netlist.codes import fault, problem
 from tauledger.netlist.source import LogicalLine
 from tauledger.problems import Problem, SourceSpan
+from tauledger.records import dataclass
 
 if TYPE_CHECKING:
     from lark import Lark
@@ -41,6 +41,12 @@ _RAW = frozenset(
 
 @dataclass(frozen=True, slots=True)
 class Word:
+    """Text between blanks.
+
+    ``offset`` and ``end`` count characters from the start of the logical line, here as in every
+    other kind of item; ``end`` is behind the last one.
+    """
+
     text: str
     offset: int
 
@@ -89,6 +95,8 @@ class Call:
 
 @dataclass(frozen=True, slots=True)
 class Assignment:
+    """``name=value``, blanks allowed round the sign."""
+
     name: Word
     value: Value
 
@@ -142,9 +150,11 @@ class Statement:
         return self.line.text[self.name.end :]
 
     def text_of(self, item: Item | Call) -> str:
+        """An item as it is written."""
         return self.line.text[item.offset : item.end]
 
     def span(self, item: Item | Call | None = None) -> SourceSpan:
+        """Where an item stands in its file; without one, the statement's name."""
         if item is None:
             return self.line.span(self.name.offset, len(self.name.text))
         return self.line.span(item.offset, item.end - item.offset)

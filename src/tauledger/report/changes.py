@@ -8,6 +8,7 @@ from tauledger.report.page import Page
 from tauledger.report.wording import (
     change,
     kind_text,
+    moved,
     moves,
     part_name,
     part_text,
@@ -116,9 +117,9 @@ def _attribution(page: Page, attribution: Attribution) -> list[Line]:
         Row(
             (
                 page.text(effect.edit),
-                page.text(value(effect.alone, unit, signed=True)),
-                page.text(value(effect.last, unit, signed=True)),
-                page.text(value(effect.average, unit, signed=True)),
+                page.text(moved(effect.alone, unit, attribution.old)),
+                page.text(moved(effect.last, unit, attribution.old)),
+                page.text(moved(effect.average, unit, attribution.old)),
                 page.percent(effect.share),
                 page.bar(effect.share),
             )

@@ -2,25 +2,40 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
+
 from tauledger.quantity import format_quantity
 from tauledger.report.layout import BLANK, Column, Line, Piece, Row, paragraph, table
-from tauledger.report.page import Page
-from tauledger.review.decisions import Contribution, DrawRow, FigureSpread, Spread, Yield
+from tauledger.report.page import BOUND, Page
+from tauledger.review.decisions import (
+    Contribution,
+    DemandRow,
+    DrawRow,
+    FigureSpread,
+    Spread,
+    Yield,
+)
 
 _CAUSES_SHOWN = 6
 _LEADERS_SHOWN = 6
 _BAR = 48
 _LEAST_SHARE = 0.005
+ALWAYS = ("gain", "low corner", "high corner")
+"""Figures drawn in any case; of the others those whose limit a board misses."""
 
 
 def spread_page(page: Page, spread: Spread) -> list[Line]:
     """The whole answer of ``tauledger spread``."""
     lines = [*paragraph(page.title(spread.title), page.width, style="title")]
-    lines += paragraph(page.text(_basis(spread)), page.width, " ", " ")
+    lines += paragraph(page.text(basis(spread)), page.width, " ", " ")
     lines += _sentences(page, spread)
     lines.append(BLANK)
-    lines += _figures(page, spread)
-    for figure in spread.figures:
+    always = [figure for figure in spread.figures if figure.figure in ALWAYS]
+    others = [figure for figure in spread.figures if figure.figure not in ALWAYS]
+    lines += _figures(page, "Gain and corners over the boards", always)
+    lines += _figures(page, "Other figures with limits", others)
+    lines += _demands(page, spread.demands)
+    for figure in (*always, *filter(is_missed, others)):
         lines += _histogram(page, figure)
         lines += _causes(page, figure)
     lines += _leaders(page, spread)
@@ -30,7 +45,8 @@ def spread_page(page: Page, spread: Spread) -> list[Line]:
     return lines
 
 
-def _basis(spread: Spread) -> str:
+def basis(spread: Spread) -> str:
+    """How the boards were drawn, in a line."""
     words = {
         "uniform": "every value equally likely within its tolerance",
         "normal": "normal, each tolerance taken as three standard deviations",
@@ -62,8 +78,15 @@ def _yield_text(kept: Yield) -> str:
     return f"{100 * kept.share:.2f} % of the boards (95 % confidence: {interval})"
 
 
-def _figures(page: Page, spread: Spread) -> list[Line]:
-    percents = [entry.percent for entry in spread.figures[0].percentiles] if spread.figures else []
+def is_missed(figure: FigureSpread) -> bool:
+    """Whether some board does not keep its limit."""
+    return figure.kept is not None and figure.kept.passed < figure.kept.boards
+
+
+def _figures(page: Page, title: str, figures: Sequence[FigureSpread]) -> list[Line]:
+    if not figures:
+        return []
+    percents = [entry.percent for entry in figures[0].percentiles]
     shown = [p for p in percents if p in (1.0, 5.0, 50.0, 95.0, 99.0)]
     columns = (
         Column("figure", flexible=True),
@@ -73,17 +96,39 @@ def _figures(page: Page, spread: Spread) -> list[Line]:
         Column("worst high", right=True),
     )
     rows = []
-    for figure in spread.figures:
+    for figure in figures:
         values = [entry.value for entry in figure.percentiles if entry.percent in shown]
         cells = [figure.nominal, *values, figure.worst_low.value, figure.worst_high.value]
         rows.append(
             Row(
                 (page.text(figure.figure), *(page.quantity(v, _unit(figure)) for v in cells)),
-                tuple(page.text(detail) for detail in _details(figure)),
+                tuple(_bound(page.text(detail)) for detail in _details(figure)),
             )
         )
-    lines = [page.heading("Gain and corners over the boards"), *table(columns, rows, page.width)]
+    return [page.heading(title), *table(columns, rows, page.width), BLANK]
+
+
+def _demands(page: Page, demands: Sequence[DemandRow]) -> list[Line]:
+    if not demands:
+        return []
+    lines = [page.heading("Also asked of every board")]
+    for row in demands:
+        asked = ", ".join(filter(None, [row.demand, window_of(row.kept)]))
+        words = f"{asked}: {_yield_text(row.kept)}"
+        lines += paragraph(_bound(page.text(words)), page.width, "   ", " ")
     return [*lines, BLANK]
+
+
+def _bound(words: str) -> str:
+    """A number and its percent sign stay on one line."""
+    return words.replace(" %", f"{BOUND}%")
+
+
+def window_of(kept: Yield) -> str:
+    """The limit as written, or nothing for a demand without one."""
+    if not (kept.minimum or kept.maximum):
+        return ""
+    return f"limit {kept.minimum or 'any'} to {kept.maximum or 'any'}"
 
 
 def _unit(figure: FigureSpread) -> str:
@@ -91,29 +136,35 @@ def _unit(figure: FigureSpread) -> str:
 
 
 def _details(figure: FigureSpread) -> list[str]:
-    relative = figure.deviation / figure.mean if figure.mean else 0.0
-    details = [
-        f"standard deviation {100 * relative:.2g} %; by sensitivities alone "
-        f"{100 * figure.linear_deviation / figure.nominal:.2g} % of nominal"
-    ]
+    details = [_deviation(figure)]
+    told = figure.figure in ALWAYS or is_missed(figure)
     for word, case in (("lowest", figure.worst_low), ("highest", figure.worst_high)):
-        if case.ends:
+        if case.ends and told:
             details.append(f"{word} with {', '.join(case.ends[:5])}")
     if figure.missing:
         details.append(f"{figure.missing} boards have none")
     if figure.kept is not None:
-        window = " to ".join(
-            filter(None, [figure.kept.minimum or "any", figure.kept.maximum or "any"])
-        )
-        details.append(f"limit {window}: {_yield_text(figure.kept)}")
+        details.append(f"{window_of(figure.kept)}: {_yield_text(figure.kept)}")
     return details
+
+
+def _deviation(figure: FigureSpread) -> str:
+    if figure.linear:
+        both = (figure.deviation, figure.linear_deviation)
+        seen, alone = (format_quantity(value, figure.unit) for value in both)
+        return f"standard deviation {seen}; by sensitivities alone {alone}"
+    relative = figure.deviation / figure.mean if figure.mean else 0.0
+    return (
+        f"standard deviation {100 * relative:.2g} %; by sensitivities alone "
+        f"{100 * figure.linear_deviation / figure.nominal:.2g} % of nominal"
+    )
 
 
 def _histogram(page: Page, figure: FigureSpread) -> list[Line]:
     """Bars across the page; one board in the tallest bin's hundredth still shows as a dot."""
     edges, counts = figure.histogram.edges, figure.histogram.counts
     most = max(counts)
-    lines = [page.heading(f"{figure.figure.capitalize()}: boards by value")]
+    lines = [page.heading(f"{initial(figure.figure)}: boards by value")]
     label = [page.quantity(edge, _unit(figure)) for edge in edges]
     width = max(len(text) for text in label)
     for i, count in enumerate(counts):
@@ -143,21 +194,31 @@ def _causes(page: Page, figure: FigureSpread) -> list[Line]:
         Column("at its low end", right=True),
         Column("at its high end", right=True),
     )
-    rows = [Row(_cause(page, c)) for c in shown]
-    title = f"{figure.figure.capitalize()}: whose tolerance dominates"
+    rows = [Row(_cause(page, c, figure.unit if figure.linear else "")) for c in shown]
+    title = f"{initial(figure.figure)}: whose tolerance dominates"
     return [page.heading(title), *table(columns, rows, page.width), BLANK]
 
 
-def _cause(page: Page, c: Contribution) -> tuple[str, ...]:
-    slope = f"{c.sensitivity:+.2f} %" if c.sensitivity is not None else "—"
-    return (
-        page.text(c.label),
-        page.percent(c.share),
-        page.bar(c.share),
-        page.text(slope),
-        page.signed_percent(c.at_low),
-        page.signed_percent(c.at_high),
-    )
+def _cause(page: Page, c: Contribution, unit: str) -> tuple[str, ...]:
+    """``unit`` of a figure whose changes are differences; else they are relative."""
+    slope = "—" if c.sensitivity is None else f"{c.sensitivity:+.2f} %"
+    if unit and c.sensitivity is not None:
+        slope = signed_quantity(c.sensitivity / 100.0, unit)
+    ends = [
+        page.text(signed_quantity(value, unit)) if unit else page.signed_percent(value)
+        for value in (c.at_low, c.at_high)
+    ]
+    return page.text(c.label), page.percent(c.share), page.bar(c.share), page.text(slope), *ends
+
+
+def initial(words: str) -> str:
+    """A heading's first letter as a capital; names in it stay as they are."""
+    return words[:1].upper() + words[1:]
+
+
+def signed_quantity(value: float, unit: str) -> str:
+    """A difference with its sign."""
+    return f"{'+' if value > 0.0 else ''}{format_quantity(value, unit)}"
 
 
 def _leaders(page: Page, spread: Spread) -> list[Line]:
@@ -193,14 +254,15 @@ def _leaders(page: Page, spread: Spread) -> list[Line]:
 def _draws(page: Page, spread: Spread) -> list[Line]:
     groups: dict[str, list[str]] = {}
     for draw in spread.draws:
-        groups.setdefault(_window(draw), []).append(draw.label)
+        groups.setdefault(window(draw), []).append(draw.label)
     lines = [page.heading("What differs from board to board")]
-    for window, labels in groups.items():
-        lines += paragraph(page.text(f"{window}: {', '.join(labels)}"), page.width, "   ", " ")
+    for ends, labels in groups.items():
+        lines += paragraph(page.text(f"{ends}: {', '.join(labels)}"), page.width, "   ", " ")
     return [*lines, BLANK]
 
 
-def _window(draw: DrawRow) -> str:
+def window(draw: DrawRow) -> str:
+    """From where to where it differs."""
     if draw.unit:
         ends = [format_quantity(end, draw.unit) for end in (draw.low, draw.high)]
         return f"{ends[0]} to +{ends[1]}"

@@ -10,12 +10,16 @@ from tauledger.review.decisions import (
     Alternative,
     CapacitorStress,
     Choice,
+    DeviceStress,
     FittedRow,
+    ResistorStress,
     Stress,
     TemperatureSweep,
 )
 
-_RESISTORS_SHOWN = 8
+_HOTTEST_SHOWN = 8
+_TIMES = 9.0
+"""From this margin on, 900 %, a ratio reads better."""
 
 
 def choice_page(page: Page, choice: Choice) -> list[Line]:
@@ -50,11 +54,8 @@ def _alternative(page: Page, choice: Choice, way: Alternative, number: int) -> l
     )
     rows = [Row(_fitted(page, part)) for part in way.parts]
     sentences = [
-        f"exact corner {page.quantity(way.corner_hz, 'Hz')}"
-        + (f", worst case {page.quantity(way.worst_hz, 'Hz')}" if way.worst_hz else "")
-        + f"; margin to the target {page.signed_percent(way.margin)}",
-        f"settles to 1 % in {page.quantity(way.settling_s, 's')} (now "
-        f"{page.quantity(choice.now_settling_s, 's')}); {page.quantity(way.total_f, 'F')} in all, "
+        _corner(page, choice, way),
+        f"{_settling(page, choice, way)}; {page.quantity(way.total_f, 'F')} in all, "
         f"{way.values} different value{'s' if way.values > 1 else ''}",
     ]
     if way.peak_db >= 0.1:
@@ -64,6 +65,32 @@ def _alternative(page: Page, choice: Choice, way: Alternative, number: int) -> l
     for sentence in sentences:
         lines += paragraph(page.spell(sentence), page.width, "   ", " ")
     return [*lines, BLANK]
+
+
+def _corner(page: Page, choice: Choice, way: Alternative) -> str:
+    """The corner, and the margin it leaves to the target."""
+    corner = f"exact corner {page.quantity(way.corner_hz, 'Hz')}"
+    if way.worst_hz is not None:
+        corner += f"; worst case {page.quantity(way.worst_hz, 'Hz')}"
+    if way.margin >= _TIMES:
+        return f"{corner}, {1.0 + way.margin:.0f} times the target"
+    side = "below" if choice.end == "low" else "above"
+    return f"{corner}, {page.percent(way.margin)} {side} the target"
+
+
+def _settling(page: Page, choice: Choice, way: Alternative) -> str:
+    """How long it settles, and how that compares with the netlist as it stands."""
+    if way.settling_s is None:
+        return "nothing in it decays"
+    sentence = f"settles to 1 % in {page.quantity(way.settling_s, 's')}"
+    ratio = way.settling_ratio
+    if ratio is None:
+        return sentence
+    if abs(ratio - 1.0) < 0.005:
+        return f"{sentence}, as now"
+    times = f"{ratio:.0f}" if ratio >= 10.0 else f"{ratio:.1f}" if ratio >= 1.0 else f"{ratio:.2g}"
+    now = page.quantity(choice.now_settling_s, "s")
+    return f"{sentence}, {times} times as long as now ({now})"
 
 
 def _fitted(page: Page, part: FittedRow) -> tuple[str, ...]:
@@ -90,6 +117,7 @@ def stress_page(page: Page, stress: Stress) -> list[Line]:
     lines.append(BLANK)
     lines += _capacitors(page, stress)
     lines += _resistors(page, stress)
+    lines += _devices(page, stress)
     for note in stress.notes:
         lines += paragraph(page.text(note), page.width, "   ", " - ")
     return lines
@@ -157,7 +185,7 @@ def _resistors(page: Page, stress: Stress) -> list[Line]:
         Column("rated", right=True),
         Column("load", right=True),
     )
-    ranked = sorted(stress.resistors, key=lambda row: -row.power_w)
+    ranked = sorted(stress.resistors, key=_coolness)
     rows = [
         Row(
             (
@@ -167,12 +195,48 @@ def _resistors(page: Page, stress: Stress) -> list[Line]:
                 page.percent(row.load),
             )
         )
-        for row in ranked[:_RESISTORS_SHOWN]
+        for row in ranked[:_HOTTEST_SHOWN]
     ]
+    return _hottest(page, "Resistors", columns, rows, len(ranked))
+
+
+def _devices(page: Page, stress: Stress) -> list[Line]:
+    columns = (
+        Column("part", flexible=True),
+        Column("model", flexible=True),
+        Column("dissipation", right=True, style="strong"),
+        Column("rated", right=True),
+        Column("load", right=True),
+    )
+    ranked = sorted(stress.devices, key=_coolness)
+    rows = [
+        Row(
+            (
+                page.name(row.part),
+                page.name(row.model),
+                page.quantity(row.power_w, "W"),
+                page.quantity(row.rated_w, "W"),
+                page.percent(row.load),
+            ),
+            (page.text(f"rated by {row.basis}"),) if row.basis else (),
+        )
+        for row in ranked[:_HOTTEST_SHOWN]
+    ]
+    return _hottest(page, "Transistors and diodes", columns, rows, len(ranked))
+
+
+def _coolness(row: ResistorStress | DeviceStress) -> float:
+    """Twins stay in the order of the netlist, whatever a machine makes of their last digits."""
+    return -float(f"{row.power_w:.6g}")
+
+
+def _hottest(
+    page: Page, what: str, columns: Sequence[Column], rows: Sequence[Row], count: int
+) -> list[Line]:
     if not rows:
         return []
-    more = len(ranked) - len(rows)
-    title = "Resistors, hottest first" + (f" ({more} cooler ones not shown)" if more else "")
+    more = count - len(rows)
+    title = f"{what}, hottest first" + (f" ({more} cooler ones not shown)" if more else "")
     return [page.heading(title), *table(columns, rows, page.width), BLANK]
 
 

@@ -10,7 +10,9 @@ from __future__ import annotations
 import math
 import re
 from collections.abc import Mapping
-from dataclasses import dataclass, field, replace
+from dataclasses import field, replace
+
+from tauledger.records import dataclass
 
 LONGEST = 2000
 _DEEPEST = 40

@@ -18,6 +18,8 @@ from tauledger.report.html_text import (
 from tauledger.report.inert import inert
 from tauledger.report.wording import (
     change,
+    moved,
+    moves,
     part_name,
     part_text,
     place,
@@ -166,7 +168,7 @@ def changes(comparison: Comparison | None) -> str:
             for row in comparison.parts[:_ROWS_SHOWN]
         ]
         body += table("Parts that differ", heads, rows)
-    body += "".join(_attribution(row) for row in comparison.attributions)
+    body += "".join(_attribution(row) for row in moves(comparison))
     if comparison.electrical:
         heads = (Head("figure"), Head("old", True), Head("new", True), Head("change", True))
         body += table("All figures, old and new", heads, _figures(comparison))
@@ -185,15 +187,15 @@ def _attribution(row: Attribution) -> str:
     cells = [
         (
             text(effect.edit, 120),
-            text(value(effect.alone, row.unit, signed=True)),
-            text(value(effect.last, row.unit, signed=True)),
-            text(value(effect.average, row.unit, signed=True)),
+            text(moved(effect.alone, row.unit, row.old)),
+            text(moved(effect.last, row.unit, row.old)),
+            text(moved(effect.average, row.unit, row.old)),
             "—" if effect.share is None else f"{100 * effect.share:.1f}\u00a0%",
         )
         for effect in row.effects[:_ROWS_SHOWN]
     ]
-    moved = f"{value(row.old, row.unit)} → {value(row.new, row.unit)}"
-    caption = text(f"{row.figure} {moved}")
+    ends = f"{value(row.old, row.unit)} → {value(row.new, row.unit)}"
+    caption = text(f"{row.figure} {ends}")
     return table(caption, heads, cells) + listing(text(line) for line in remainder(row))
 
 

@@ -9,6 +9,7 @@ from tauledger.report.expressions import Bridge, HandExpression, parse_hand
 from tauledger.report.html_text import (
     NAME_COLUMNS,
     Head,
+    bar,
     listing,
     name,
     number,
@@ -79,7 +80,7 @@ def _table(rows: Iterable[TimeConstantRow], corner: CornerRow | None, end: str) 
     cells = [
         (
             f'<span class="sets">{name(row.name)}</span>' if row.name in sets else name(row.name),
-            f'<span class="n">{_bar(row.share, end)}{percent(row.share)}</span>',
+            f'<span class="n">{bar(row.share, end)}{percent(row.share)}</span>',
             quantity(row.corner_hz, "Hz"),
             quantity(row.value, row.unit),
             quantity(row.resistance_ohm, "Ω"),
@@ -93,15 +94,6 @@ def _table(rows: Iterable[TimeConstantRow], corner: CornerRow | None, end: str) 
     if sets:
         caption += "; marked: what sets the corner"
     return table(caption, heads, cells)
-
-
-def _bar(share: float | None, end: str) -> str:
-    length = 100.0 * min(max(share or 0.0, 0.0), 1.0)
-    return (
-        '<svg class="bar" viewBox="0 0 100 8" preserveAspectRatio="none" aria-hidden="true">'
-        f'<rect class="tk0" width="100" height="8"/>'
-        f'<rect class="{end}" width="{length:.2f}" height="8"/></svg>'
-    )
 
 
 def _sums(corner: CornerRow) -> str:

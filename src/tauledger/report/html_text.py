@@ -5,10 +5,10 @@ from __future__ import annotations
 import math
 import re
 from collections.abc import Iterable, Sequence
-from dataclasses import dataclass
 from html import escape
 
 from tauledger.quantity import format_quantity
+from tauledger.records import dataclass
 from tauledger.report.expressions import Node, parse, written
 from tauledger.report.inert import clip, inert
 
@@ -198,6 +198,16 @@ def _table_row(heads: Sequence[Head], row: Sequence[str]) -> str:
 
 def _right(head: Head) -> str:
     return ' class="r"' if head.set_right else ' class="w"' if head.is_prose else ""
+
+
+def bar(share: float | None, kind: str) -> str:
+    """A share 0…1 as a bar, in the colour of ``kind``; the figure itself stands beside it."""
+    length = 100.0 * min(max(share or 0.0, 0.0), 1.0)
+    return (
+        '<svg class="bar" viewBox="0 0 100 8" preserveAspectRatio="none" aria-hidden="true">'
+        f'<rect class="tk0" width="100" height="8"/>'
+        f'<rect class="{kind}" width="{length:.2f}" height="8"/></svg>'
+    )
 
 
 def listing(lines: Iterable[str], kind: str = "notes") -> str:

@@ -8,9 +8,9 @@ give way and wrap.
 from __future__ import annotations
 
 from collections.abc import Iterable, Sequence
-from dataclasses import dataclass
 from typing import NamedTuple
 
+from tauledger.records import dataclass
 from tauledger.report.inert import clip, display_width
 
 

@@ -8,6 +8,7 @@ from tauledger.report.markup import code, details, sentence, table
 from tauledger.report.wording import (
     change,
     kind_text,
+    moved,
     moves,
     part_name,
     part_text,
@@ -62,9 +63,9 @@ def _attribution(attribution: Attribution) -> str:
     rows = [
         (
             code(effect.edit),
-            value(effect.alone, unit, signed=True),
-            value(effect.last, unit, signed=True),
-            f"**{value(effect.average, unit, signed=True)}**",
+            moved(effect.alone, unit, attribution.old),
+            moved(effect.last, unit, attribution.old),
+            f"**{moved(effect.average, unit, attribution.old)}**",
             "—" if effect.share is None else f"{100 * effect.share:.1f} %",
         )
         for effect in attribution.effects[:_EFFECTS_SHOWN]

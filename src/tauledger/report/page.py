@@ -3,9 +3,9 @@
 from __future__ import annotations
 
 import math
-from dataclasses import dataclass
 
 from tauledger.quantity import format_quantity
+from tauledger.records import dataclass
 from tauledger.report.alphabet import Spell
 from tauledger.report.inert import clip, inert
 from tauledger.report.layout import Line, heading

@@ -5,10 +5,10 @@ from __future__ import annotations
 import hashlib
 from collections import Counter
 from collections.abc import Sequence
-from dataclasses import dataclass
 from pathlib import Path, PurePath
 
 from tauledger.problems import SourceSpan
+from tauledger.records import dataclass
 from tauledger.review.check import Finding
 
 

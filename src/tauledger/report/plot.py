@@ -4,10 +4,10 @@ from __future__ import annotations
 
 import math
 from collections.abc import Iterable, Iterator, Sequence
-from dataclasses import dataclass
 from itertools import pairwise
 
 from tauledger.quantity import format_quantity, parse_si
+from tauledger.records import dataclass
 from tauledger.review.illustration import Curve, Illustration
 from tauledger.review.limits import LimitRow
 from tauledger.review.rows import PathRow

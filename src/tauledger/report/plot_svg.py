@@ -9,9 +9,9 @@ from __future__ import annotations
 
 import math
 from collections.abc import Callable, Iterator, Sequence
-from dataclasses import dataclass
 from html import escape
 
+from tauledger.records import dataclass
 from tauledger.report.html_style import PLOT_STYLE, THEME
 from tauledger.report.inert import clip, inert
 from tauledger.report.plot import Axis, BodePlot, Mark, Points, Region, Tick, Trace

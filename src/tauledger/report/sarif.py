@@ -102,7 +102,8 @@ def _artifact(path: str) -> dict[str, Any]:
         encoded = path.encode("utf-8", "backslashreplace")
     uri = quote(encoded, safe="/")
     if PurePath(path).is_absolute():
-        return {"artifactLocation": {"uri": f"file://{uri}"}}
+        # A path that begins with a drive wants the stroke that others bring along.
+        return {"artifactLocation": {"uri": f"file:///{uri.removeprefix('/')}"}}
     return {"artifactLocation": {"uri": uri, "uriBaseId": _ROOT}}
 
 

@@ -9,10 +9,11 @@ from __future__ import annotations
 
 import math
 from collections.abc import Callable, Mapping, Sequence
-from dataclasses import dataclass, field
+from dataclasses import field
 from html import escape
 
 from tauledger.quantity import format_quantity
+from tauledger.records import dataclass
 from tauledger.report.expressions import (
     Bridge,
     HandExpression,

@@ -2,28 +2,29 @@
 
 from __future__ import annotations
 
-import json
 import re
 from collections.abc import Iterator, Sequence
 
 from tauledger.quantity import format_quantity
 from tauledger.report.inert import clip, inert
+from tauledger.report.starter_parts import PartFound, part_tables
+from tauledger.report.toml_text import toml_text
 from tauledger.review.rows import CornerRow, PathRow, Review
 
 _COMMENT_COLUMNS = 90
-_CAPACITORS_SHOWN = 40
 _NETS_SHOWN = 60
 
 
-def starter(review: Review, netlist: str) -> str:
+def starter(review: Review, netlist: str, parts: Sequence[PartFound]) -> str:
     """The text of the file, for a netlist at ``netlist`` relative to the file's folder.
 
-    Every limit is a comment, so the file is valid as it stands and limits nothing.
+    Every limit and every class of ``parts`` is a comment, so the file is valid as it stands,
+    limits nothing and claims nothing.
     """
     path, name = review.paths[0], _path_name(netlist)
     lines = [
         *_head(review.title, name, netlist),
-        f"input = {_text(path.input)}",
+        f"input = {toml_text(path.input)}",
         f"output = {_output(path)}",
         "",
         "# Limits: take the # away and write what the circuit must do. Each may have min, max or",
@@ -32,26 +33,28 @@ def starter(review: Review, netlist: str) -> str:
         *_limits(path),
         "",
         *_currents(name, review),
-        *_capacitors(path),
+        *part_tables(parts),
     ]
     return "\n".join(lines).rstrip("\n") + "\n"
 
 
-def bare_starter(title: str, nets: Sequence[str], netlist: str) -> str:
+def bare_starter(title: str, nets: Sequence[str], netlist: str, parts: Sequence[PartFound]) -> str:
     """The same for a netlist that could not be analysed: its nets, and what may be missing."""
     more = f" and {len(nets) - _NETS_SHOWN} more" if len(nets) > _NETS_SHOWN else ""
     lines = [
         *_head(title, _path_name(netlist), netlist),
         "# Nets found:",
-        *(f"#   {_text(net)}" for net in nets[:_NETS_SHOWN]),
+        *(f"#   {toml_text(net)}" for net in nets[:_NETS_SHOWN]),
         *([f"#  {more}"] if more else []),
         "# What the netlist leaves open: take the # away and name its nets.",
         '# input = { node = "", resistance = "" }',
         '# output = { node = "", load_resistance = "" }',
         '# supplies = { "" = "" }',
         "# generic_models = true",
+        "",
+        *part_tables(parts),
     ]
-    return "\n".join(lines) + "\n"
+    return "\n".join(lines).rstrip("\n") + "\n"
 
 
 def _path_name(netlist: str) -> str:
@@ -61,7 +64,7 @@ def _path_name(netlist: str) -> str:
 
 def _head(title: str, name: str, netlist: str) -> list[str]:
     what = _comment(title) or "What the schematic leaves out, and what it must do"
-    return [f"# {what}", "", f"[path.{name}]", f"netlist = {_text(netlist)}"]
+    return [f"# {what}", "", f"[path.{name}]", f"netlist = {toml_text(netlist)}"]
 
 
 def _limits(path: PathRow) -> Iterator[str]:
@@ -86,7 +89,7 @@ def _window(key: str, value: float | None, unit: str, *ends: str) -> Iterator[st
 
 def _set_by(corner: CornerRow) -> Iterator[str]:
     if len(corner.set_by) == 1:
-        yield f"# {corner.end}_corner_set_by = {_text(corner.set_by[0])}"
+        yield f"# {corner.end}_corner_set_by = {toml_text(corner.set_by[0])}"
     elif corner.set_by:
         tied = _comment(", ".join(corner.set_by))
         yield f'# {corner.end}_corner_set_by = ""  # found a tie: {tied}'
@@ -97,31 +100,13 @@ def _currents(name: str, review: Review) -> Iterator[str]:
         yield f"# [path.{name}.limits.current]"
         for row in review.transistors:
             found = format_quantity(abs(row.current_a), "A")
-            yield f'# {_text(row.name)} = {{ min = "", max = "" }}  # found {found}'
+            yield f'# {toml_text(row.name)} = {{ min = "", max = "" }}  # found {found}'
         yield ""
-
-
-def _capacitors(path: PathRow) -> Iterator[str]:
-    on_board = [row for row in path.time_constants if row.dc_voltage_v is not None]
-    if not on_board:
-        return
-    yield "# Classes of capacitors. One named for electrolytic, tantalum or polarised parts has its"
-    yield "# polarity checked; the rating is for limits on capacitor_voltage_margin."
-    yield "# [capacitors.electrolytic]"
-    yield f"# match = [{', '.join(_text(row.name) for row in on_board[:_CAPACITORS_SHOWN])}]"
-    yield '# tolerance = ""'
-    yield '# rated_voltage = ""'
 
 
 def _output(path: PathRow) -> str:
     nodes = path.output.split(" − ")
-    return _text(nodes[0]) if len(nodes) == 1 else f"[{', '.join(map(_text, nodes))}]"
-
-
-def _text(text: str) -> str:
-    """A TOML string: its escapes are those of JSON, but for DEL, which TOML wants escaped too."""
-    safe = text.encode("utf-8", "backslashreplace").decode("utf-8")
-    return json.dumps(safe, ensure_ascii=False).replace("\x7f", "\\u007f")
+    return toml_text(nodes[0]) if len(nodes) == 1 else f"[{', '.join(map(toml_text, nodes))}]"
 
 
 def _comment(text: str) -> str:

@@ -35,7 +35,14 @@ _STYLES = {
 
 def text_report(review: Review, width: int = WIDTH, encoding: str | None = "utf-8") -> str:
     """The report as plain text, at most ``width`` columns, in letters ``encoding`` has."""
-    return plain(report_lines(Page(width, alphabet(encoding)), review)).replace(BOUND, " ")
+    return page_text(lambda page: report_lines(page, review), width, encoding)
+
+
+def page_text(
+    draw: Callable[[Page], Sequence[Line]], width: int = WIDTH, encoding: str | None = "utf-8"
+) -> str:
+    """A page as plain text, as :func:`text_report`."""
+    return plain(draw(Page(width, alphabet(encoding)))).replace(BOUND, " ")
 
 
 def write_text_report(review: Review, stream: TextIO) -> None:

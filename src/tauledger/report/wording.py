@@ -18,8 +18,9 @@ from tauledger.review.changes import (
 NO_CHANGE = "no electrical change"
 _DETAILS_SHOWN = 6
 _SMALL = 5e-4
-"""Relative changes below this print as such."""
+"""Relative changes below half a unit of the first decimal of a percentage print as such."""
 _SMALL_DB = 0.005
+"""The same for the second decimal of decibels, about as fine: 0.05 % are 0.004 dB."""
 _SHARE_NAMED = 0.1
 
 
@@ -43,9 +44,13 @@ def moves(comparison: Comparison) -> list[Attribution]:
     return [
         attribution
         for attribution in comparison.attributions
-        if abs(attribution.new - attribution.old)
-        >= (_SMALL_DB if attribution.unit == "dB" else _SMALL * abs(attribution.old))
+        if abs(attribution.new - attribution.old) >= _least(attribution.unit, attribution.old)
     ]
+
+
+def _least(unit: str, old: float) -> float:
+    """The smallest change of a figure that is worth a number."""
+    return _SMALL_DB if unit == "dB" else _SMALL * abs(old)
 
 
 def _moved(attribution: Attribution) -> str:
@@ -69,6 +74,16 @@ def value(number: float | None, unit: str, signed: bool = False) -> str:
     return f"+{shown}" if signed and number > 0 else shown
 
 
+def moved(number: float | None, unit: str, old: float) -> str:
+    """A move of a figure away from ``old``, to the decimals that count."""
+    if number is None:
+        return "—"
+    least = _least(unit, old)
+    if number and abs(number) < least:
+        return f"<{format_quantity(least, '' if unit == 'V/V' else unit, 1)}"
+    return f"{number:+.2f} dB" if unit == "dB" and number else value(number, unit, signed=True)
+
+
 def change(row: FigureChange) -> str:
     """How far a figure moved: in dB, else in percent, else as a difference."""
     if row.difference is None:
@@ -76,7 +91,7 @@ def change(row: FigureChange) -> str:
     if row.difference == 0.0:
         return "none"
     if row.relative is None or not math.isfinite(row.relative):
-        return value(row.difference, row.unit, signed=True)
+        return moved(row.difference, row.unit, row.old or 0.0)
     if abs(row.relative) < _SMALL:
         return "<0.05 %"
     return f"{100 * row.relative:+.3g} %"
@@ -148,19 +163,19 @@ def remainder(attribution: Attribution) -> Iterator[str]:
     whole = attribution.new - attribution.old
     unit = attribution.unit
     yield (
-        f"whole change {value(whole, unit, signed=True)}; remainder "
-        f"{_part_of(attribution.remainder, whole, unit)}"
+        f"whole change {moved(whole, unit, attribution.old)}; remainder "
+        f"{_part_of(attribution.remainder, attribution)}"
     )
     if len(attribution.effects) > 1:
         yield (
             "interaction, the whole change less what each edit does alone: "
-            f"{_part_of(attribution.interaction, whole, unit)}"
+            f"{_part_of(attribution.interaction, attribution)}"
         )
     yield from attribution.notes
 
 
-def _part_of(part: float, whole: float, unit: str) -> str:
-    share = part / whole
+def _part_of(part: float, attribution: Attribution) -> str:
+    share = part / (attribution.new - attribution.old)
     if abs(share) < _SMALL:
         return "none"
-    return f"{value(part, unit, signed=True)} ({100 * share:+.1f} %)"
+    return f"{moved(part, attribution.unit, attribution.old)} ({100 * share:+.1f} %)"

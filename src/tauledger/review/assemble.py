@@ -33,6 +33,7 @@ from tauledger.review.rows import (
 )
 from tauledger.review.sanity import headroom, sanity_problems, stability_problems
 from tauledger.smallsignal import DeviceAdmittance, LinearNetwork, Response
+from tauledger.smallsignal.network import FloatArray
 from tauledger.topology.model import SignalPath, StageOutline, Topology
 
 _BIPOLAR_FIGURES = (
@@ -107,7 +108,7 @@ def path_row(
             for i, (stage, formula) in enumerate(zip(topology.stages, formulas, strict=True))
         ),
         time_constants=tuple(
-            _time_constant_row(account, point, network, topology, moves, expressions)
+            _time_constant_row(account, circuit, point, network, topology, moves, expressions)
             for account in corners.accounts
         ),
         low=_corner_row(corners.low),
@@ -216,8 +217,8 @@ def _stage_row(
     leaving = _signal(network, corners, stage.output_node)
     gain = leaving / entry if entry and leaving is not None else None
     resistance = None
-    if corners.midband is not None and (k := network.index(stage.output_node)) >= 0:
-        resistance = float(corners.midband.inverse[k, k])
+    if corners.midband is not None and network.index(stage.output_node) >= 0:
+        resistance = corners.midband.resistance_seen_ohm(_probe(network, stage.output_node, "0"))
     return StageRow(
         number=number,
         transistors=stage.transistors,
@@ -311,11 +312,8 @@ def _output_resistance(
     """What the load sees, the source at zero; resistors of the load are taken out."""
     if corners.midband is None:
         return None
-    probe = np.zeros(corners.midband.inverse.shape[0])
-    for node, sign in ((path.output_node, 1.0), (path.output_reference, -1.0)):
-        if (index := network.index(node)) >= 0:
-            probe[index] += sign
-    seen = float(probe @ corners.midband.inverse @ probe)
+    probe = _probe(network, path.output_node, path.output_reference)
+    seen = corners.midband.resistance_seen_ohm(probe)
     load = sum(
         1.0 / e.resistance_ohm
         for e in circuit.elements
@@ -325,8 +323,18 @@ def _output_resistance(
     return 1.0 / conductance if conductance else math.inf
 
 
+def _probe(network: LinearNetwork, node: str, reference: str) -> FloatArray:
+    """(N,): a unit current into one node and out of the other."""
+    probe = np.zeros(len(network.nodes) + len(network.branches))
+    for name, sign in ((node, 1.0), (reference, -1.0)):
+        if (index := network.index(name)) >= 0:
+            probe[index] += sign
+    return probe
+
+
 def _time_constant_row(
     account: PartAccount,
+    circuit: Circuit,
     point: OperatingPoint,
     network: LinearNetwork,
     topology: Topology,
@@ -337,7 +345,7 @@ def _time_constant_row(
     nodes = (_node_name(network, part.positive), _node_name(network, part.negative))
     role = topology.capacitors.get(part.name)
     hand = expressions.get(part.name)
-    on_board = not part.device and not part.is_inductor
+    on_board = not (part.device or part.is_inductor or part.name in circuit.attached)
     return TimeConstantRow(
         name=part.name,
         nodes=nodes,

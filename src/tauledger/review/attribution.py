@@ -14,9 +14,9 @@ alone_1 + last_2 = Δ.
 from __future__ import annotations
 
 from collections.abc import Callable, Mapping, Sequence
-from dataclasses import dataclass
 
 from tauledger.circuit.elements import Circuit
+from tauledger.records import dataclass
 from tauledger.review.changes import Attribution, EditEffect
 from tauledger.review.edits import Edit, apply
 

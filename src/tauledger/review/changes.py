@@ -5,9 +5,8 @@ Field names carry the unit. A figure that one revision does not have is None.
 
 from __future__ import annotations
 
-from dataclasses import dataclass
-
 from tauledger.problems import SourceSpan
+from tauledger.records import dataclass
 
 
 @dataclass(frozen=True, slots=True)

@@ -9,7 +9,7 @@ from __future__ import annotations
 
 import re
 from collections.abc import Callable, Iterable, Iterator, Mapping
-from dataclasses import dataclass, field, replace
+from dataclasses import field, replace
 
 from tauledger.circuit.elements import Capacitor, Circuit
 from tauledger.configuration.codes import CODES as CONFIGURATION_CODES
@@ -17,6 +17,7 @@ from tauledger.configuration.settings import PathSettings
 from tauledger.netlist.codes import CODES as NETLIST_CODES
 from tauledger.problems import Problem, Severity, SourceSpan
 from tauledger.quantity import format_quantity
+from tauledger.records import dataclass
 from tauledger.review.limits import CODES as LIMIT_CODES
 from tauledger.review.limits import LimitRow, check_limits, class_of
 from tauledger.review.rows import REGION_CODE, PathRow, Review
@@ -127,7 +128,7 @@ def _out_of_region(subject: Subject) -> Iterator[Case]:
 def _reversed(subject: Subject) -> Iterator[Case]:
     volts = {row.node: row.voltage_v for row in subject.review.nodes}
     for element in subject.circuit.elements:
-        if not isinstance(element, Capacitor):
+        if not isinstance(element, Capacitor) or element.name in subject.circuit.attached:
             continue
         reason = polarised_by(element, subject.settings)
         positive, negative = element.nodes

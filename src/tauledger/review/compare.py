@@ -3,9 +3,9 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Iterator, Mapping
-from dataclasses import dataclass
 
 from tauledger.circuit.elements import Circuit
+from tauledger.records import dataclass
 from tauledger.review.attribution import Figures, Solve, attribute, figures
 from tauledger.review.changes import Attribution, Comparison, FigureChange, WordChange
 from tauledger.review.edits import find_edits, part_changes

@@ -2,9 +2,8 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
-
 from tauledger.problems import Problem
+from tauledger.records import dataclass
 
 
 @dataclass(frozen=True, slots=True)
@@ -42,9 +41,11 @@ class Contribution:
     share: float
     """Squared correlation with the logarithm of the figure over the boards, 0…1."""
     sensitivity: float | None
-    """d ln(figure)/d ln(value) at the nominal board; None for a shift."""
+    """d ln(figure)/d ln(value) at the nominal board; None for a shift. Of a linear figure
+    d(figure)/d ln(value), in its unit."""
     at_low: float
-    """Relative change of the figure with this draw alone at its low end."""
+    """Relative change of the figure with this draw alone at its low end; of a linear figure the
+    change in its unit."""
     at_high: float
 
 
@@ -60,11 +61,14 @@ class Yield:
     share: float
     lowest: float
     highest: float
+    least: float | None = None
+    """``minimum`` in the unit of the figure, a gain as a ratio; None when that end is open."""
+    most: float | None = None
 
 
 @dataclass(frozen=True, slots=True)
 class Histogram:
-    """Equal bins in the logarithm of the figure."""
+    """Equal bins in the logarithm of the figure, or in a linear figure itself."""
 
     edges: tuple[float, ...]
     counts: tuple[int, ...]
@@ -75,7 +79,8 @@ class FigureSpread:
     """How one figure differs over the boards."""
 
     figure: str
-    """``gain``, ``low corner`` or ``high corner``."""
+    """``gain``, ``low corner`` or ``high corner``; then those with limits, under the names that
+    ``check`` gives them, such as ``voltage of coll``."""
     unit: str
     nominal: float
     mean: float
@@ -93,6 +98,17 @@ class FigureSpread:
     histogram: Histogram
     kept: Yield | None = None
     """Against the limits of the configuration, where there are any."""
+    linear: bool = False
+    """Whether its changes are differences in its unit rather than ratios, as of a voltage, which
+    may be zero or negative."""
+
+
+@dataclass(frozen=True, slots=True)
+class DemandRow:
+    """Something asked of every board that is no figure with a spread: ``low corner set by CE``."""
+
+    demand: str
+    kept: Yield
 
 
 @dataclass(frozen=True, slots=True)
@@ -126,6 +142,7 @@ class Spread:
     """Boards that keep all limits."""
     notes: tuple[str, ...] = ()
     problems: tuple[Problem, ...] = ()
+    demands: tuple[DemandRow, ...] = ()
 
 
 @dataclass(frozen=True, slots=True)
@@ -146,14 +163,15 @@ class Alternative:
     """One way to meet the target."""
 
     rule: str
-    """``least total capacitance``, ``fewest different values`` or ``fewest changes``."""
+    """What it is best by: ``least total capacitance``, ``fewest changes``; several with ``; ``."""
     parts: tuple[FittedRow, ...]
     corner_hz: float
     """Exact −3 dB frequency with these values."""
     worst_hz: float | None
     """With every capacitor at the worse end of its tolerance; None without tolerances."""
     margin: float
-    """How far the corner (the worst one, when asked for) keeps from the target, relative."""
+    """How far the corner (the worst one, when asked for) is on the right side of the target,
+    relative to it; never less than the margin asked for."""
     peak_db: float
     """How far the response rises above midband on its way to the corner."""
     settling_s: float | None
@@ -162,6 +180,8 @@ class Alternative:
     """Of the capacitors it may change."""
     values: int
     """Different values among them."""
+    settling_ratio: float | None = None
+    """``settling_s`` over that of the netlist as it stands; None when one of them is none."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -218,6 +238,22 @@ class ResistorStress:
 
 
 @dataclass(frozen=True, slots=True)
+class DeviceStress:
+    """One transistor or diode at the operating point."""
+
+    part: str
+    model: str
+    power_w: float
+    """Into all its terminals, turned into heat."""
+    rated_w: float | None
+    """Of all its ``m`` devices in parallel."""
+    load: float | None
+    """Power over rating."""
+    basis: str
+    """What states the rating: a class of the configuration or a model card; empty without one."""
+
+
+@dataclass(frozen=True, slots=True)
 class Stress:
     """Everything ``tauledger stress`` shows."""
 
@@ -238,6 +274,8 @@ class Stress:
     high_effective_hz: float | None
     notes: tuple[str, ...] = ()
     problems: tuple[Problem, ...] = ()
+    devices: tuple[DeviceStress, ...] = ()
+    """Transistors and diodes, in netlist order."""
 
 
 @dataclass(frozen=True, slots=True)

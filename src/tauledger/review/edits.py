@@ -7,7 +7,7 @@ circuit: every part is either as it was or as it has become.
 from __future__ import annotations
 
 from collections.abc import Collection, Iterable, Mapping, Sequence
-from dataclasses import dataclass, replace
+from dataclasses import replace
 
 from tauledger.circuit.elements import (
     BehaviouralSource,
@@ -19,6 +19,7 @@ from tauledger.circuit.elements import (
     SemiconductorDevice,
 )
 from tauledger.circuit.evaluate import substitute
+from tauledger.records import dataclass
 from tauledger.review.changes import Detail, PartChange
 from tauledger.review.matching import Matching
 from tauledger.review.properties import Wires, part_kind, properties, signature

@@ -4,11 +4,12 @@ from __future__ import annotations
 
 import math
 from collections.abc import Mapping
-from dataclasses import dataclass, field
+from dataclasses import field
 
 import numpy as np
 from numpy.typing import NDArray
 
+from tauledger.records import dataclass
 from tauledger.review.rows import PathRow
 from tauledger.smallsignal import Response
 

@@ -5,7 +5,6 @@ from __future__ import annotations
 import fnmatch
 import math
 from collections.abc import Iterable, Iterator
-from dataclasses import dataclass
 
 from tauledger.configuration.settings import (
     CapacitorClass,
@@ -16,6 +15,7 @@ from tauledger.configuration.settings import (
 )
 from tauledger.problems import Problem, Severity, SourceSpan
 from tauledger.quantity import format_quantity
+from tauledger.records import dataclass
 from tauledger.review.rows import CornerRow, PathRow, Review, TimeConstantRow, TransistorRow
 
 CODES = {
@@ -271,11 +271,11 @@ def class_of(part: str, classes: Iterable[CapacitorClass]) -> CapacitorClass | N
 def _check_dominance(asked: Dominance, path: PathRow) -> LimitRow:
     corner = path.low if asked.end == "low" else path.high
     set_by = corner.set_by if corner is not None else ()
-    wanted = _plain(asked.part)
+    wanted = plain_name(asked.part)
     name = f"{asked.end} corner set by {asked.part}"
-    here = [part for part in set_by if _plain(part) == wanted]
+    here = [part for part in set_by if plain_name(part) == wanted]
     problem = None
-    if wanted not in {_plain(row.name) for row in path.time_constants}:
+    if wanted not in {plain_name(row.name) for row in path.time_constants}:
         verdict = UNKNOWN
         message = f"there is no capacitor or inductor {asked.part[:60]!r} in the circuit"
         problem = _finding("limit-subject-unknown", message, asked.span, "Correct the name.")
@@ -303,15 +303,15 @@ def _check_dominance(asked: Dominance, path: PathRow) -> LimitRow:
 
 def _shares(asked: Dominance, leader: str, path: PathRow) -> str:
     shares = {
-        _plain(row.name): row.share
+        plain_name(row.name): row.share
         for row in path.time_constants
         if row.end == asked.end and row.share is not None
     }
-    pair = [(name, shares.get(_plain(name))) for name in (leader, asked.part)]
+    pair = [(name, shares.get(plain_name(name))) for name in (leader, asked.part)]
     return ", ".join(f"{name} {share:.0%} of the sum" for name, share in pair if share is not None)
 
 
-def _plain(part: str) -> str:
+def plain_name(part: str) -> str:
     """Letter case and the ways to type π and μ do not matter."""
     name = part.casefold().replace("\u00b5", "\u03bc")
     head, dot, last = name.rpartition(".")

@@ -14,9 +14,9 @@ from __future__ import annotations
 
 from collections import Counter, defaultdict
 from collections.abc import Hashable, Iterable, Mapping, Sequence
-from dataclasses import dataclass
 
 from tauledger.circuit.elements import GROUND, Circuit, Element
+from tauledger.records import dataclass
 from tauledger.review.properties import Wires, is_symmetric, part_kind, signature
 
 _ROUNDS = 12

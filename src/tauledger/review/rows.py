@@ -6,10 +6,10 @@ note says why.
 
 from __future__ import annotations
 
-from dataclasses import dataclass
 from typing import TYPE_CHECKING
 
 from tauledger.problems import Problem
+from tauledger.records import dataclass
 
 if TYPE_CHECKING:  # a comparison is rare, and its classes take a while to make
     from tauledger.review.changes import Comparison
@@ -128,7 +128,8 @@ class TimeConstantRow:
     zero_hz: float | None
     """The zero it makes on its own, where that is finite and not zero."""
     dc_voltage_v: float | None
-    """From nodes[0] to nodes[1]; None for device capacitances and inductors."""
+    """From nodes[0] to nodes[1]; None for device capacitances, inductors and the load that the
+    configuration attaches, which is no part of the board."""
     reason: str
     """Why it stands at this end, with the figures compared."""
     expression: str = ""

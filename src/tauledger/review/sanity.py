@@ -10,7 +10,6 @@ from __future__ import annotations
 
 import math
 from collections.abc import Iterable, Iterator, Mapping
-from dataclasses import dataclass
 
 from tauledger.bias import DevicePoint, OperatingPoint
 from tauledger.circuit.elements import (
@@ -25,6 +24,7 @@ from tauledger.circuit.elements import (
 from tauledger.corners import Corners
 from tauledger.problems import Problem, Severity
 from tauledger.quantity import format_quantity
+from tauledger.records import dataclass
 from tauledger.review.rows import REGION_CODE, HeadroomRow, PathRow
 from tauledger.smallsignal import DeviceAdmittance, LinearNetwork
 from tauledger.topology.model import Topology, TransistorRole

@@ -40,11 +40,11 @@ def main() -> None:
 
 
 def limit_resources(cpu_s: int, memory_bytes: int, file_bytes: int) -> None:
-    """Set what the platform knows; where it knows nothing the parent's clock remains."""
-    try:
-        import resource
-    except ImportError:
+    """Set what the platform knows; on Windows only the parent's clock remains."""
+    if sys.platform == "win32":
         return
+    import resource
+
     for name, value in (
         ("RLIMIT_CPU", cpu_s),
         ("RLIMIT_AS", memory_bytes),

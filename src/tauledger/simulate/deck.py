@@ -10,7 +10,6 @@ from __future__ import annotations
 
 import re
 from collections.abc import Iterable, Mapping
-from dataclasses import dataclass
 
 from tauledger.circuit.elements import (
     GROUND,
@@ -33,6 +32,7 @@ from tauledger.circuit.elements import (
 )
 from tauledger.circuit.model_parameters import INSTANCE_PARAMETERS, is_known, known_names
 from tauledger.problems import Problem, ProblemError, Severity
+from tauledger.records import dataclass
 from tauledger.simulate.formula import FormulaError, FormulaPrinter, number
 
 TITLE = "deck rebuilt from parsed elements"

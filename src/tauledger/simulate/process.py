@@ -14,11 +14,11 @@ import subprocess
 import sys
 import tempfile
 from collections.abc import Mapping
-from dataclasses import dataclass
 from pathlib import Path
 from typing import Any, NoReturn
 
 from tauledger.problems import Problem, ProblemError, Severity
+from tauledger.records import dataclass
 from tauledger.simulate import child
 
 _SPICE_INIT = "* nothing is set here\n"

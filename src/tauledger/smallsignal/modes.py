@@ -10,11 +10,11 @@ and the poles are s₀ − 1/λ_k. One decomposition then serves every frequency
 from __future__ import annotations
 
 import math
-from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
 
+from tauledger.records import dataclass
 from tauledger.smallsignal.network import FloatArray
 
 ComplexArray = NDArray[np.complex128]
@@ -48,7 +48,10 @@ class Modes:
         """|H| at one frequency in rad/s."""
         distance = complex(-self.shift, omega)
         pairs = zip(self.weights.tolist(), self.eigenvalues.tolist(), strict=True)
-        return abs(sum([w / (1.0 + distance * value) for w, value in pairs], self.direct))
+        total = complex(self.direct)
+        for weight, value in pairs:
+            total += weight / (1.0 + distance * value)
+        return abs(total)
 
 
 def decompose(

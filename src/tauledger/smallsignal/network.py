@@ -6,10 +6,10 @@ Index −1 stands for ground. The leading axis of every value array is the batch
 
 from __future__ import annotations
 
-from dataclasses import dataclass
-
 import numpy as np
 from numpy.typing import NDArray
+
+from tauledger.records import dataclass
 
 FloatArray = NDArray[np.float64]
 

@@ -4,11 +4,12 @@ from __future__ import annotations
 
 import math
 from collections.abc import Sequence
-from dataclasses import dataclass, replace
+from dataclasses import replace
 
 import numpy as np
 
 from tauledger.circuit.elements import CurrentSource, IndependentSource
+from tauledger.records import dataclass
 from tauledger.smallsignal.modes import ComplexArray, Modes, decompose
 from tauledger.smallsignal.network import FloatArray, LinearNetwork, ReactivePart
 

@@ -3,9 +3,9 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass
 
 from tauledger.bias.solver import BiasSolution
+from tauledger.records import dataclass
 from tauledger.smallsignal.network import FloatArray
 
 

@@ -11,9 +11,9 @@ from __future__ import annotations
 
 import math
 from collections.abc import Mapping
-from dataclasses import dataclass
 
 from tauledger.circuit.elements import GROUND, Capacitor, Inductor
+from tauledger.records import dataclass
 from tauledger.topology.layout import Layout
 from tauledger.topology.model import CapacitorRole
 from tauledger.topology.wiring import Branch, Transistor
@@ -129,6 +129,7 @@ def _threshold(layout: Layout, branches: list[Branch], coupling: Mapping[str, ob
 
 
 def capacitance_f(branch: Branch) -> float:
+    """In F; zero for any other part."""
     return branch.element.capacitance_f if isinstance(branch.element, Capacitor) else 0.0
 
 
@@ -160,7 +161,6 @@ def preferred(place: Place, found: tuple[Transistor, ...]) -> Transistor | None:
 
 
 def has_inductor_to_ground(layout: Layout, node: str) -> bool:
-    return any(
-        isinstance(branch.element, Inductor) and branch.far(node) == GROUND
-        for branch in layout.wiring.at(node)
-    )
+    """Whether an inductor leads from a joined node to ground or a held node."""
+    there = layout.wiring.between(node, GROUND)
+    return any(isinstance(branch.element, Inductor) for branch in there)

@@ -69,7 +69,7 @@ def _loops(layout: Layout, quiet: frozenset[str]) -> Iterator[tuple[list[str], s
     contacts: dict[str, list[tuple[str, Branch]]] = {}
     direct: list[Branch] = []
     still = quiet | {GROUND} | _rails(layout)
-    for branch in _passive_branches(layout):
+    for *_, branch in layout.wiring.graph.edges(data="branch"):
         if branch.element.name in passed or not still.isdisjoint((branch.first, branch.second)):
             continue
         outer = [n for n in (branch.first, branch.second) if n in layout.level]
@@ -117,12 +117,3 @@ def _through_component(
     way = nx.shortest_path(inner, out.far(high), back.far(low))
     between = [inner.edges[pair]["part"] for pair in pairwise(way)]
     yield [out.element.name, *between, back.element.name], high, low
-
-
-def _passive_branches(layout: Layout) -> Iterator[Branch]:
-    seen: set[str] = set()
-    for branches in layout.wiring.branches.values():
-        for branch in branches:
-            if branch.element.name not in seen:
-                seen.add(branch.element.name)
-                yield branch

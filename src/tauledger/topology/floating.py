@@ -53,11 +53,8 @@ def floating_role(place: Place, branch: Branch) -> CapacitorRole:
 
 
 def _bridged_by(layout: Layout, branch: Branch) -> Resistor | Inductor | Diode | None:
-    near, far = branch.first, branch.second
-    if len(layout.wiring.at(near)) > len(layout.wiring.at(far)):
-        near, far = far, near
-    for other in layout.wiring.at(near):
-        if other.far(near) == far and not isinstance(other.element, Capacitor):
+    for other in layout.wiring.between(branch.first, branch.second):
+        if not isinstance(other.element, Capacitor):
             return other.element
     return None
 

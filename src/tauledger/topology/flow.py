@@ -12,7 +12,6 @@ from __future__ import annotations
 
 import math
 from collections.abc import Iterator
-from dataclasses import dataclass
 from itertools import pairwise
 
 import networkx as nx
@@ -29,6 +28,7 @@ from tauledger.circuit.elements import (
     Resistor,
 )
 from tauledger.netlist.expression import Call, Expression, NodeVoltage, SourceCurrent
+from tauledger.records import dataclass
 from tauledger.topology.multiplier import is_multiplier
 from tauledger.topology.wiring import Branch, Transistor, Wiring
 
@@ -79,6 +79,7 @@ class Flow:
 
     @property
     def nodes(self) -> tuple[str, ...]:
+        """Joined nodes along the way, input and output included."""
         return (self.steps[0].start, *(step.end for step in self.steps)) if self.steps else ()
 
 
@@ -136,7 +137,7 @@ class _Losses:
 
     wiring: Wiring
     largest_f: float
-    driven: frozenset[str]
+    driven: frozenset[int]
     """Clusters a collector or drain feeds."""
     followed: frozenset[str]
     """Nodes that emitters command whose collectors stand at ground for the signal."""

@@ -3,9 +3,9 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass
 
 from tauledger.circuit.elements import GROUND, Capacitor, Inductor, Resistor
+from tauledger.records import dataclass
 from tauledger.topology.flow import Flow, control_nodes, follow
 from tauledger.topology.model import SignalPath, TransistorRole
 from tauledger.topology.stages import Stage
@@ -27,6 +27,7 @@ class Layout:
     """Joined nodes the signal passes; a differential output's second node included."""
 
     def enters_base(self, transistor: Transistor) -> bool:
+        """Whether the signal comes in at its base or gate."""
         role = self.transistors[transistor.name]
         return role.input_terminal == transistor.word("base")
 
@@ -38,6 +39,7 @@ def lay_out(
     transistors: Mapping[str, TransistorRole],
     path: SignalPath,
 ) -> Layout:
+    """Number the nodes by the stages before them, those beside the way included."""
     level: dict[str, int] = {}
     done = 0
     for node in flow.nodes:
@@ -97,10 +99,8 @@ def series_neighbours(wiring: Wiring, node: str) -> dict[str, str]:
 def touches_rail(wiring: Wiring, node: str) -> bool:
     """Whether a resistor, inductor or diode leads straight to a node that a source holds."""
     return any(
-        not isinstance(branch.element, Capacitor)
-        and branch.far(node) == GROUND
-        and GROUND not in branch.element.nodes[:2]
-        for branch in wiring.at(node)
+        not isinstance(branch.element, Capacitor) and GROUND not in branch.element.nodes[:2]
+        for branch in wiring.between(node, GROUND)
     )
 
 

@@ -3,7 +3,8 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass
+
+from tauledger.records import dataclass
 
 
 @dataclass(frozen=True, slots=True)
@@ -28,6 +29,8 @@ class SignalPath:
 
 @dataclass(frozen=True, slots=True)
 class TransistorRole:
+    """What one transistor is there for."""
+
     name: str
     configuration: str
     """See :mod:`tauledger.topology.transistors` for the list of words."""
@@ -51,6 +54,8 @@ class StageOutline:
 
 @dataclass(frozen=True, slots=True)
 class CapacitorRole:
+    """What one capacitor is there for, and the sentence that says why."""
+
     name: str
     role: str
     """See :mod:`tauledger.topology.capacitors` for the list of words."""
@@ -61,6 +66,8 @@ class CapacitorRole:
 
 @dataclass(frozen=True, slots=True)
 class Topology:
+    """What recognition found for one signal path; every transistor and capacitor has a role."""
+
     path: SignalPath
     path_nodes: tuple[str, ...]
     """Nodes the signal passes, input to output."""

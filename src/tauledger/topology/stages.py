@@ -9,10 +9,10 @@ from __future__ import annotations
 
 import math
 from collections.abc import Iterator, Mapping
-from dataclasses import dataclass
 from itertools import islice
 
 from tauledger.circuit.elements import GROUND
+from tauledger.records import dataclass
 from tauledger.topology import transistors as words
 from tauledger.topology.flow import Flow, Step
 from tauledger.topology.model import StageOutline, TransistorRole

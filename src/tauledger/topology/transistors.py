@@ -6,10 +6,11 @@ The words are the trade's own (common practice, no source).
 from __future__ import annotations
 
 from collections.abc import Iterator, Mapping, Sequence
-from dataclasses import dataclass, replace
+from dataclasses import replace
 from itertools import combinations
 
 from tauledger.circuit.elements import GROUND, Capacitor, Resistor
+from tauledger.records import dataclass
 from tauledger.topology.flow import Step
 from tauledger.topology.wiring import Branch, Transistor, Wiring
 
@@ -196,9 +197,8 @@ def _links_emitters(branch: Branch, largest: float) -> bool:
 def _is_bypassed(wiring: Wiring, node: str, largest: float) -> bool:
     return any(
         isinstance(branch.element, Capacitor)
-        and branch.far(node) == GROUND
         and branch.element.capacitance_f >= _BYPASS_SHARE * largest
-        for branch in wiring.at(node)
+        for branch in wiring.between(node, GROUND)
     )
 
 

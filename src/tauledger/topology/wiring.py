@@ -1,14 +1,17 @@
-"""The flat circuit as recognition looks at it: nodes that are one for the signal, and their parts.
+"""The circuit as the graph that recognition walks: nodes that are one for the signal, and parts.
 
 Voltage sources are short circuits for the signal, so nodes they join are one node here; every
 node so joined to ground is *held* (AC ground). The driven source alone keeps its two nodes apart.
+Two-terminal parts are the edges of the graph; a transistor stands at its nodes as three terminals,
+and becomes edges with a direction in flow.py.
 """
 
 from __future__ import annotations
 
 import math
 from collections.abc import Iterable, Iterator, Mapping
-from dataclasses import dataclass
+
+import networkx as nx
 
 from tauledger.bias.point import DevicePoint, OperatingPoint
 from tauledger.circuit.elements import (
@@ -19,7 +22,6 @@ from tauledger.circuit.elements import (
     Circuit,
     ControlledSource,
     Diode,
-    Element,
     IndependentSource,
     Inductor,
     JunctionFet,
@@ -27,6 +29,7 @@ from tauledger.circuit.elements import (
     Resistor,
     VoltageSource,
 )
+from tauledger.records import dataclass
 
 TwoTerminal = Resistor | Capacitor | Inductor | Diode
 
@@ -66,6 +69,7 @@ class Transistor:
 
     @property
     def nodes(self) -> tuple[str, str, str]:
+        """Joined nodes of collector, base and emitter."""
         return (self.collector, self.base, self.emitter)
 
     def node(self, terminal: str) -> str:
@@ -86,6 +90,7 @@ class Branch:
     second: str
 
     def far(self, node: str) -> str:
+        """The other end; ``node`` itself when both ends are there."""
         return self.second if node == self.first else self.first
 
     @property
@@ -98,20 +103,28 @@ class Branch:
 
 @dataclass(frozen=True, slots=True)
 class Wiring:
+    """What every rule of recognition looks at: the graph of the parts, and the transistors on it.
+
+    Figures in S are rough: they weigh one route for the signal against another.
+    """
+
     circuit: Circuit
     joined: Mapping[str, str]
     """Every node to the name that stands for it; held nodes map to ground."""
     held: frozenset[str]
     """Nodes, in the circuit's spelling, at ground for the signal; ground included."""
+    graph: nx.MultiGraph
+    """Joined nodes, ground included; each two-terminal part an edge, keyed by its name, with the
+    attribute ``branch``."""
     branches: Mapping[str, tuple[Branch, ...]]
-    """Joined node to the two-terminal parts there; ground included."""
+    """Joined node to the edges there; at hand, as a node with very many of them is asked often."""
     transistors: Mapping[str, Transistor]
     terminals: Mapping[str, tuple[tuple[Transistor, str], ...]]
     """Joined node to the transistor terminals there."""
     conductance_s: Mapping[str, float]
     """Joined node to the rough conductance from it to everywhere else, in S."""
-    cluster: Mapping[str, str]
-    """Joined node to the name of the nodes it is coupled to by capacitors off ground."""
+    cluster: Mapping[str, int]
+    """Joined node to the number of the nodes it is coupled to by capacitors off ground."""
     cluster_conductance_s: Mapping[str, float]
     """Joined node to the conductance from all nodes of its cluster, in S."""
     shunted: frozenset[str]
@@ -122,14 +135,22 @@ class Wiring:
     """Voltage source, by name in lower case, to its joined nodes."""
 
     def at(self, node: str) -> tuple[Branch, ...]:
+        """The two-terminal parts at a joined node."""
         return self.branches.get(node, ())
 
+    def between(self, one: str, other: str) -> Iterator[Branch]:
+        """The parts that lead straight from one joined node to the other."""
+        for edge in (self.graph.get_edge_data(one, other) or {}).values():
+            yield edge["branch"]
+
     def capacitors(self) -> Iterator[Branch]:
+        """Every capacitor, in the order of the netlist."""
         for element in self.circuit.elements:
             if isinstance(element, Capacitor):
                 yield Branch(element, *(self.joined[node] for node in element.nodes[:2]))
 
     def transistors_at(self, node: str, terminal: str) -> tuple[Transistor, ...]:
+        """Those with their ``collector``, ``base`` or ``emitter`` at a joined node."""
         return tuple(t for t, where in self.terminals.get(node, ()) if where == terminal)
 
 
@@ -139,25 +160,31 @@ def wire(
     preferred: tuple[str, ...] = (),
     point: OperatingPoint | None = None,
 ) -> Wiring:
-    """Join nodes and sort the parts; ``preferred`` nodes lend their name to the ones they join."""
+    """Join nodes and put the parts between them; ``driven`` names the source kept apart.
+
+    ``preferred`` nodes lend their name to the ones they join. Without an operating point typical
+    figures stand for a transistor's own.
+    """
     joined = _join(circuit, driven, preferred)
-    branches: dict[str, list[Branch]] = {}
-    terminals: dict[str, list[tuple[Transistor, str]]] = {}
-    transistors: dict[str, Transistor] = {}
-    for element in circuit.elements:
-        if isinstance(element, TwoTerminal):
-            branch = Branch(element, joined[element.nodes[0]], joined[element.nodes[1]])
-            for node in {branch.first, branch.second}:
-                branches.setdefault(node, []).append(branch)
-        elif isinstance(element, BipolarTransistor | JunctionFet | MosFet):
-            transistor = _transistor(element, joined, point)
-            transistors[element.name] = transistor
-            for terminal, node in zip(_TERMINALS["bipolar"], transistor.nodes, strict=True):
-                terminals.setdefault(node, []).append((transistor, terminal))
-    conductance = {
-        node: _conductance(node, branches, terminals) for node in {*branches, *terminals}
+    graph = _part_graph(circuit, joined)
+    branches = {
+        node: tuple(edge["branch"] for edges in there.values() for edge in edges.values())
+        for node, there in graph.adjacency()
     }
-    cluster = _clusters(branches)
+    transistors = {
+        element.name: _transistor(element, joined, point)
+        for element in circuit.elements
+        if isinstance(element, BipolarTransistor | JunctionFet | MosFet)
+    }
+    terminals: dict[str, list[tuple[Transistor, str]]] = {}
+    for transistor in transistors.values():
+        for terminal, node in zip(_TERMINALS["bipolar"], transistor.nodes, strict=True):
+            terminals.setdefault(node, []).append((transistor, terminal))
+    conductance = {
+        node: _conductance(node, branches, terminals)
+        for node in dict.fromkeys((*branches, *terminals))
+    }
+    cluster = _clusters(graph)
     shunted = frozenset(
         branch.far(GROUND)
         for branch in branches.get(GROUND, ())
@@ -168,20 +195,15 @@ def wire(
         circuit,
         joined,
         frozenset(node for node, name in joined.items() if name == GROUND),
-        {node: tuple(found) for node, found in branches.items()},
+        graph,
+        branches,
         transistors,
         {node: tuple(found) for node, found in terminals.items()},
         conductance,
         cluster,
         _sum_by_cluster(conductance, cluster),
         shunted,
-        frozenset(
-            joined[node]
-            for element in circuit.elements
-            if isinstance(element, IndependentSource | ControlledSource | BehaviouralSource)
-            for node in element.nodes
-        )
-        - {GROUND},
+        _fed(circuit, joined),
         {
             element.name.casefold(): tuple(joined[node] for node in element.nodes)
             for element in circuit.elements
@@ -190,34 +212,52 @@ def wire(
     )
 
 
-def _clusters(branches: Mapping[str, list[Branch]]) -> dict[str, str]:
+def _part_graph(circuit: Circuit, joined: Mapping[str, str]) -> nx.MultiGraph:
+    graph = nx.MultiGraph()
+    for element in circuit.elements:
+        if isinstance(element, TwoTerminal):
+            branch = Branch(element, joined[element.nodes[0]], joined[element.nodes[1]])
+            graph.add_edge(branch.first, branch.second, key=element.name, branch=branch)
+    return graph
+
+
+def _fed(circuit: Circuit, joined: Mapping[str, str]) -> frozenset[str]:
+    sources = IndependentSource | ControlledSource | BehaviouralSource
+    outputs = (e.nodes for e in circuit.elements if isinstance(e, sources))
+    return frozenset(joined[node] for nodes in outputs for node in nodes) - {GROUND}
+
+
+def _clusters(graph: nx.MultiGraph) -> dict[str, int]:
     """Nodes joined by capacitors off ground, the far smaller ones left out."""
-    coupling = {
-        branch.element.name: (branch.element.capacitance_f, branch)
-        for node, found in branches.items()
-        for branch in found
+    coupling = [
+        (branch.element.capacitance_f, branch)
+        for *_, branch in graph.edges(data="branch")
         if isinstance(branch.element, Capacitor) and GROUND not in (branch.first, branch.second)
+    ]
+    least = _COUPLING_SHARE * max((farads for farads, _ in coupling), default=0.0)
+    coupled = nx.Graph()
+    coupled.add_nodes_from(graph)
+    coupled.add_edges_from((b.first, b.second) for farads, b in coupling if farads >= least)
+    return {
+        node: number
+        for number, nodes in enumerate(nx.connected_components(coupled))
+        for node in nodes
     }
-    least = _COUPLING_SHARE * max((farads for farads, _ in coupling.values()), default=0.0)
-    union = Union()
-    for farads, branch in coupling.values():
-        if farads >= least:
-            union.join(branch.first, branch.second)
-    return {node: union.find(node) for node in branches}
 
 
 def _sum_by_cluster(
-    conductance: Mapping[str, float], cluster: Mapping[str, str]
+    conductance: Mapping[str, float], cluster: Mapping[str, int]
 ) -> dict[str, float]:
-    total: dict[str, float] = {}
-    for node, name in cluster.items():
-        total[name] = total.get(name, 0.0) + conductance[node]
-    return {node: total[name] for node, name in cluster.items()}
+    total: dict[int, float] = {}
+    for node, value in conductance.items():
+        if node in cluster:
+            total[cluster[node]] = total.get(cluster[node], 0.0) + value
+    return {node: total[number] for node, number in cluster.items()}
 
 
 def _conductance(
     node: str,
-    branches: Mapping[str, list[Branch]],
+    branches: Mapping[str, tuple[Branch, ...]],
     terminals: Mapping[str, list[tuple[Transistor, str]]],
 ) -> float:
     total = sum(branch.conductance_s for branch in branches.get(node, ()))
@@ -247,36 +287,24 @@ def _lift_inputs(
         conductance[transistor.base] -= transistor.input_s * loop / (1.0 + loop)
 
 
-class Union:
-    """Disjoint sets of nodes; the first of two joined lends its name."""
-
-    def __init__(self) -> None:
-        self._parent: dict[str, str] = {}
-
-    def find(self, node: str) -> str:
-        parent = self._parent
-        parent.setdefault(node, node)
-        while parent[node] != node:
-            parent[node] = parent[parent[node]]
-            node = parent[node]
-        return node
-
-    def join(self, first: str, second: str) -> None:
-        self._parent[self.find(second)] = self.find(first)
-
-
 def _join(circuit: Circuit, driven: str, preferred: tuple[str, ...]) -> dict[str, str]:
-    union = Union()
-    rank = {node: index for index, node in enumerate(dict.fromkeys((GROUND, *preferred)))}
-    nodes = {GROUND: None}
+    """Every node to the name of those that voltage sources join it to.
+
+    That is ground, else the first of the preferred ones, else the circuit's own first.
+    """
     kept = {driven, *_sensing(circuit)}
-    for element in circuit.elements:
-        nodes.update(dict.fromkeys(element.nodes))
-        if _is_short(element) and element.name not in kept:
-            ends = [union.find(node) for node in element.nodes[:2]]
-            ends.sort(key=lambda node: rank.get(node, len(rank)))
-            union.join(ends[0], ends[1])
-    return {node: union.find(node) for node in nodes}
+    joints = nx.Graph()
+    joints.add_edges_from(
+        element.nodes
+        for element in circuit.elements
+        if isinstance(element, VoltageSource) and element.name not in kept
+    )
+    nodes = (GROUND, *circuit.nodes)
+    rank = {node: place for place, node in enumerate(dict.fromkeys((GROUND, *preferred, *nodes)))}
+    names = {node: node for node in nodes}
+    for joined in nx.connected_components(joints):
+        names.update(dict.fromkeys(joined, min(joined, key=rank.__getitem__)))
+    return names
 
 
 def _sensing(circuit: Circuit) -> Iterator[str]:
@@ -288,12 +316,6 @@ def _sensing(circuit: Circuit) -> Iterator[str]:
         is_meter = isinstance(element, VoltageSource) and element.dc == 0.0
         if is_meter and element.name.casefold() in controls:
             yield element.name
-
-
-def _is_short(element: Element) -> bool:
-    if isinstance(element, Resistor):
-        return element.resistance_ohm == 0.0
-    return isinstance(element, VoltageSource)
 
 
 def _transistor(

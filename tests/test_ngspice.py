@@ -8,7 +8,7 @@ from pathlib import Path
 import numpy as np
 import pytest
 
-from referee import ngspice
+import ngspice
 
 pytestmark = pytest.mark.referee
 
@@ -71,6 +71,12 @@ def test_operating_point_stops_at_end(netlist: Path) -> None:
     point = ngspice.operating_point(netlist, ["@R2[i]"])
     assert point.voltages == pytest.approx({"in": 3, "a": 0, "b": 0, "out": 0}, abs=1e-9)
     assert point.figures == pytest.approx({"@r2[i]": 0}, abs=1e-15)
+
+
+def test_a_failed_analysis_is_not_answered_with_the_one_before() -> None:
+    asked = [("op", "v(in)"), ("alter nowhere = 2\nac lin 0 5 1", "v(in)")]
+    with pytest.raises(ngspice.RefereeError, match=r"1\.raw"):
+        ngspice.run(BAND_PASS, asked)
 
 
 def test_failure_says_what_ngspice_said(tmp_path: Path) -> None:

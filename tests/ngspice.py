@@ -1,13 +1,18 @@
-"""ngspice as the referee: operating point, device figures and frequency response of a netlist.
+"""ngspice as the referee of the tests: one bounded run, and the readings taken from it.
 
-Every run is one ``ngspice -b`` in a folder of its own with an empty ``.spiceinit``, on the
-netlist's own text followed by tight tolerances and a control block. ngspice returns 0 even when
-an analysis fails, so a run is judged by the vectors it wrote.
+A run is one ``ngspice -b`` in a folder of its own, without anyone's ``.spiceinit``, with memory and
+time bounded, on the netlist's own text followed by tight tolerances and a control block. ngspice
+returns 0 even when an analysis fails, so a run is judged by the vectors it wrote, and each analysis
+starts without the results of the one before. Vectors come in binary: every bit of them.
+
+Names of vectors are those ngspice writes, in lower case: ``v(out)``, ``i(vin)`` (into the source's
+first node), ``@q1[gm]``.
 """
 
 from __future__ import annotations
 
 import os
+import resource
 import shutil
 import subprocess
 import tempfile
@@ -22,11 +27,20 @@ from numpy.typing import NDArray
 # Three digits tighter than ngspice's own defaults, so that a disagreement is ours. gmin stays
 # at what the netlist says: it is part of the circuit both sides solve.
 OPTIONS = ".options reltol=1e-6 abstol=1e-15 vntol=1e-9 itl1=500"
+SINGLE_DEVICE = ".options reltol=1e-10 abstol=1e-18 vntol=1e-12 itl1=1000 itl2=1000"
+"""For a device held by sources, which converges to the last digits."""
+RESET = "reset"
+"""Without it ngspice 39 multiplies a diode's area by its m once more at every further analysis;
+it also takes back every ``alter``."""
 TIMEOUT_S = 60.0
+MEMORY_BYTES = 2 << 30
+"""ngspice 39 fills the memory of the machine on some decks that it cannot solve."""
 WIDE_HZ = (1e-3, 1e11)
 POINTS_PER_DECADE = 40
 NARROW_POINTS = 401
 HALF_POWER = np.sqrt(0.5)
+
+Vectors = dict[str, NDArray[Any]]
 
 
 class RefereeError(Exception):
@@ -60,15 +74,10 @@ class Band:
     high_hz: float | None
 
 
-def found() -> bool:
-    """Whether ngspice is on this machine."""
-    return shutil.which("ngspice") is not None
-
-
 def operating_point(netlist: Path, figures: Iterable[str] = ()) -> Point:
     """Node voltages, and the device figures asked for, such as ``@q1[gm]``."""
     wanted = tuple(figure.lower() for figure in figures)
-    [vectors] = run(netlist, ["op"], " ".join(("all", *wanted)))
+    [vectors] = run(netlist.read_text(), [("op", " ".join(("all", *wanted)))])
     return Point(
         voltages={
             name[2:-1]: float(value[0])
@@ -77,6 +86,44 @@ def operating_point(netlist: Path, figures: Iterable[str] = ()) -> Point:
         },
         figures={name: float(vectors[name][0]) for name in wanted},
     )
+
+
+def bias_points(
+    elements: str,
+    points: Sequence[Mapping[str, float]],
+    vectors: Sequence[str],
+    temperature_c: float = 27.0,
+) -> list[dict[str, float]]:
+    """The vectors at every point, which maps names of independent sources to their DC values.
+
+    ``elements`` holds elements and models only, without a title.
+    """
+    names = " ".join(vectors)
+    asked = []
+    for point in points:
+        lines = [f"alter {name} dc = {value!r}" for name, value in point.items()]
+        asked.append(("\n".join([RESET, *lines, "op"]), names))
+    found = run(f"bias points\n{elements}", asked, single_device(temperature_c))
+    return [{name: float(row[name.lower()][0]) for name in vectors} for row in found]
+
+
+def phasors(
+    elements: str, frequency_hz: float, vectors: Sequence[str], temperature_c: float = 27.0
+) -> dict[str, complex]:
+    """The vectors at one frequency, with the sources as the elements state them."""
+    analysis = f"ac lin 1 {frequency_hz!r} {frequency_hz!r}"
+    text = f"phasors\n{elements}"
+    [found] = run(text, [(analysis, " ".join(vectors))], single_device(temperature_c))
+    return {name: complex(found[name.lower()][0]) for name in vectors}
+
+
+def values(lines: Sequence[str], parameters: str = "") -> list[float]:
+    """The voltage of node ``n0``, ``n1``, … for each element line; ``{n}`` is its number."""
+    elements = [line.replace("{n}", str(number)) for number, line in enumerate(lines)]
+    text = "\n".join(["values", parameters, *elements])
+    names = [f"v(n{number})" for number in range(len(lines))]
+    [vectors] = run(text, [("op", " ".join(names))])
+    return [float(vectors[name][0]) for name in names]
 
 
 def sweep(netlist: Path, output: str, analysis: str) -> Sweep:
@@ -88,7 +135,8 @@ def sweeps(netlist: Path, output: str, analyses: Sequence[str]) -> list[Sweep]:
     """Several AC analyses in one run, each perhaps behind lines with ``alter``."""
     names = [f"v({node.lower()})" for node in output.split(",") if node != "0"]
     results = []
-    for vectors in run(netlist, analyses, " ".join(names)):
+    asked = [(analysis, " ".join(names)) for analysis in analyses]
+    for vectors in run(netlist.read_text(), asked):
         response = vectors[names[0]] - (vectors[names[1]] if len(names) > 1 else 0.0)
         results.append(Sweep(vectors["frequency"].real, np.asarray(response, dtype=complex)))
     return results
@@ -145,53 +193,77 @@ def interpolate(response: Sweep, level: float) -> float:
     return float(low + fraction * (high - low))
 
 
+def flat_name(name: str) -> str:
+    """``X1.Q2`` as ngspice names it once subcircuits are expanded: ``q.x1.q2``."""
+    *path, own = name.lower().split(".")
+    return ".".join([own[0], *path, own]) if path else own
+
+
 def altered(values: Mapping[str, float]) -> str:
     """Command lines that give elements (by ngspice's names) other values from here on."""
     return "".join(f"alter {name} = {value!r}\n" for name, value in values.items())
 
 
-def run(netlist: Path, analyses: Sequence[str], vectors: str) -> list[dict[str, NDArray[Any]]]:
-    """Run the analyses and return the named vectors of each, names in lower case.
+def single_device(temperature_c: float) -> str:
+    """Options for a device held by sources at this temperature."""
+    return f"{SINGLE_DEVICE}\n.options temp={temperature_c!r}"
 
-    An analysis is one command line or several, of which the last computes something.
+
+def run(text: str, asked: Sequence[tuple[str, str]], options: str = OPTIONS) -> list[Vectors]:
+    """Run analyses on a netlist with its title and return the vectors of each.
+
+    Each is a command line, or several of which the last computes something, and the vectors asked
+    for with blanks between. Raises RefereeError where one of them is missing.
     """
-    executable = shutil.which("ngspice")
-    if executable is None:
-        raise RefereeError("ngspice is not installed")
     with tempfile.TemporaryDirectory(prefix="referee-") as folder:
-        work = Path(folder)
-        (work / ".spiceinit").write_text("* nothing from outside\n")
-        (work / "deck.cir").write_text(deck(netlist.read_text(), analyses, vectors))
-        done = subprocess.run(
-            [executable, "-b", "deck.cir"],
-            cwd=work,
-            env={"PATH": os.environ.get("PATH", ""), "HOME": folder},
-            stdin=subprocess.DEVNULL,
-            capture_output=True,
-            text=True,
-            timeout=TIMEOUT_S,
-            check=False,
-        )
+        done = execute(deck(text, asked, options), Path(folder))
         try:
-            return [read_raw(work / f"{number}.raw") for number in range(len(analyses))]
+            return [read_raw(Path(folder, f"{number}.raw")) for number in range(len(asked))]
         except (OSError, ValueError) as error:
             raise RefereeError(f"{error}\n{done.stdout}\n{done.stderr}") from error
 
 
-def deck(text: str, analyses: Sequence[str], vectors: str) -> str:
-    """The netlist up to its ``.end``, with our tolerances and control block behind it."""
+def deck(text: str, asked: Sequence[tuple[str, str]], options: str) -> str:
+    """The netlist up to its ``.end``, with options and control block behind it."""
     lines = []
     for line in text.splitlines():
         if line.strip().lower() == ".end":
             break
         lines.append(line)
-    lines += [OPTIONS, ".control", "set filetype=binary"]
-    for number, analysis in enumerate(analyses):
-        lines += [analysis, f"write {number}.raw {vectors}"]
+    lines += [options, ".control", "set filetype=binary"]
+    for number, (analysis, vectors) in enumerate(asked):
+        # Else a failed analysis would write the vectors of the one before.
+        lines += ["destroy all", analysis, f"write {number}.raw {vectors}"]
     return "\n".join([*lines, "quit", ".endc", ".end", ""])
 
 
-def read_raw(path: Path) -> dict[str, NDArray[Any]]:
+def execute(
+    deck: str, folder: Path, timeout_s: float = TIMEOUT_S
+) -> subprocess.CompletedProcess[str]:
+    """Run a deck in an empty folder, which is its home too; nothing is judged."""
+    program = shutil.which("ngspice")
+    if program is None:
+        raise RefereeError("ngspice is not installed")
+    (folder / "deck.cir").write_text(deck, encoding="utf-8")
+    return subprocess.run(
+        [program, "-n", "-b", "deck.cir"],
+        cwd=folder,
+        env={"PATH": os.environ.get("PATH", ""), "HOME": str(folder)},
+        stdin=subprocess.DEVNULL,
+        capture_output=True,
+        text=True,
+        errors="replace",
+        timeout=timeout_s,
+        check=False,
+        preexec_fn=_bound_memory,
+    )
+
+
+def _bound_memory() -> None:
+    resource.setrlimit(resource.RLIMIT_AS, (MEMORY_BYTES, MEMORY_BYTES))
+
+
+def read_raw(path: Path) -> Vectors:
     """Vectors of a binary raw file with one plot, each (points,), float or complex."""
     header, _, data = path.read_bytes().partition(b"Binary:\n")
     lines = header.decode().splitlines()

@@ -24,7 +24,6 @@ if TYPE_CHECKING:
     from tauledger.report.starter_parts import PartFound
     from tauledger.review.decisions import Stress
 
-FORMATS = ("text", "markdown", "github", "gitlab", "sarif", "junit", "json")
 FEW = 40
 """So many netlists are done in this process before workers would have started (measured)."""
 
@@ -58,7 +57,7 @@ def _progress(total: int, stream: TextIO) -> Callable[[int], None] | None:
 def render(
     checks: Sequence[NetlistCheck], form: str, threshold: Severity, encoding: str | None
 ) -> str:
-    """The checks in one of :data:`FORMATS`; ``encoding`` is that of the stream, for text."""
+    """The checks in one format; ``encoding`` is that of the stream, for text."""
     folder = Path.cwd()
     match form:
         case "markdown":

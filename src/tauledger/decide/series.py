@@ -36,17 +36,12 @@ def mantissas(series: str) -> tuple[float, ...]:
     return tuple((920 if value == 919 else value) / 100.0 for value in hundreds)
 
 
-def ceiling(value: float, series: str) -> float:
-    """The smallest value of the series that is not below ``value`` (> 0).
-
-    >>> ceiling(2.3e-6, "E6")
-    3.3e-06
-    """
-    return _neighbours(value, series)[1]
-
-
 def floor(value: float, series: str) -> float:
-    """The largest value of the series that is not above ``value`` (> 0)."""
+    """The largest value of the series that is not above ``value`` (> 0).
+
+    >>> floor(2.3e-6, "E6")
+    2.2e-06
+    """
     return _neighbours(value, series)[0]
 
 

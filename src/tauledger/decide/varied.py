@@ -202,7 +202,8 @@ def _configured(element: Element, settings: PathSettings) -> Iterator[Found]:
             if _fits(element.name, entry.match):
                 if entry.tolerance:
                     group = entry.name if entry.matched is not None else ""
-                    yield VALUE, entry.tolerance, group, entry.matched or 0.0
+                    # Two parts differ most with each half the difference off, either way.
+                    yield VALUE, entry.tolerance, group, (entry.matched or 0.0) / 2.0
                 return
     if isinstance(element, SemiconductorDevice):
         for kind in settings.transistors:

@@ -13,7 +13,7 @@ import numpy as np
 
 from tauledger.bias.continuation import gmin_stepping, pseudo_transient, source_stepping
 from tauledger.bias.diagnosis import explain_failure
-from tauledger.bias.equations import Equations, Variations, build_equations
+from tauledger.bias.equations import Equations, build_equations
 from tauledger.bias.newton import (
     Helps,
     IntArray,
@@ -23,6 +23,7 @@ from tauledger.bias.newton import (
     take_boards,
 )
 from tauledger.bias.point import DevicePoint, OperatingPoint
+from tauledger.bias.stamps import Variations
 from tauledger.circuit.elements import Circuit
 from tauledger.devices.interface import OperatingValues, Value
 from tauledger.problems import Problem, ProblemError, Severity

@@ -16,7 +16,7 @@ from numpy.typing import NDArray
 
 from tauledger.analysis import Analysis
 from tauledger.bias import BiasSolution, solve_bias
-from tauledger.bias.equations import Variations
+from tauledger.bias.stamps import Variations
 from tauledger.circuit.elements import Circuit, IndependentSource
 from tauledger.corners.band import HALF_POWER, find_passband, sweep_response
 from tauledger.decide.edges import find_edges

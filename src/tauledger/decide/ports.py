@@ -13,7 +13,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from tauledger.analysis import Analysis
-from tauledger.bias.equations import Variations
+from tauledger.bias.stamps import Variations
 from tauledger.circuit.elements import Resistor
 from tauledger.records import dataclass
 from tauledger.smallsignal.network import LinearNetwork, ReactivePart

@@ -4,9 +4,10 @@ from __future__ import annotations
 
 import numpy as np
 
-from tauledger.bias.equations import DeviceGroup, Equations, Scatter
+from tauledger.bias.equations import DeviceGroup, Equations
 from tauledger.bias.newton import linearise
 from tauledger.bias.solver import BiasSolution
+from tauledger.bias.stamps import Scatter
 from tauledger.circuit.elements import Capacitor, Inductor
 from tauledger.devices.interface import FloatArray, OperatingValues
 from tauledger.smallsignal.network import LinearNetwork, ReactivePart

@@ -64,6 +64,18 @@ def test_wildcards_are_expanded_where_the_shell_leaves_them(
 
 
 @pytest.mark.usefixtures("windows")
+def test_a_file_that_exists_stands_for_itself(
+    boards: Path, capfd: pytest.CaptureFixture[str]
+) -> None:
+    """Brackets are letters of a file name there; as a wildcard they would name another file."""
+    for name in ("amp[2].cir", "amp2.cir"):
+        (boards / name).write_text(DIVIDER)
+    assert main(["check", "amp[2].cir", "amp[23].cir", "--format", "json"]) == 0
+    named = [one["netlist"] for one in json.loads(capfd.readouterr().out)["checks"]]
+    assert named == ["amp[2].cir", "amp2.cir"]
+
+
+@pytest.mark.usefixtures("windows")
 def test_a_reader_that_has_gone_is_silent_there_too() -> None:
     def write() -> None:
         raise OSError(errno.EINVAL, "Invalid argument")

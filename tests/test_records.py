@@ -11,6 +11,7 @@ import subprocess
 import sys
 from dataclasses import field
 from pathlib import Path
+from typing import Any, ClassVar
 
 import pytest
 
@@ -125,6 +126,46 @@ def test_a_dataclass_of_another_make_cannot_be_a_base() -> None:
         @dataclass(frozen=True, slots=True)
         class Mixed(PlainPart):
             value: float = 0.0
+
+
+def _made(**namespace: Any) -> type:
+    """A record of this body, as the decorator gets it."""
+    return dataclass(frozen=True, slots=True)(type("Made", (), namespace))
+
+
+@pytest.mark.parametrize(
+    ("body", "told"),
+    [
+        ({"__annotations__": {"x": "int"}, "__repr__": lambda self: "mine"}, "__repr__"),
+        ({"__annotations__": {"x": "int"}, "__eq__": lambda self, other: True}, "__eq__"),
+        ({"__annotations__": {"x": "int"}, "__post_init__": lambda self: None}, "__post_init__"),
+        ({"__annotations__": {"x": "ClassVar[dict[str, a.b]]"}, "x": 1}, "ClassVar"),
+        ({"__annotations__": {"x": ClassVar[int]}, "x": 1}, "ClassVar"),
+        ({"__annotations__": {"x": "dataclasses.InitVar[int]"}}, "InitVar"),
+        ({"__annotations__": {"x": "list[int]"}, "x": []}, "mutable"),
+        ({"__annotations__": {"x": "int"}, "x": field(default=1)}, "default_factory"),
+        (
+            {"__annotations__": {"x": "list[int]"}, "x": field(default_factory=list, repr=False)},
+            "default_factory",
+        ),
+        ({"__annotations__": {"x": "int", "y": "int"}, "x": 1}, "y without a default"),
+    ],
+)
+def test_what_the_standard_library_would_do_otherwise_is_refused(
+    body: dict[str, Any], told: str
+) -> None:
+    with pytest.raises(TypeError, match=told):
+        _made(**body)
+
+
+def test_a_plain_subclass_keeps_its_own_init() -> None:
+    record = _made(__annotations__={"x": "int"})
+
+    class Five(record):  # type: ignore[misc, valid-type]
+        def __init__(self) -> None:
+            super().__init__(5)
+
+    assert [Five().x, Five().x] == [5, 5]
 
 
 def test_another_process_can_read_them() -> None:

@@ -20,7 +20,7 @@ from tauledger.circuit.islands import restrict
 from tauledger.corners import Corners, find_corners, hand_expressions, stage_formulas, workbench
 from tauledger.netlist import Netlist
 from tauledger.netlist import read as read_netlist
-from tauledger.problems import ProblemError
+from tauledger.problems import Problem, ProblemError
 from tauledger.records import dataclass
 from tauledger.review.assemble import path_row, review_of
 from tauledger.review.rows import Review
@@ -180,7 +180,8 @@ def _solve(
     square_wave_hz: float | None = None,
 ) -> _Solved:
     if floating := find_floating_nodes(circuit):
-        raise ProblemError(*floating)
+        # A connector that was left out is the usual cause.
+        raise ProblemError(*floating, *_left_out(circuit))
     path = choose_path(circuit, input, output)
     solution = solve_bias(circuit)
     network = linear_network(solution)
@@ -193,6 +194,10 @@ def _solve(
     supplies = _supply_pairs(circuit, network, path.source)
     corners = find_corners(exact, network.parts, held, supplies, midband_hz, square_wave_hz)
     return _Solved(path, solution, network, exact, held, corners)
+
+
+def _left_out(circuit: Circuit) -> list[Problem]:
+    return [found for found in circuit.problems if found.code == "element-left-out"]
 
 
 def _completed(

@@ -115,6 +115,7 @@ def starter_for(
     """
     from tauledger.analysis import analyze, read
     from tauledger.circuit import flatten
+    from tauledger.circuit.generic import generic_models
     from tauledger.decide.stress import stress
     from tauledger.report.starter import bare_starter, starter
 
@@ -125,8 +126,9 @@ def starter_for(
         found = _parts(analysis.circuit, _strains(stress(analysis)))
         return starter(analysis.review, named, found)
     except ProblemError as error:
+        # Whatever cannot be read is raised here, and so told once.
+        circuit = flatten(content, generic_models({}))
         explain(error.problems)
-    circuit = flatten(content)
     return bare_starter(circuit.title, circuit.nodes, named, _parts(circuit, {}))
 
 

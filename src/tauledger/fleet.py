@@ -15,7 +15,7 @@ from pathlib import Path
 from typing import TYPE_CHECKING
 
 from tauledger.configuration.codes import problem
-from tauledger.configuration.files import FILE_NAME, find_configuration, is_match
+from tauledger.configuration.files import FILE_NAME, find_configuration, from_here, is_match
 from tauledger.netlist.include import default_roots
 from tauledger.problems import Problem, ProblemError, Severity
 from tauledger.records import dataclass
@@ -30,6 +30,7 @@ if TYPE_CHECKING:
 
 PATH_CODES = frozenset(("input-ambiguous", "input-missing", "output-ambiguous"))
 """Problems that leave the signal path open; without a configuration that is no fault."""
+_MODEL_SUFFIXES = frozenset((".lib", ".mod", ".sub", ".subckt"))
 _FILES_WALKED = 100_000
 _THREADS = ("OPENBLAS_NUM_THREADS", "MKL_NUM_THREADS", "OMP_NUM_THREADS")
 _MOST_ON_WINDOWS = 61
@@ -53,19 +54,35 @@ def named_targets(netlists: Sequence[Path], configuration: Path | None = None) -
     """The named netlists, each with every signal path for it in ``configuration``.
 
     Left out, that is the ``tauledger.toml`` found for each. What is wrong with a configuration
-    is a problem of every netlist that it is for, so that a list may be split at will.
+    is a problem of every netlist that it is for, so that a list may be split at will. A
+    ``tauledger.toml`` among the names stands for every netlist that it is for, and so does a
+    file of models below it.
     """
     known: dict[Path, Configuration | ProblemError] = {}
     targets: list[Target] = []
     for netlist in netlists:
         try:
+            if netlist.name == FILE_NAME:
+                targets += configured_targets(netlist.parent, netlist)
+                continue
             found = configuration or find_configuration(netlist, default_roots(netlist))
             paths = _paths_for(netlist, _read_once(found, known)) if found else []
         except ProblemError as error:
             targets.append(Target(str(netlist), problems=error.problems))
             continue
         targets += [Target(str(netlist), path) for path in paths or (None,)]
-    return targets
+        if found and not paths and netlist.suffix.lower() in _MODEL_SUFFIXES:
+            targets += configured_targets(found.parent, found)
+    return _each_once(targets)
+
+
+def _each_once(targets: Sequence[Target]) -> list[Target]:
+    """Without what was named twice, itself and by its configuration."""
+    once: dict[tuple[str, str], Target] = {}
+    for target in targets:
+        name = target.settings.name if target.settings else ""
+        once.setdefault((os.path.realpath(target.netlist), name), target)
+    return list(once.values())
 
 
 def configured_targets(folder: Path, configuration: Path | None = None) -> list[Target]:
@@ -93,11 +110,11 @@ def configured_targets(folder: Path, configuration: Path | None = None) -> list[
 def _targets_of(path: PathSettings, folder: Path) -> list[Target]:
     netlists = sorted(_matching(path.netlist, folder))
     if netlists:
-        return [Target(_from_here(netlist), path) for netlist in netlists]
+        return [Target(from_here(netlist), path) for netlist in netlists]
     message = f"no file matches the netlist {path.netlist!r} of path {path.name!r}"
     advice = "Correct the name; it is relative to the folder of tauledger.toml."
     unmatched = problem("config-path-unmatched", message, path.span, advice)
-    return [Target(_from_here(folder / path.netlist), path, (unmatched,))]
+    return [Target(from_here(folder / path.netlist), path, (unmatched,))]
 
 
 def _matching(pattern: str, folder: Path) -> Iterator[Path]:
@@ -116,13 +133,6 @@ def _matching(pattern: str, folder: Path) -> Iterator[Path]:
         for name in files:
             if is_match(Path(place, name), pattern, folder):
                 yield Path(place, name)
-
-
-def _from_here(path: Path) -> str:
-    """Relative to the working folder where it lies inside, as a person would have typed it."""
-    here = Path.cwd()
-    resolved = Path(os.path.realpath(path))
-    return str(resolved.relative_to(here) if resolved.is_relative_to(here) else path)
 
 
 def _paths_for(netlist: Path, configuration: Configuration) -> list[PathSettings]:

@@ -21,45 +21,45 @@ from tauledger.records import dataclass
 TRAPS: dict[str, tuple[str, str]] = {
     "value-milli": (
         "M is milli in SPICE, whatever its case; this value was read as thousandths",
-        "write Meg for a million, or a lower-case m if milli is meant",
+        "Write Meg for a million, or a lower-case m if milli is meant.",
     ),
     "value-femto": (
         "F is femto (1e-15) in SPICE, not farad; this value was read as femto",
-        "leave the unit out (1, 100u) or write a lower-case f if femto is meant",
+        "Leave the unit out (1, 100u) or write a lower-case f if femto is meant.",
     ),
     "value-atto": (
         "readers disagree on the suffix a: some take atto (1e-18), ngspice ignores it",
-        "write the power of ten, such as 5e-18, or A for ampere",
+        "Write the power of ten, such as 5e-18, or A for ampere.",
     ),
     "value-letter-digit": (
         "this letter-and-digit code was read as IEC 60062 says (4k7 is 4700); "
         "ngspice drops the digits after the letter or refuses the value",
-        "write a decimal point, such as 4.7k",
+        "Write a decimal point, such as 4.7k.",
     ),
     "value-x-suffix": (
         "X is not a suffix in ngspice, though some readers take it as a million; "
         "it was ignored here",
-        "write Meg for a million, or leave the letter out",
+        "Write Meg for a million, or leave the letter out.",
     ),
     "value-micro-sign": (
         "ngspice ignores this micro sign (the Greek letter); the value was read as millionths",
-        "write u for micro",
+        "Write u for micro.",
     ),
     "value-mil": (
         "mil is 25.4e-6 (a thousandth of an inch) in SPICE, and so it was read",
-        "write m for a thousandth",
+        "Write m for a thousandth.",
     ),
     "value-range": (
         "this is a range of values, not one value",
-        "write one number, such as 2k",
+        "Write one number, such as 2k.",
     ),
     "value-decimal-comma": (
         "this number has a comma in it",
-        "write a decimal point, and no separator between thousands",
+        "Write a decimal point, and no separator between thousands.",
     ),
     "value-overflow": (
         "this number is too large for any circuit value",
-        "check the exponent and the suffix",
+        "Check the exponent and the suffix.",
     ),
 }
 """Code → (what was found, what to do). The last three are never read as a number."""
@@ -263,18 +263,22 @@ def _shown(text: str) -> str:
 _PREFIXES = {-15: "f", -12: "p", -9: "n", -6: "µ", -3: "m", 0: "", 3: "k", 6: "M", 9: "G", 12: "T"}
 
 
+_LEAST_DB = 1e-4
+
+
 def format_quantity(value: float, unit: str, digits: int = 3) -> str:
     """Print with ``digits`` significant figures and an engineering prefix: ``4.70 kΩ``, ``0 V``.
 
     Without a unit, and for ``dB``, ``%``, ``°`` and ``°C``, there is no prefix. Infinity prints as
-    ``∞``, not-a-number as ``—``; a value outside femto to tera has a power of ten.
+    ``∞``, not-a-number as ``—``; a value outside femto to tera has a power of ten. Fewer decibels
+    than a ten-thousandth are 0 dB: they are the noise of a ratio of one.
     """
     if math.isnan(value):
         return "—"
     space = " " if unit else ""
     if math.isinf(value):
         return f"{'-' if value < 0 else ''}∞{space}{unit}"
-    if value == 0.0:
+    if value == 0.0 or (unit == "dB" and abs(value) < _LEAST_DB):
         return f"0{space}{unit}"
     mantissa, _, power_text = f"{value:.{digits - 1}e}".partition("e")
     power = int(power_text)

@@ -5,12 +5,15 @@ imported; with some two hundred classes that was half the time of a cold ``taule
 (tests/benchmarks/start.py). Here the methods are shared by all classes, and ``__init__`` alone is
 compiled, at the first instance. Everything else is as there: ``dataclasses.fields``, ``replace``
 and ``asdict`` take these classes, they compare, hash, print and pickle alike, and type checkers
-are shown the decorator of the standard library.
+are shown the decorator of the standard library. What is not done here is refused as a class is
+made: methods of its own in place of the shared ones, ``__post_init__``, ``ClassVar`` and its like,
+and any option of ``field`` but ``default_factory``.
 """
 
 from __future__ import annotations
 
 import dataclasses
+import re
 from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
@@ -36,10 +39,13 @@ def _record(cls: type) -> type:
             raise TypeError(f"{cls.__name__}: {base.__name__} is a dataclass of another make")
     inherited = frozenset(kinds)
     namespace = {k: v for k, v in cls.__dict__.items() if k not in ("__dict__", "__weakref__")}
+    if unlike := _UNLIKE.intersection(namespace):
+        raise TypeError(f"{cls.__name__}: {min(unlike)} is not for a record")
     for name, kind in cls.__annotations__.items():
         kinds[name] = kind
         if name in namespace:
             defaults[name] = namespace.pop(name)
+        _refuse_unlike(cls.__name__, name, kind, defaults)
     own = [name for name in cls.__annotations__ if name not in inherited]
     namespace.update(_SHARED)
     namespace.update(
@@ -50,6 +56,24 @@ def _record(cls: type) -> type:
     record = type(cls)(cls.__name__, cls.__bases__, namespace)
     record.__qualname__ = cls.__qualname__
     return record
+
+
+def _refuse_unlike(owner: str, name: str, kind: Any, defaults: dict[str, Any]) -> None:
+    """Raise TypeError for a field the standard library would treat in a way of its own."""
+    default = defaults.get(name)
+    if re.match(r"(\w+\.)?(ClassVar|InitVar|KW_ONLY)\b", str(kind)):
+        raise TypeError(f"{owner}.{name}: {kind} is not for a record")
+    if defaults and name not in defaults:
+        raise TypeError(f"{owner}.{name} without a default follows one with a default")
+    if isinstance(default, dataclasses.Field):
+        plain = dataclasses.field(default_factory=default.default_factory)
+        if any(getattr(default, key) != getattr(plain, key) for key in _OPTIONS):
+            raise TypeError(f"{owner}.{name}: of field() only default_factory is for a record")
+    elif type(default).__hash__ is None:
+        raise TypeError(f"{owner}.{name}: a default all instances share must not be mutable")
+
+
+_OPTIONS = ("default", "init", "repr", "hash", "compare", "metadata", "kw_only")
 
 
 class _Plan:
@@ -118,7 +142,8 @@ def _compile_init(cls: type, plan: _Plan) -> Any:
 
 
 def _first_init(self: Any, *given: Any, **named: Any) -> None:
-    cls = type(self)
+    # A subclass that is no record may have an __init__ of its own, which has called this one.
+    cls: Any = next(c for c in type(self).__mro__ if "__record_plan__" in c.__dict__)
     cls.__init__ = _compile_init(cls, cls.__record_plan__)
     cls.__init__(self, *given, **named)
 
@@ -168,3 +193,4 @@ _SHARED = {
     "__getstate__": _values,
     "__setstate__": _restore,
 }
+_UNLIKE = frozenset((*_SHARED, "__post_init__"))

@@ -177,8 +177,8 @@ class _Repository:
             raise _fault(
                 "revision-file",
                 f"{name!r}: the revision has no file {netlist!r}",
-                "Correct the path, counted from the top of the repository; --against needs a "
-                "netlist that the revision already has.",
+                "Correct the path, counted from the top of the repository (REV:./name counts from "
+                "here); --against needs a netlist that the revision already has.",
             )
         above = [(parent / _CONFIGURATION).as_posix() for parent in PurePosixPath(netlist).parents]
         waiting = [netlist, *(path for path in above if path in tree)]

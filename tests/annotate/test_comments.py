@@ -13,6 +13,7 @@ from annotate.strategies import netlists, review_about
 from tauledger.analysis import Analysis, analyze, read
 from tauledger.annotate import annotate_netlist, remove_comments
 from tauledger.annotate.comments import MARKER
+from tauledger.command import main
 from tauledger.problems import ProblemError, SourceSpan
 
 STAGE = """Stage with every place a comment could do harm: 10 µF
@@ -209,3 +210,12 @@ def test_ngspice_sees_the_same_circuit(stage: Path) -> None:
     assert sum("\t" in line for line in before) > 10
     stage.write_bytes(annotated(stage))
     assert _ngspice(stage) == before
+
+
+def test_midband_may_be_given(stage: Path) -> None:
+    """As for a report: at 300 Hz the emitter is not yet bypassed in full."""
+    assert main(["annotate", str(stage), "--midband", "300Hz"]) == 0
+    gain = abs(analyze(read(stage), midband_hz=300.0).corners.exact_gain)
+    assert f"gain -{gain:.3g} V/V" in stage.read_text(encoding="utf-8")
+    assert main(["annotate", str(stage), "--check", "--midband", "300Hz"]) == 0
+    assert main(["annotate", str(stage), "--check"]) == 1

@@ -98,6 +98,35 @@ def test_a_completed_board_has_the_figures_of_one_with_sources_written_in(tmp_pa
     )
 
 
+def test_a_board_that_ends_at_connectors_is_told_where_to_attach_what_is_behind(
+    tmp_path: Path,
+) -> None:
+    (tmp_path / "parts.lib").write_text(MODEL)
+    board = "probe\n" + BOARD.format(input="SENSE") + "J1 SENSE GND conn_01x02\n" + MODEL
+    floating, *others = _faults(tmp_path, board, "")
+    assert floating.code == "node-floating"
+    assert "tauledger start" in floating.advice
+    left_out = [problem for problem in others if problem.code == "element-left-out"]
+    assert [problem.message.split()[0] for problem in left_out] == ["J1"]
+    assert left_out[0].advice.startswith("Attach what stands behind it in tauledger.toml")
+
+
+@pytest.mark.parametrize("wiper", ["wiper", "Net-(RV1-W)", "n1"])
+def test_a_potentiometer_is_told_how_to_be_written(tmp_path: Path, wiper: str) -> None:
+    board = f"pot\nV1 a 0 AC 1\nRV1 a 0 {wiper} 10k\nR2 {wiper} 0 1k\n"
+    (found,) = _faults(tmp_path, board, "")
+    assert (found.code, found.span and found.span.line) == ("element-incomplete", 3)
+    assert "potentiometer" in found.advice
+
+
+def test_a_connector_with_something_at_every_net_is_no_longer_warned_of(tmp_path: Path) -> None:
+    (tmp_path / "parts.lib").write_text(MODEL)
+    connectors = "J1 SENSE GND conn_01x02\nJ2 OUT GND conn_01x02\nJ3 OUT c1 conn_01x02\n"
+    board = "probe\n" + BOARD.format(input="SENSE") + connectors
+    problems = _analysis(tmp_path, board, SETTINGS).circuit.problems
+    assert [p.message.split()[0] for p in problems if p.code == "element-left-out"] == ["J3"]
+
+
 def test_added_parts_are_marked_with_their_line_and_take_free_names(tmp_path: Path) -> None:
     (tmp_path / "parts.lib").write_text(MODEL)
     board = "probe\n" + BOARD.format(input="SENSE") + "RLOAD OUT 0 1Meg\nRsource signal SENSE 1\n"
@@ -272,6 +301,7 @@ def test_what_cannot_be_read_elsewhere_is_a_warning(line: str, code: str) -> Non
         "RX cb ca 4..7k",
         "RX vcc 0 4..7k",
         "RX lamp vcc 4..7k\nRY lamp ca 1k",
+        ".subckt coil p l=1\nLI p 0 {l}\nKI LI LO 0.9\n.ends\nLO ca 0 1\nXX out2 coil l=4..7m",
         "QX lamp lit dark BC999X\nQY ca dark eb BC999X",
         "XX bb bulb NOWHERE\n.global bulb\nRY bulb ca 1k",
         "DX bb out2 ca",

@@ -84,6 +84,10 @@ def _binary(folder: Path) -> Path:
     return _written(folder, b"\x7fELF\x02\x01\x01\x00\x00\x90")
 
 
+def _foreign(folder: Path) -> Path:
+    return _written(folder, b"<svg xmlns='http://www.w3.org/2000/svg'>\n<g/>\n</svg>\n")
+
+
 def _large(folder: Path) -> Path:
     return _written(folder, b"title\n" + b"* comment line\n" * 600_000)
 
@@ -112,6 +116,7 @@ FILES: dict[str, Callable[[Path], Path]] = {
     "file-missing": _missing,
     "file-empty": _empty,
     "file-binary": _binary,
+    "file-foreign": _foreign,
     "file-too-large": _large,
     "file-unreadable": _unreadable,
     "include-too-deep": _deep,
@@ -311,3 +316,35 @@ def test_floating_nodes(text: str, floating: list[str], tmp_path: Path) -> None:
     assert all(entry.code == "node-floating" for entry in found)
     named = [part for entry in found for part in entry.message.split("'")[1::2]]
     assert named == floating
+
+
+@pytest.mark.parametrize(
+    ("line", "column"),
+    [
+        ("R1 a 0 1,5k", 8),
+        ("C1 a 0 c=4,7n", 10),
+        ("V1 a 0 12,5 ac 1", 8),
+        ("V1 a 0 ac 1 dc=12,5", 16),
+        ("D1 a 0 m\n.model m d(is=1,5f)", 15),
+    ],
+)
+def test_a_decimal_comma_is_not_read_as_the_end_of_the_number(
+    line: str, column: int, tmp_path: Path
+) -> None:
+    (found,) = problems_of(_written(tmp_path, f"title\n{line}\nR9 a 0 1\n".encode()))
+    assert (found.code, found.severity) == ("value-decimal-comma", Severity.ERROR)
+    assert found.span is not None
+    assert found.span.column == column
+
+
+def test_commas_that_separate_are_no_decimal_commas(tmp_path: Path) -> None:
+    lines = (
+        "V1 1,0 12 ac 1,90",
+        "R1 1,2 10k tc=1m,2u",
+        "I1 0,2,1u",
+        "D1 2,0 m",
+        ".model m d(is=1f,n=1,cjo=2p)",
+        "E1 3 0 poly(2) 1,0 2,0 0,1,2",
+        "R3 3,0,1k",
+    )
+    assert not problems_of(_written(tmp_path, ("title\n" + "\n".join(lines)).encode()))

@@ -192,6 +192,33 @@ def test_estimates_of_two_real_poles(low: bool, ratio: float) -> None:
 
 
 @pytest.mark.parametrize("low", [True, False])
+@pytest.mark.parametrize(("first", "second"), [(20e3, 30e3), (3e3, 50e3), (4e3, 5e3)])
+def test_two_poles_and_two_zeros_are_still_exact(low: bool, first: float, second: float) -> None:
+    """Each section falls to a shelf, ``first`` and ``second`` Ω beside or below its capacitor."""
+    text = "VS in 0 AC 1\nE1 b 0 a 0 1\n"
+    for i, (node, leaving, ohms) in enumerate((("in", "a", first), ("b", "out", second))):
+        if low:
+            text += f"C{i} {node} {leaving} 1u\nP{i} {node} {leaving} {ohms}\nR{i} {leaving} 0 1k\n"
+        else:
+            text += f"R{i} {node} {leaving} 1k\nC{i} {leaving} m{i} 1u\nP{i} m{i} 0 {1e6 / ohms}\n"
+    made, parts = bench(text.replace("\nP", "\nRP"))
+    midband = midband_network(made, *([*parts.values()], [])[:: 1 if low else -1])
+    model = midband.low if low else midband.high
+    roots = Roots.of(model)
+    assert len(roots.zeros) == 2
+    summed = 1 / model.tau_s if low else model.tau_s
+    near = (summed.sum() if low else 1 / summed.sum()) / TWO_PI
+    found = best_estimate(model, roots, near)
+    assert found.method == "second order with zeros"
+    reached = made.magnitude(found.frequency_hz) / abs(midband.gain)
+    assert reached == pytest.approx(1 / math.sqrt(2), rel=1e-9)
+    # Real zeros leave the sum as the bound of one side.
+    bounds = rigorous_bounds(model, roots, near)
+    assert (bounds.lowest_hz, bounds.highest_hz) == ((None, near) if low else (near, None))
+    assert (near >= found.frequency_hz) == low
+
+
+@pytest.mark.parametrize("low", [True, False])
 def test_a_pole_that_grows_has_no_bounds(low: bool) -> None:
     model = two_sections(low, 1e3, 5e3)
     roots = Roots.of(model)

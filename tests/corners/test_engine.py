@@ -287,3 +287,61 @@ def test_network_too_large_for_its_poles_is_refused() -> None:
     with pytest.raises(ProblemError) as caught:
         run(f"ladder\nVS n0 0 AC 1\n{ladder}\nRL n400 0 1k", output="n400")
     assert caught.value.problems[0].code == "circuit-too-large"
+
+
+def test_a_skirt_that_runs_off_the_sweep_is_no_passband() -> None:
+    """Less than a decade wide, 30 dB below its source: its skirt was taken for the passband, with
+    -112 dB at 4 MHz for the gain.
+    """
+    analysis = run(
+        """narrow band
+VS in 0 AC 1
+C0 in n0 983n
+R0 n0 0 1.38k
+R1 n0 n1 7.03k
+C1 n1 0 2.13u
+C2 n1 out 54.4n
+R2 out 0 15.1k"""
+    )
+    corners = analysis.corners
+    assert not corners.flat
+    assert 100.0 < corners.midband_hz < 300.0
+    assert corners.low.exact_hz is not None
+    assert corners.high.exact_hz is not None
+    assert 50.0 < corners.low.exact_hz < corners.midband_hz < corners.high.exact_hz < 500.0
+
+
+def test_a_loop_of_shorts_leaves_the_exact_figures() -> None:
+    """Parts inside the band are shorted for the high end: here that leaves no unique solution."""
+    analysis = run(
+        """one value throughout
+V1 in 0 AC 1
+C0 in n0 1.432u
+R0 n0 in 75.89k
+RL0 n0 0 10.84k
+R1 n0 n1 75.89k
+C1 n1 0 1.432u
+L2 n1 n2 283.9u
+C2 n2 0 1.432u
+R2 n2 0 75.89k
+R3 n0 out 75.89k
+C3 out 0 1.432u"""
+    )
+    assert any("only exact figures" in note for note in analysis.corners.notes)
+    assert analysis.corners.high.exact_hz is not None
+
+
+def test_a_part_behind_an_ideal_source_makes_no_warning() -> None:
+    """Warnings of the array routines would reach the terminal; tests turn them into errors."""
+    analysis = run(
+        """a coil with a capacitor at an ideal amplifier
+V1 in 0 AC 1
+L0 in n0 28.26m
+C0 n0 0 65.78p
+R0 n0 0 16.98k
+E1 n1 0 n0 0 1e9
+C3 n1 out 65.78p
+R3 out n1 16.98k
+RL3 out 0 2426"""
+    )
+    assert analysis.corners.exact_gain > 1e8

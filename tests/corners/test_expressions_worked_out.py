@@ -258,6 +258,8 @@ def test_a_stage_formula_worked_out_is_the_gain_beside_it(name: str) -> None:
     known = figures(analysis)
     for stage in analysis.review.paths[0].stages:
         if not stage.formula:
+            # The samples hold loops and push-pull stages, which no rule sees through.
+            assert name not in CIRCUITS
             continue
         assert stage.formula_value is not None
         assert math.copysign(1.0, stage.formula_value) == math.copysign(1.0, stage.gain)

@@ -42,6 +42,29 @@ def test_text_and_json(
     assert json.loads(capsys.readouterr().out)[key]
 
 
+def test_a_saved_file_has_the_format_its_name_ends_in(
+    netlist: str, tmp_path: Path, capsys: pytest.CaptureFixture[str]
+) -> None:
+    commands = {
+        "report": ((".md", "#"), (".svg", "<svg"), (".json", "{"), (".html", "<!DOCTYPE html>")),
+        "spread": ((".html", "<!DOCTYPE html>"), (".json", "{"), (".txt", "one stage")),
+        "temperature": ((".HTML", "<!DOCTYPE html>"), (".svg", "one stage")),
+    }
+    options = {"spread": TOLERANCES, "temperature": ("--range", "0..50")}
+    for command, cases in commands.items():
+        given = [command, netlist, "--output", "out", *options.get(command, ())]
+        for suffix, start in cases:
+            path = tmp_path / f"saved{suffix}"
+            assert main([*given, "--save", str(path)]) == 0
+            assert path.read_text(encoding="utf-8").lstrip().startswith(start)
+    page = tmp_path / "page.html"
+    assert (
+        main(["report", netlist, "--output", "out", "--format", "json", "--save", str(page)]) == 0
+    )
+    assert json.loads(page.read_text(encoding="utf-8"))
+    assert capsys.readouterr().out == ""
+
+
 def test_values_may_begin_with_a_minus(netlist: str, capsys: pytest.CaptureFixture[str]) -> None:
     assert main(["temperature", netlist, "--range", "-40..85", "--steps", "2"]) == 0
     assert "-40.0 °C" in capsys.readouterr().out
@@ -107,7 +130,7 @@ def test_the_patch_is_printed_alone(
         (("choose", "--low-corner", "20Hz", "--shares", "CE=50,C1=20"), "100 together"),
         (("choose", "--low-corner", "30Hz", "--patch", "9"), "that exists; there are 3"),
         (("stress", "--margin", "120%"), "0 to below 100"),
-        (("temperature",), "a range such as 0..60"),
+        (("temperature",), "Give it with --range 0..60"),
         (("temperature", "--range", "9"), "two temperatures"),
     ],
 )

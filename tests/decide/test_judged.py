@@ -23,6 +23,7 @@ from tauledger.decide.judged import LEAST_HOLD, Wanted, demands_of, wanted_of
 from tauledger.decide.spread import Plan, board_deviations, spread
 from tauledger.decide.varied import board_values, variety_of
 from tauledger.report.decision import spread_page
+from tauledger.report.decision_html import spread_html
 from tauledger.report.layout import plain
 from tauledger.report.page import BOUND, Page
 from tauledger.review.decisions import FigureSpread, Spread
@@ -335,6 +336,9 @@ def test_what_cannot_be_judged_is_told_with_its_reason(tmp_path: Path) -> None:
     ]
     assert result.total is not None
     assert result.total.share == 1.0
+    told = "keep all limits that can be judged"
+    assert told in plain(spread_page(Page(100, str), result)).replace(BOUND, " ")
+    assert told in spread_html(result)
 
 
 def test_a_board_without_bias_has_none_of_the_figures(tmp_path: Path) -> None:
@@ -426,3 +430,49 @@ def _netlist(values: dict[str, float]) -> str:
         card = card.replace("is=12f", f"is={values[f'{name}.is']!r}")
         lines.append(f".model m{name} {card}")
     return "\n".join([*lines, ".end", ""])
+
+
+def test_an_output_without_resistance_keeps_its_limit(tmp_path: Path) -> None:
+    """Zero has no logarithm: it used to stop the histogram."""
+    text = """an ideal amplifier behind a coupling capacitor
+V1 in 0 AC 1
+C1 in a 1u
+R1 a 0 10k
+C2 a 0 1n
+E1 out 0 a 0 10
+RL out 0 1k
+.end
+"""
+    settings = settings_of(tmp_path, 'output_resistance = { max = "100 Ω" }')
+    found = spread_of(text, settings, 50, "R1=5%")
+    (row,) = [f for f in found.figures if f.figure == "output resistance"]
+    assert (row.nominal, row.mean, row.worst_high.value) == (0.0, 0.0, 0.0)
+    assert row.kept is not None
+    assert row.kept.share == 1.0
+    assert row.histogram.counts == (50,)
+    shown = plain(spread_page(Page(100, str), found))
+    assert "limit any to 100 Ω: 100.00" in shown.replace(BOUND, " ")
+
+
+def test_boards_far_off_are_counted_and_stop_nothing(tmp_path: Path) -> None:
+    """Some have no operating point, on some the common order of elimination meets a zero pivot, and
+    every combination of the ends fails: then the worst board found stands in its place.
+    """
+    settings = settings_of(tmp_path, 'midband_gain.min = "1 V/V"\nlow_corner_set_by = "CE"')
+    found = spread_of(STAGE, settings, 200, "Q1.base_emitter_voltage=5V")
+    assert 0 < found.failed < 200
+    gain = figure(found, "gain")
+    assert gain.missing == found.failed
+    assert gain.worst_low.value <= gain.percentiles[0].value
+    assert gain.worst_high.value >= gain.percentiles[-1].value
+    assert found.total is not None
+    assert found.total.boards == 200
+    assert found.total.passed <= 200 - found.failed
+
+
+def test_boards_none_of_which_has_a_bias_are_measured_as_missing(tmp_path: Path) -> None:
+    settings, analysis = settings_of(tmp_path, 'node_voltage.c.min = "1 V"'), run(STAGE)
+    found = _measured(analysis, settings, {"rc": np.array([np.nan, np.nan])}, leaders=True)
+    for values in (found.gain, found.low_hz, found.others["voltage of c"]):
+        assert np.isnan(values).tolist() == [True, True]
+    assert found.low_leader.tolist() == [-1, -1]

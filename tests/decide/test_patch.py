@@ -297,6 +297,25 @@ def test_a_body_that_is_used_twice_is_refused(tmp_path: Path) -> None:
     assert problem.span.text == "CE top 0 100u"
 
 
+@pytest.mark.parametrize("applier", APPLIERS, ids=lambda command: command[0])
+def test_a_link_is_followed_to_the_file_itself(
+    tmp_path: Path, applier: list[str], monkeypatch: pytest.MonkeyPatch
+) -> None:
+    """What applies a patch refuses links and what lies beyond them."""
+    (tmp_path / "real").mkdir()
+    (tmp_path / "real" / "stage.cir").write_text(STAGE)
+    (tmp_path / "linked").symlink_to("real")
+    (tmp_path / "link.cir").symlink_to("real/stage.cir")
+    monkeypatch.chdir(tmp_path)
+    for name in ("linked/stage.cir", "link.cir"):
+        (tmp_path / "real" / "stage.cir").write_text(STAGE)
+        analysis = analysed(Path(name))
+        found = patch(analysis, alternative(analysis, CE=47e-6))
+        apply(applier, found.diff, Path(found.folder))
+        assert (tmp_path / "link.cir").is_symlink()
+        assert (tmp_path / "real" / "stage.cir").read_text() == STAGE.replace("100u", "47u")
+
+
 def test_a_file_that_changed_since_is_refused(tmp_path: Path) -> None:
     path = tmp_path / "stage.cir"
     path.write_text(STAGE)
@@ -327,6 +346,10 @@ def test_a_file_that_changed_since_is_refused(tmp_path: Path) -> None:
         ("1Farad", 4.7e-6, "4.7u"),
         ("0.0001", 4.7e-5, "0.000047"),
         ("4u7", 2.2e-6, "2.2u"),
+        ("10n", 1.2345e-8, "12.345n"),
+        ("1e-8", 1.2345e-8, "12.345e-9"),
+        ("0.000001", 4.75e-15, "0.00000000000000475"),
+        ("0.000001", 4.7, "4.7"),
         ("10\u00b5F", 4.7e-5, "47\u00b5F"),
         ("10\u03bcF", 4.7e-5, "47u"),
     ],

@@ -273,6 +273,35 @@ capacitor_voltage_margin = { min = "10 %" }
     assert codes(result)["capacitor-unbiased"] == {"C2"}
 
 
+def test_the_inside_of_a_macromodel_has_no_rows() -> None:
+    """Nobody can fit another compensation capacitor into an op-amp; a real block has its rows."""
+    text = """buffer and a stage in subcircuits
+VCC vcc 0 12
+VS in 0 AC 1
+XU1 in out opamp
+XS out end vcc stage
+RL end 0 10k
+.subckt opamp p o
+RIN p 0 1Meg
+G1 0 x p o 1m
+R1 x 0 1Meg
+C1 x 0 1n
+E1 o 0 x 0 1
+.ends
+.subckt stage a b v
+C9 a c 1u
+R8 v c 47k
+R9 c 0 22k
+C8 c b 1u
+.ends
+.end
+"""
+    result = stress(run(text, "end"), margin=0.2)
+    assert [r.part for r in result.capacitors] == ["XS.C9", "XS.C8"]
+    assert [r.part for r in result.resistors] == ["XS.R8", "XS.R9", "RL"]
+    assert any("inside XU1" in note for note in result.notes)
+
+
 def test_settling_of_one_time_constant() -> None:
     """4.605 time constants to 1 % (references B13)."""
     result = stress(run("x\nVS in 0 AC 1\nC2 in out 1u\nRL out 0 10k\n.end\n"))

@@ -62,6 +62,9 @@ def test_the_manifest_is_valid(tmp_path: Path) -> None:
         ("amp.net", True),
         ("amp.spice", True),
         ("models/npn.lib", True),
+        ("tauledger.toml", True),
+        ("boards/tauledger.toml", True),
+        ("boards/other.toml", False),
         ("amp.circus", False),
         ("notes.txt", False),
         ("amp.cir.bak", False),
@@ -110,6 +113,24 @@ def test_the_command_says_what_its_exit_code_means(
     assert main(["check", "gone.cir"]) == 2
     (tmp_path / "tauledger.toml").write_text("[path]\nx = 1\n")
     assert main(["check"]) == 2
+
+
+@pytest.mark.parametrize(
+    "changed", [["tauledger.toml"], ["voice.lib"], ["amp.cir", "tauledger.toml"]]
+)
+def test_a_changed_limit_or_model_checks_the_netlists_it_is_for(
+    tmp_path: Path,
+    monkeypatch: pytest.MonkeyPatch,
+    capfd: pytest.CaptureFixture[str],
+    changed: list[str],
+) -> None:
+    monkeypatch.chdir(tmp_path)
+    write(tmp_path, SMALL_BYPASS, LIMITS)
+    (tmp_path / "voice.lib").write_text("* models\n.model OTHER NPN\n")
+    assert main(["check", *changed]) == 1
+    out, _ = capfd.readouterr()
+    assert out.count("error[limit-missed]") == 1
+    assert f"amp.cir:{CE_LINE}:1" in out
 
 
 def test_many_netlists_give_in_workers_what_they_give_alone(

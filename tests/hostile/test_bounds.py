@@ -213,7 +213,7 @@ def test_symbolic_links_out_of_the_project_are_refused(folder: Path) -> None:
     (folder / "dir").symlink_to(folder.parent)
     assert include(folder, "link.lib") == {"include-refused"}
     assert include(folder, "dir/secret.lib") == {"include-refused"}
-    assert include(folder, "DIR/secret.lib") <= {"include-refused", "include-missing"}
+    assert include(folder, "DIR/secret.lib") in ({"include-refused"}, {"include-missing"})
 
 
 def test_allowed_roots_can_be_widened(folder: Path) -> None:

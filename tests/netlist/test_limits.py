@@ -62,6 +62,12 @@ def test_nesting_is_shown_where_it_goes_too_deep() -> None:
     (entry,) = parse("title\n" + parentheses(MAXIMUM_NESTING + 3)).problems
     assert entry.span is not None
     assert entry.span.column == len("R1 a 0 r=f") + MAXIMUM_NESTING + 1
+    assert entry.span.length == 1
+    # However many are closed before.
+    before = "R1 a 0 " + "(1) " * (MAXIMUM_NESTING + 5)
+    (entry,) = parse("title\n" + before + "(" * 50 + "1" + ")" * 50).problems
+    assert entry.span is not None
+    assert entry.span.column == len(before) + MAXIMUM_NESTING + 1
 
 
 def test_problems_are_listed_up_to_the_bound() -> None:

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+import errno
+import os
 from collections.abc import Callable
 from pathlib import Path
 
@@ -149,6 +151,9 @@ def test_a_value_is_one_word_unless_it_touches_a_parenthesis() -> None:
 def test_what_is_missing_at_the_end_is_shown_at_the_last_letter() -> None:
     assert found(below("V1 a b dc=")) == [("line-unreadable", 2, 10)]
     assert found(below("V1 a b dc= ")) == [("line-unreadable", 2, 11)]
+    (entry,) = below("R1 a b ) c").problems
+    assert entry.span is not None
+    assert (entry.span.column, entry.span.length) == (8, 1)
 
 
 def test_a_model_card_that_is_cut_short_is_read_as_if_closed() -> None:
@@ -284,6 +289,32 @@ def test_the_end_of_file_mark_of_old_systems(tmp_path: Path) -> None:
     assert caught.value.problems[0].code == "file-binary"
 
 
+@pytest.mark.parametrize(
+    "text",
+    [
+        '<?xml version="1.0"?>\n<svg>\n</svg>\n',
+        "<!DOCTYPE html>\n<p>\n</html>",
+        "(schematic\n  (version 1)\n  (symbol (at 1 2))\n)\n",
+        "Version 4\nSHEET 1 880 680\nWIRE 1 2 3 4\n",
+        '{"elements": []}\n',
+        "%PDF-1.4\n1 0 obj\n",
+    ],
+)
+def test_a_file_of_another_kind_is_told_once(tmp_path: Path, text: str) -> None:
+    path = tmp_path / "amp.cir"
+    path.write_text(text)
+    with pytest.raises(ProblemError) as caught:
+        read(path)
+    assert [problem.code for problem in caught.value.problems] == ["file-foreign"]
+
+
+@pytest.mark.parametrize("title", ["<draft>", "(old (2nd) try)", "{x}", "Version 4 of the stage"])
+def test_a_title_may_look_like_anything(tmp_path: Path, title: str) -> None:
+    path = tmp_path / "amp.cir"
+    path.write_text(f"{title}\nR1 a 0 1k\n.end\n")
+    assert read(path).title == title
+
+
 # included files -----------------------------------------------------------------------------------
 
 
@@ -333,6 +364,32 @@ def test_includes_look_from_the_file_they_stand_in(tmp_path: Path) -> None:
     ]
 
 
+def test_a_link_out_of_the_project_is_refused_in_any_spelling(tmp_path: Path) -> None:
+    top = written(tmp_path, {"in/amp.cir": "title\n.include DIR/secret.lib\nR1 a 0 1\n"})
+    (tmp_path / "secret.lib").write_text("R2 a 0 2\n")
+    (tmp_path / "in" / "dir").symlink_to(tmp_path)
+    netlist = read(top, [tmp_path / "in"])
+    assert names(netlist) == ["R1"]
+    assert [p.code for p in netlist.problems] in (["include-refused"], ["include-missing"])
+
+
+@pytest.mark.parametrize("name", ["../", "../.", "..", "../../..", "sub/"])
+def test_a_folder_is_no_file_to_include(tmp_path: Path, name: str) -> None:
+    netlist = read(written(tmp_path, {"amp.cir": f"title\n.include {name}\nR1 a 0 1\n"}))
+    assert names(netlist) == ["R1"]
+    assert [p.code for p in netlist.problems] in (["include-refused"], ["include-missing"])
+
+
+def test_the_reason_why_a_file_cannot_be_read(tmp_path: Path) -> None:
+    path = tmp_path / "amp.cir"
+    path.symlink_to(path)
+    with pytest.raises(ProblemError) as caught:
+        read(path)
+    (entry,) = caught.value.problems
+    assert entry.code == "file-unreadable"
+    assert f"({os.strerror(errno.ELOOP)})" in entry.message
+
+
 def test_the_same_file_twice_is_no_cycle(tmp_path: Path) -> None:
     top = written(
         tmp_path,
@@ -357,7 +414,7 @@ R2 a 0 2
 .LIB fast
 R3 a 0 3
 .lib other.lib "LowNoise"
-.ENDL fast
+	.ENDL fast
 """
 OTHER = ".lib 'lownoise'\nR4 a 0 4\n.endl\n.lib normal\nR5 a 0 5\n.endl\n"
 

@@ -13,6 +13,7 @@ from markdown_it import MarkdownIt
 
 from report.fixtures import ONE_STAGE
 from tauledger.problems import SourceSpan
+from tauledger.quantity import format_quantity
 from tauledger.report.alphabet import alphabet
 from tauledger.report.changes import comparison_page, comparison_section
 from tauledger.report.html_bias import changes
@@ -165,6 +166,26 @@ def test_an_edit_that_hardly_moves_a_figure_has_no_digits(unit: str) -> None:
     for text in (changes_section(comparison), changes(comparison)):
         assert "5.36e-5" not in text
         assert least in html.unescape(text).replace("\\", "").replace("\u00a0", " ")
+
+
+def test_a_move_its_own_digits_do_not_show_is_not_in_the_answer() -> None:
+    comparison = _comparison()
+    (low,) = comparison.attributions
+    gain = replace(low, figure="midband gain", unit="dB", old=69.401, new=69.41)
+    both = replace(comparison, attributions=(low, gain))
+    assert verdict(both) == verdict(comparison)
+    alone = replace(comparison, attributions=(gain,))
+    assert verdict(alone)[0].startswith("midband gain 69.4 dB → 69.4 dB")
+
+
+def test_what_rounds_to_nothing_has_no_sign() -> None:
+    page = Page(100, alphabet("utf-8"))
+    assert [page.signed_percent(v).replace("\u00a0", " ") for v in (-0.0002, 0.0002, 0.002)] == [
+        "0.0 %", "0.0 %", "+0.2 %"
+    ]  # fmt: skip
+    assert page.percent(-0.0002).endswith("0.0\u00a0%")
+    assert not page.percent(-0.0002).startswith("-")
+    assert format_quantity(-4e-6, "dB") == "0 dB"
 
 
 def test_a_move_too_small_to_print_is_not_called_one() -> None:

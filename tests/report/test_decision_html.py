@@ -4,8 +4,10 @@ from __future__ import annotations
 
 import base64
 import hashlib
+import math
 import re
 import xml.etree.ElementTree as ElementTree
+from dataclasses import replace
 from functools import cache
 from pathlib import Path
 
@@ -22,10 +24,13 @@ from tauledger.decide.asked import parse_asked
 from tauledger.decide.spread import spread
 from tauledger.decide.temperature import steps, temperature_sweep
 from tauledger.quantity import format_quantity
+from tauledger.report.decision import spread_page
 from tauledger.report.decision_html import spread_html
 from tauledger.report.decision_html_plot import curve_svg, histogram_svg
 from tauledger.report.decision_html_scale import Scale, fitted
 from tauledger.report.decision_html_temperature import temperature_html
+from tauledger.report.layout import plain
+from tauledger.report.page import Page
 from tauledger.review.decisions import (
     FigureSpread,
     Histogram,
@@ -113,6 +118,17 @@ def test_spread_page_holds_every_figure_of_the_rows() -> None:
         assert f"{100 * figure.kept.share:.2f} %" in words
     shares = [c.share for c in result.figures[0].contributions if c.share > 0.01]
     assert all(f"{100 * share:.1f} %" in words for share in shares)
+
+
+def test_an_end_at_which_a_figure_does_not_exist_has_a_dash() -> None:
+    """A resistor at a hundredth of its value may leave no operating point, and so no gain."""
+    result = _spread()
+    gain, *others = result.figures
+    first = replace(gain.contributions[0], at_low=math.nan, at_high=math.inf)
+    figures = (replace(gain, contributions=(first, *gain.contributions[1:])), *others)
+    torn = replace(result, figures=figures)
+    assert not re.search(r"\b(nan|inf)\b", Markup(spread_html(torn)).text())
+    assert not re.search(r"\b(nan|inf)\b", plain(spread_page(Page(100, str), torn)))
 
 
 def test_temperature_page_holds_every_row() -> None:

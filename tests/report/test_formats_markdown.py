@@ -8,7 +8,7 @@ from html.parser import HTMLParser
 from pathlib import Path
 
 import pytest
-from hypothesis import given, settings
+from hypothesis import assume, given, settings
 from hypothesis import strategies as st
 from markdown_it import MarkdownIt
 from markdown_it.token import Token
@@ -119,6 +119,7 @@ _PLAIN_SHAPE = _shape(markdown_report([_check("x")], Severity.ERROR))
 @settings(deadline=None)
 @given(word=_HOSTILE)
 def test_no_netlist_changes_the_shape_or_reaches_out(word: str) -> None:
+    assume(word != "active")  # the one region that is not set in bold
     text = markdown_report([_check(word)], Severity.ERROR)
     assert _shape(text) == _PLAIN_SHAPE
     for token in _tokens(text):
@@ -212,3 +213,12 @@ def test_any_response_makes_a_chart_or_none(gains: list[float]) -> None:
     points = tuple(ResponsePoint(10.0 ** (k / 5), gain) for k, gain in enumerate(gains))
     text = bode_sketch(replace(ONE_STAGE.paths[0], response=points))
     assert text == "" or _CHART.fullmatch(text)
+
+
+def test_a_long_expression_loses_its_second_form_and_not_its_middle() -> None:
+    path = TWO_STAGES.paths[0]
+    sees = "R_in + R_out + gm·R_in·R_out [Miller: R_in·(1 + gm·R_out) + R_out], R_in = rb + RS‖R2"
+    row = replace(path.time_constants[0], expression=sees, expression_deviation=-0.0004)
+    review = replace(TWO_STAGES, paths=(replace(path, time_constants=(row,)),))
+    text = markdown_report([NetlistCheck("amp.cir", "", review, (), ())], Severity.ERROR)
+    assert "| `R_in + R_out + gm·R_in·R_out, R_in = rb + RS‖R2` |" in text

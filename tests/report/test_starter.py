@@ -135,3 +135,26 @@ def test_a_board_that_cannot_be_analysed_has_its_classes_too(
     board.write_text(filled(text))
     assert len(settings_of(board).transistors) == 2
     capfd.readouterr()
+
+
+def test_a_missing_model_keeps_nobody_from_starting(
+    tmp_path: Path, capfd: pytest.CaptureFixture[str]
+) -> None:
+    netlist = tmp_path / "board.cir"
+    netlist.write_text(BOARD.replace(".model QN NPN", ".model QOTHER NPN").replace(" QN", " KNPN"))
+    assert main(["start", str(netlist), "--output", str(tmp_path / "tauledger.toml")]) == 0
+    assert capfd.readouterr().err.count("error[model-missing]") == 1
+    text = (tmp_path / "tauledger.toml").read_text()
+    assert "# generic_models = true" in text
+    assert '"vcc"' in text
+
+
+def test_what_cannot_be_read_is_told_once(
+    tmp_path: Path, capfd: pytest.CaptureFixture[str]
+) -> None:
+    netlist = tmp_path / "board.cir"
+    netlist.write_text(BOARD.replace("RE e 0 680", "RE e 0 six"))
+    assert main(["start", str(netlist)]) == 2
+    out, err = capfd.readouterr()
+    assert out == ""
+    assert err.count("error[value-unreadable]") == 1

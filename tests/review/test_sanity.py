@@ -54,6 +54,11 @@ def test_headroom_of_a_bypassed_stage(tmp_path: Path) -> None:
     assert path.headroom.down_v == pytest.approx(transistor.voltage_v - 0.2, rel=1e-3)
 
 
+def test_a_saturated_stage_on_the_way_leaves_no_headroom_to_tell(tmp_path: Path) -> None:
+    [path] = stage(tmp_path, rc="33k").review.paths
+    assert path.headroom is None
+
+
 def test_headroom_shrinks_with_emitter_degeneration(tmp_path: Path) -> None:
     """Without bypass the emitter rises while the collector falls: 1 + RE/RC times as fast."""
     analysis = stage(tmp_path, bypass="")

@@ -10,8 +10,10 @@ import pytest
 
 from tauledger.bias import solve_bias
 from tauledger.circuit import flatten
+from tauledger.circuit.elements import VoltageSource
 from tauledger.netlist import parse
 from tauledger.smallsignal import (
+    decomposed,
     device_admittances,
     drive_vector,
     gain_sensitivity,
@@ -93,3 +95,21 @@ def test_device_terminal_currents_add_up_and_match_gm() -> None:
     unknowns[network.index("b")] = unknowns[network.index("Q1.base_internal")] = 1.0
     current = admittance.current_into("collector", unknowns)
     assert current == pytest.approx(values["gm"][0] - 1 / values["r_mu"][0], rel=1e-9)
+
+
+@pytest.mark.parametrize(("ohm", "farad"), [("1k", "1u"), ("3.3k", "47n"), ("47k", "470n")])
+def test_skirts_of_equal_time_constants_are_those_of_direct_solutions(ohm: str, farad: str) -> None:
+    """Their eigenvectors nearly coincide, and the sum over the modes is 0.3 dB off at -115 dB,
+    although it agrees to a ten-millionth of the largest |H| everywhere.
+    """
+    high_passes = f"C1 in a {farad}\nR1 a 0 {ohm}\nC2 a b {farad}\nR2 b 0 {ohm}\nE1 c 0 b 0 1\n"
+    band_pass = f"C3 c d {farad}\nR3 d 0 {ohm}\nR4 d out {ohm}\nC4 out 0 {farad}\n"
+    circuit = flatten(parse(f"equal\nV1 in 0 AC 1\n{high_passes}{band_pass}.end\n"))
+    network = linear_network(solve_bias(circuit))
+    (source,) = [e for e in circuit.elements if isinstance(e, VoltageSource)]
+    exact = response(network, drive_vector(network, source), sense_vector(network, "out"))
+    frequency = np.geomspace(1e-2, 1e6, 300)
+    direct = np.abs(exact.at(frequency))
+    shown = direct > 1e-6 * direct.max()
+    level_db = 20.0 * np.log10(np.abs(decomposed(exact).at(frequency)[shown]) / direct[shown])
+    assert np.abs(level_db).max() < 0.01

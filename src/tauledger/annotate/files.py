@@ -36,7 +36,7 @@ def check_files(paths: Sequence[str], contents: Sequence[bytes]) -> list[Problem
             "annotation-stale",
             Severity.WARNING,
             f"{path}: the annotations are stale or missing",
-            advice="Run the same command without --check.",
+            advice="Run the same tauledger annotate without --check.",
         )
         for path, content in zip(paths, contents, strict=True)
         if not Path(path).is_file() or Path(path).read_bytes() != content

@@ -2,7 +2,8 @@
 
 Only those whose words are all that can join them to others: parts, transistors and calls of the
 top level. A source may be the one that drives the path, and a controlled one reaches further than
-its own nodes; with them nothing is set aside.
+its own nodes; with them nothing is set aside. Neither is a call of a subcircuit that is there: a
+coupling inside may reach an inductor outside.
 """
 
 from __future__ import annotations
@@ -16,13 +17,14 @@ from tauledger.netlist.statements import Statement, Word
 from tauledger.problems import ProblemError
 
 _FEWEST_NODES = {"r": 2, "c": 2, "l": 2, "d": 2, "q": 3, "j": 3, "m": 3}
-_LETTERS = frozenset((*_FEWEST_NODES, "x"))
-_CODES = frozenset(
+_OF_PARTS = frozenset(
     (
         *("value-unreadable", "value-missing", "value-range", "value-decimal-comma"),
-        *("model-missing", "subcircuit-missing"),
+        "model-missing",
     )
 )
+_CODES = {**dict.fromkeys(_FEWEST_NODES, _OF_PARTS), "x": frozenset(("subcircuit-missing",))}
+"""What may be wrong with an element that is set aside, by its letter."""
 
 
 class Aside:
@@ -33,10 +35,10 @@ class Aside:
 
     def take(self, scope: Scope, statement: Statement, error: ProblemError) -> bool:
         """Whether the error can wait; it is then kept here."""
+        codes = _CODES.get(statement.name.text[0].lower(), frozenset())
         waits = (
             not scope.prefix
-            and statement.name.text[0].lower() in _LETTERS
-            and all(entry.code in _CODES for entry in error.problems)
+            and all(entry.code in codes for entry in error.problems)
             and len(self._found) < MAXIMUM_PROBLEMS
         )
         if waits:

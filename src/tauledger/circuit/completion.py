@@ -98,12 +98,11 @@ def complete(circuit: Circuit, settings: PathSettings) -> tuple[Circuit, str | N
     output = work.attach_output(settings.output) if settings.output else None
     if work.problems:
         raise ProblemError(*work.problems)
-    if not work.added:
-        return circuit, source, output
     completed = replace(
         circuit,
         elements=(*circuit.elements, *work.added),
         attached=circuit.attached | {element.name for element in work.added},
+        problems=tuple(found for found in circuit.problems if not work.answers(found)),
     )
     return completed, source, output
 
@@ -117,16 +116,26 @@ class _Completion:
         self._nodes = {node.casefold(): node for node in circuit.nodes}
         self._nodes |= {"0": GROUND, "gnd": GROUND}
         self._names = {element.name.casefold() for element in circuit.elements}
+        self._answered = {GROUND}
         self._held = {
             frozenset(element.nodes): element
             for element in circuit.elements
             if isinstance(element, VoltageSource)
         }
 
+    def answers(self, found: Problem) -> bool:
+        """Whether a connector was left out at whose every net something is attached now."""
+        if found.code != "element-left-out" or "connector" not in found.message or not found.span:
+            return False
+        words = (word.casefold() for word in found.span.text.split()[1:])
+        nodes = {self._nodes[word] for word in words if word in self._nodes}
+        return bool(nodes) and nodes <= self._answered
+
     def attach_supply(self, supply: Supply) -> None:
         node = self._node(supply.node, supply.span)
         if node is None:
             return
+        self._answered.add(node)
         present = self._held.get(frozenset((node, GROUND)))
         if present is not None:
             voltage = present.dc if present.nodes[0] == node else -present.dc
@@ -143,6 +152,7 @@ class _Completion:
         if nodes is None:
             return None
         live, reference = nodes
+        self._answered.update(nodes)
         if asked.resistance_ohm > 0.0:
             inner = self._free_node("signal")
             name = self._free_name("Rsource")
@@ -161,6 +171,7 @@ class _Completion:
         nodes = self._pair(asked.nodes, asked.span)
         if nodes is None:
             return None
+        self._answered.update(nodes)
         if asked.load_resistance_ohm is not None:
             name = self._free_name("Rload")
             self._add(Resistor(name, nodes, asked.span, asked.load_resistance_ohm))

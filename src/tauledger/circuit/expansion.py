@@ -160,11 +160,14 @@ class Expansion:
 
     def leave_out(self, statement: Statement, reason: str, scope: Scope) -> None:
         """Say that an element is not in the analysis."""
+        advice = "The analysis goes on without it; what depends on it will be wrong."
+        if "connector" in reason:
+            advice = "Attach what stands behind it in tauledger.toml: input, output, supplies."
         self.warn(
             "element-left-out",
             f"{scope.prefix}{statement.name.text} is left out: {reason}",
             statement.span(),
-            "The analysis goes on without it; what depends on it will be wrong.",
+            advice,
         )
 
     # numbers --------------------------------------------------------------------------------------
@@ -180,6 +183,11 @@ class Expansion:
         if isinstance(item, Formula):
             return self.arithmetic(item.text, item, scope, statement)
         return self.arithmetic(statement.text_of(item), item, scope, statement)
+
+    def lone_number(self, item: Item | Call, scope: Scope, statement: Statement) -> float:
+        """The same where one number is due: ``4,7k`` is no 4, though commas separate in SPICE."""
+        refuse_decimal_comma(item, statement)
+        return self.number(item, scope, statement)
 
     def written_number(self, word: Word, scope: Scope, statement: Statement) -> float:
         """The same for text the grammar has not read: braces or quotes may stand round it."""
@@ -362,6 +370,19 @@ def ignored(run: Expansion, statement: Statement, item: Item) -> None:
         statement.span(item),
         "Remove it, or correct it if it was to mean something.",
     )
+
+
+def refuse_decimal_comma(item: Item | Call, statement: Statement) -> None:
+    """Raise ProblemError where a comma and a digit stand right behind a number."""
+    after = statement.line.text[item.end : item.end + 2]
+    if isinstance(item, Word) and after[:1] == "," and after[1:].isdigit():
+        found, advice = TRAPS["value-decimal-comma"]
+        raise fault(
+            "value-decimal-comma",
+            f"{statement.name.text}: a comma and a digit follow {item.text!r}: {found}",
+            statement.span(item),
+            advice,
+        )
 
 
 def unevaluable(

@@ -101,5 +101,6 @@ def _floating(nodes: list[str], parts: list[Element]) -> Problem:
         "node-floating",
         f"{head}: only {shown} " + ("reaches it" if len(parts) == 1 else "reach there"),
         parts[0].span,
-        "Add the missing connection, or a resistor to ground.",
+        "Add the missing connection, or a resistor to ground; where a connector was, attach what "
+        "is behind it in tauledger.toml (tauledger start writes one).",
     )

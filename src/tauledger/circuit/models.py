@@ -98,7 +98,7 @@ def _numbers(
     numbers: dict[str, float] = {}
     for name, item in given.items():
         try:
-            numbers[name] = run.number(item.value, card.scope, card.statement)
+            numbers[name] = run.lone_number(item.value, card.scope, card.statement)
         except ProblemError as error:
             # Rating and maker's fields hold words: mfg=ACME, type=silicon.
             if name in known_names(kind) and not is_rating(name):

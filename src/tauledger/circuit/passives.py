@@ -11,7 +11,7 @@ import math
 from collections.abc import Mapping
 
 from tauledger.circuit.elements import Capacitor, Coupling, Inductor, Model, Resistor
-from tauledger.circuit.expansion import Expansion, ignored
+from tauledger.circuit.expansion import Expansion, ignored, refuse_decimal_comma
 from tauledger.circuit.models import find_model
 from tauledger.circuit.operands import is_word, node_words, operands
 from tauledger.circuit.plausible import check_temperature
@@ -19,7 +19,7 @@ from tauledger.circuit.scope import Scope
 from tauledger.netlist.codes import fault
 from tauledger.netlist.statements import Item, Statement, Word
 from tauledger.problems import ProblemError
-from tauledger.quantity import format_quantity
+from tauledger.quantity import format_quantity, parse_number
 
 _KINDS = {"r": ("r", "res"), "c": ("c", "cap"), "l": ("l", "ind")}
 _VALUE_NAMES = {
@@ -186,8 +186,18 @@ class _Reading:
         return fault("value-unusable", f"{name}: {found}", self.statement.span(), advice)
 
     def _nominal(self) -> float:
+        for name in _VALUE_NAMES[self.letter]:
+            if name in self.assigned:
+                refuse_decimal_comma(self.assigned[name].value, self.statement)
         if self.rest:
-            return self.run.number(self.rest.pop(0), self.scope, self.statement)
+            if self._is_potentiometer():
+                raise fault(
+                    "element-incomplete",
+                    f"{self.statement.name.text}: found three nodes, expected two and a value",
+                    self.statement.span(),
+                    "Write a potentiometer as two resistors that meet at its wiper.",
+                )
+            return self.run.lone_number(self.rest.pop(0), self.scope, self.statement)
         for name in _VALUE_NAMES[self.letter]:
             # With a model, l= is a length.
             if name in self.assigned and not (name == "l" and self.model is not None):
@@ -201,6 +211,19 @@ class _Reading:
                 "Write the value after the two nodes.",
             )
         return value
+
+    def _is_potentiometer(self) -> bool:
+        """Whether a plain value follows on a name, as on the third node of a resistor."""
+        if self.letter != "r" or len(self.rest) != 2:
+            return False
+        name, value = self.rest
+        return (
+            isinstance(name, Word)
+            and isinstance(value, Word)
+            and (name.text[0].isalpha() or name.text[0] in "/_+")
+            and name.text.lower() not in self.scope.parameters
+            and parse_number(value.text, leading_letter=False) is not None
+        )
 
     def _from_model(self, parameters: Mapping[str, float]) -> float | None:
         """From sheet resistance or junction dimensions, else the model's own value."""

@@ -107,7 +107,7 @@ def _node_count(
         if letter == "j":
             run.leave_out(statement, "it reads as a connector, not as a junction FET", scope)
             return None
-        raise _incomplete(statement, letter, f"{max(len(words) - 1, 0)} nodes and a model")
+        raise _incomplete(statement, letter, _counted(max(len(words) - 1, 0)))
     if letter == "j" and words[-1].text.lower().startswith("conn"):
         run.leave_out(statement, "it reads as a connector, not as a junction FET", scope)
         return None
@@ -119,6 +119,10 @@ def _node_count(
         run.leave_out(statement, "it reads as a connector, not as a junction FET", scope)
         return None
     return min(last, max(_NODES[letter]))
+
+
+def _counted(nodes: int) -> str:
+    return f"{nodes} node{'' if nodes == 1 else 's'} and a model"
 
 
 def _is_number_or_flag(text: str) -> bool:

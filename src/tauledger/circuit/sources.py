@@ -64,17 +64,20 @@ class _Reading:
             elif isinstance(item, Word) and item.text.lower() in FUNCTIONS:
                 self.transient(item)
             elif isinstance(item, Word | Formula) and self.dc is None:
-                self.dc = self.number(item)
+                self.dc = self.lone_number(item)
             elif not (isinstance(item, Word) and item.text.lower() in _IGNORED):
                 ignored(self.run, self.statement, item)
 
     def number(self, item: Item | Call) -> float:
         return self.run.number(item, self.scope, self.statement)
 
+    def lone_number(self, item: Item | Call) -> float:
+        return self.run.lone_number(item, self.scope, self.statement)
+
     def assignment(self, item: Assignment) -> None:
         name = item.name.text.lower()
         if name == "dc":
-            self.dc = self.number(item.value)
+            self.dc = self.lone_number(item.value)
         elif name in ("ac", "acmag"):
             self.phasor(self.number(item.value))
         elif name == "acphase" and self.ac is not None:
@@ -88,7 +91,7 @@ class _Reading:
         if name == "ac":
             self.phasor(self.number(self.items.pop(0)) if self.value_next() else 1.0)
         elif self.value_next():
-            self.dc = self.number(self.items.pop(0))
+            self.dc = self.lone_number(self.items.pop(0))
 
     def phasor(self, magnitude: float) -> None:
         """Magnitude with the phase in degrees that may follow it."""

@@ -5,7 +5,7 @@ from __future__ import annotations
 import argparse
 from pathlib import Path
 
-from tauledger.commands.arguments import expanded, path_arguments, settings_of
+from tauledger.commands.arguments import expanded, midband_argument, path_arguments, settings_of
 from tauledger.commands.output import FINDING, FINE, UNUSABLE, explain, refuse
 from tauledger.problems import ProblemError
 
@@ -27,6 +27,7 @@ def add_arguments(parser: argparse.ArgumentParser) -> None:
     what.add_argument("--remove", action="store_true", help="take the annotations out again")
     what.add_argument("--check", action="store_true", help="write nothing; exit 1 when stale")
     path_arguments(parser, "--output-node")
+    midband_argument(parser)
 
 
 def run(arguments: argparse.Namespace) -> int:
@@ -72,7 +73,8 @@ def _annotated(arguments: argparse.Namespace) -> list[bytes]:
     netlist = Path(arguments.netlist)
     content = read_bytes(netlist)
     settings = settings_of(arguments, netlist)
-    analysis = analyze(read(netlist), arguments.input, arguments.output_node, settings)
+    ends = arguments.input, arguments.output_node
+    analysis = analyze(read(netlist), *ends, settings, arguments.midband)
     review = analysis.review
     explain(review.problems)
     if not arguments.drawing:

@@ -29,12 +29,45 @@ def path_arguments(parser: argparse.ArgumentParser, output: str = "--output") ->
 
 
 def expanded(names: Sequence[str]) -> list[str]:
-    """The files that wildcards stand for, which the shells of Windows leave to the program."""
+    """The files that wildcards stand for, which the shells of Windows leave to the program.
+
+    A file that exists stands for itself: names may hold brackets there.
+    """
     if sys.platform != "win32":
         return list(names)
     import glob
+    import os
 
-    return [found for name in names for found in sorted(glob.glob(name)) or [name]]
+    return [
+        found
+        for name in names
+        for found in ([] if os.path.exists(name) else sorted(glob.glob(name))) or [name]
+    ]
+
+
+_SUFFIXES = {
+    ".json": "json", ".md": "markdown", ".html": "html", ".htm": "html", ".svg": "svg",
+    ".png": "png",
+}  # fmt: skip
+
+
+def format_arguments(parser: argparse.ArgumentParser, forms: Sequence[str]) -> None:
+    """``--format``, and the file to save to, whose name may settle the format."""
+    *most, last = forms
+    parser.add_argument(
+        "--format",
+        metavar="FORMAT",
+        choices=forms,
+        help=f"{', '.join(most)} or {last}; text by default",
+    )
+    parser.add_argument("--save", metavar="FILE", help="write there, as its name ends")
+
+
+def format_of(arguments: argparse.Namespace, forms: Sequence[str]) -> str:
+    """The format asked for, or the one a file saved to is named after, or text."""
+    named = _SUFFIXES.get(Path(arguments.save).suffix.lower(), "") if arguments.save else ""
+    form: str = arguments.format or (named if named in forms else "text")
+    return form
 
 
 def midband_argument(parser: argparse.ArgumentParser) -> None:

@@ -6,7 +6,7 @@ import argparse
 from collections.abc import Callable
 from typing import TYPE_CHECKING, TypeVar
 
-from tauledger.commands.arguments import midband_argument, path_arguments
+from tauledger.commands.arguments import format_arguments, midband_argument, path_arguments
 from tauledger.commands.output import hand_over, show_page
 from tauledger.problems import Problem, ProblemError, Severity
 from tauledger.quantity import parse_si
@@ -17,6 +17,10 @@ if TYPE_CHECKING:
     from tauledger.review.decisions import Choice, Spread, Stress, TemperatureSweep
 
     Decided = TypeVar("Decided", Spread, Choice, Stress, TemperatureSweep)
+
+
+FORMATS = ("text", "json", "html")
+"""Of a decision that can be a page."""
 
 
 def tolerance_argument(parser: argparse.ArgumentParser) -> None:
@@ -41,15 +45,12 @@ def decision_arguments(
     parser.usage = "%(prog)s [OPTIONS] NETLIST"
     parser.add_argument("netlist", metavar="NETLIST", help="SPICE netlist of the amplifier")
     own(parser)
-    parser.add_argument(
-        "--format",
-        metavar="FORMAT",
-        choices=("text", "json", "html") if has_page else ("text", "json"),
-        default="text",
-        help="text (default), json or html" if has_page else "text (default) or json",
-    )
     if has_page:
-        parser.add_argument("--save", metavar="FILE", help="write there, not to standard output")
+        format_arguments(parser, FORMATS)
+    else:
+        parser.add_argument(
+            "--format", choices=("text", "json"), default="text", help="text (default) or json"
+        )
     path_arguments(parser)
     midband_argument(parser)
 

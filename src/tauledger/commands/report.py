@@ -10,6 +10,8 @@ from typing import TYPE_CHECKING
 
 from tauledger.commands.arguments import (
     aim_of,
+    format_arguments,
+    format_of,
     frequency,
     midband_argument,
     path_arguments,
@@ -24,6 +26,7 @@ if TYPE_CHECKING:
 
 PICTURES = ("html", "svg", "png")
 """The forms of a report that hold drawings."""
+FORMATS = ("text", "json", "markdown", *PICTURES)
 
 
 def add_arguments(parser: argparse.ArgumentParser) -> None:
@@ -39,14 +42,7 @@ def add_arguments(parser: argparse.ArgumentParser) -> None:
     parser.add_argument(
         "--simulate", action="store_true", help="add figures from ngspice, run beside"
     )
-    parser.add_argument(
-        "--format",
-        metavar="FORMAT",
-        choices=("text", "json", "markdown", *PICTURES),
-        default="text",
-        help="text (default), json, markdown, html; svg, png: plot",
-    )
-    parser.add_argument("--save", metavar="FILE", help="write there, not to standard output")
+    format_arguments(parser, FORMATS)
 
 
 def run(arguments: argparse.Namespace) -> int:
@@ -67,18 +63,19 @@ def run(arguments: argparse.Namespace) -> int:
         since = compare_against(arguments.against, analysis, aim_of(arguments))
         review = replace(review, comparison=since)
     explain(review.problems)
-    if arguments.format == "json":
+    form = format_of(arguments, FORMATS)
+    if form == "json":
         from tauledger.report.json_report import json_report
 
         hand_over(json_report(review).encode(), arguments.save)
-    elif arguments.format == "markdown":
+    elif form == "markdown":
         from tauledger.checking import markdown_of
 
         hand_over(markdown_of(analysis.circuit, review, settings).encode(), arguments.save)
-    elif arguments.format in PICTURES:
+    elif form in PICTURES:
         from tauledger.illustrating import picture
 
-        drawn = picture(arguments.format, analysis, review, settings, simulation)
+        drawn = picture(form, analysis, review, settings, simulation)
         hand_over(drawn, arguments.save)
     elif arguments.save:
         from tauledger.report.terminal import text_report

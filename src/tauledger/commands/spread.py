@@ -6,8 +6,9 @@ import argparse
 import sys
 from typing import TYPE_CHECKING
 
-from tauledger.commands.arguments import analysis_of
+from tauledger.commands.arguments import analysis_of, format_of
 from tauledger.commands.deciding import (
+    FORMATS,
     decision_arguments,
     refused,
     show_decision,
@@ -47,12 +48,13 @@ def run(arguments: argparse.Namespace) -> int:
     analysis, settings = analysis_of(arguments)
     result = _asked_for(arguments, analysis, settings)
     explain(result.problems)
-    if arguments.format == "html":
+    form = format_of(arguments, FORMATS)
+    if form == "html":
         from tauledger.report.decision_html import spread_html
 
         hand_over(spread_html(result).encode(), arguments.save)
     else:
-        show_decision(arguments.format, result, spread_page, arguments.save)
+        show_decision(form, result, spread_page, arguments.save)
     return FINE
 
 

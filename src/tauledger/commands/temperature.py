@@ -5,9 +5,10 @@ from __future__ import annotations
 import argparse
 from typing import TYPE_CHECKING
 
-from tauledger.commands.arguments import analysis_of
-from tauledger.commands.deciding import decision_arguments, parsed, refused, show_decision
+from tauledger.commands.arguments import analysis_of, format_of
+from tauledger.commands.deciding import FORMATS, decision_arguments, parsed, refused, show_decision
 from tauledger.commands.output import FINE, explain, hand_over
+from tauledger.problems import Problem, ProblemError, Severity
 
 if TYPE_CHECKING:
     from tauledger.analysis import Analysis
@@ -34,12 +35,13 @@ def run(arguments: argparse.Namespace) -> int:
     analysis, settings = analysis_of(arguments)
     result = _asked_for(arguments, analysis, settings)
     explain(result.problems)
-    if arguments.format == "html":
+    form = format_of(arguments, FORMATS)
+    if form == "html":
         from tauledger.report.decision_html_temperature import temperature_html
 
         hand_over(temperature_html(result).encode(), arguments.save)
     else:
-        show_decision(arguments.format, result, temperature_page, arguments.save)
+        show_decision(form, result, temperature_page, arguments.save)
     return FINE
 
 
@@ -52,7 +54,15 @@ def _asked_for(
     configured = settings.spread.temperature_c if settings and settings.spread else None
     window = _range(arguments.range) if arguments.range else configured
     if window is None:
-        raise refused("--range", "nothing", "a range such as 0..60, here or in tauledger.toml")
+        raise ProblemError(
+            Problem(
+                "usage",
+                Severity.ERROR,
+                "no range of temperatures is known",
+                None,
+                "Give it with --range 0..60, or as temperature under [spread] in tauledger.toml.",
+            )
+        )
     return temperature_sweep(analysis, steps(*window, arguments.steps))
 
 

@@ -37,6 +37,13 @@ def find_configuration(netlist: Path, roots: Sequence[Path]) -> Path | None:
     return None
 
 
+def from_here(path: Path) -> str:
+    """Relative to the working folder where it lies inside, as a person would have typed it."""
+    here = Path.cwd()
+    resolved = Path(os.path.realpath(path))
+    return str(resolved.relative_to(here) if resolved.is_relative_to(here) else path)
+
+
 def read_text(path: Path) -> str:
     """The text of a configuration; never blocks on a pipe or device."""
     try:

@@ -13,6 +13,7 @@ from tauledger.configuration.codes import problem
 from tauledger.configuration.files import (
     check_pattern,
     find_model_files,
+    from_here,
     read_text,
 )
 from tauledger.configuration.parts import (
@@ -87,14 +88,15 @@ def read_configuration(path: Path) -> Configuration:
     Raises ProblemError with everything that is wrong in it, each with its line and column.
     """
     text = read_text(path)
-    positions = Positions("", str(path))
+    shown = from_here(path)
+    positions = Positions("", shown)
     try:
         content = tomllib.loads(text)
-        positions = Positions(text, str(path))
+        positions = Positions(text, shown)
     except RecursionError:
         raise _invalid("nested too deeply", positions.place(1, 1)) from None
     except ValueError as error:
-        raise _syntax_error(text, str(path), str(error)) from None
+        raise _syntax_error(text, shown, str(error)) from None
     log = Log(positions)
     configuration = _configuration(log, path, content)
     if log.problems:

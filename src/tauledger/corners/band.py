@@ -79,8 +79,10 @@ def find_passband(sweep: Sweep, *, cut: bool = False) -> Passband:
     level, decades = sweep.level_db, np.log10(sweep.frequency_hz)
     last = level.size - 1
     begins, ends = _extents(level)
-    # A stretch that runs off the grid goes on beyond it.
-    length = decades[ends] - decades[begins] + (begins == 0) + (ends == last) * (not cut)
+    # A stretch that runs off the grid goes on beyond it, unless it slopes there as a skirt does.
+    goes_on = np.abs(np.gradient(level, decades)) < HALF_POWER_DB
+    length = decades[ends] - decades[begins]
+    length += (begins == 0) * goes_on[0] + (ends == last) * (goes_on[last] and not cut)
     flat = (length >= SHORTEST_PASSBAND_DECADES) & (level > level.max() - DEEPEST_PASSBAND_DB)
     candidates = np.flatnonzero(flat) if flat.any() else np.arange(level.size)
     best = int(candidates[np.argmax(level[candidates])])

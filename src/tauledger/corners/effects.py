@@ -68,7 +68,8 @@ def _in_band(model: EndModel, edges: tuple[float | None, ...], *, any_step: bool
     if not model.parts:
         return []
     low_hz, high_hz = edges
-    corner_hz = 1.0 / (TWO_PI * model.tau_s)
+    with np.errstate(divide="ignore"):  # behind an ideal source a time constant is zero
+        corner_hz = 1.0 / (TWO_PI * model.tau_s)
     step = np.abs(model.switched_gain() / model.gain)
     small = (step > HALF_POWER) & (step < 1.0 / HALF_POWER)
     inside = (corner_hz > IN_BAND_FACTOR * (low_hz or 0.0)) & (

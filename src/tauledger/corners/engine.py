@@ -104,14 +104,18 @@ def find_corners(
     sides = _sides(path, [as_one(group) for group in groups], fixed_voltage_pairs)
     if sides is None:
         return _without_estimate(path, *unreached_notes(response, parts))
-    ends = divide_ends(
-        response,
-        sides,
-        path.edges,
-        fixed_voltage_pairs,
-        shaped=midband_hz is not None,
-        movers=(_heads(groups, path.movers[0]), _heads(groups, path.movers[1])),
-    )
+    try:
+        ends = divide_ends(
+            response,
+            sides,
+            path.edges,
+            fixed_voltage_pairs,
+            shaped=midband_hz is not None,
+            movers=(_heads(groups, path.movers[0]), _heads(groups, path.movers[1])),
+        )
+    except np.linalg.LinAlgError:
+        # With the parts inside the band shorted as well, a loop of shorts is left.
+        return _without_estimate(path, *unreached_notes(response, parts))
     accounts = part_accounts(path.passband.midband_hz, ends, sides.looped, groups)
     accounts += [idle_account(part, "straight across a source: no pole") for part in across_source]
     in_band = [model.parts[i].name for model, i in ends.in_band]

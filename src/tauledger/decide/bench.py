@@ -160,8 +160,21 @@ def measure(
         some = slice(start, start + bench.most_boards)
         part = {name: value[some] if value.size > 1 else value for name, value in varied.items()}
         at = warmth[some] if warmth is not None and warmth.size > 1 else temperature_c
-        found.append(measure_solution(bench, solve(bench, part, at), leaders, part))
+        try:
+            solution = solve(bench, part, at)
+        except ProblemError:
+            # Not one of them has an operating point; the nominal board has.
+            found.append(_nothing(bench, min(bench.most_boards, boards - start)))
+            continue
+        found.append(measure_solution(bench, solution, leaders, part))
     return found[0] if len(found) == 1 else _joined(found)
+
+
+def _nothing(bench: Bench, boards: int) -> Figures:
+    """Of boards none of which has an operating point."""
+    missing, nobody = np.full(boards, np.nan), np.full(boards, -1, dtype=np.intp)
+    others = dict.fromkeys(bench.wanted.names, missing)
+    return Figures(missing, missing, missing, nobody, nobody, (), missing, missing, others)
 
 
 def _joined(found: Sequence[Figures]) -> Figures:
@@ -194,7 +207,10 @@ def solve(
     variations: Variations | None = None,
     temperature_c: float | FloatArray | None = None,
 ) -> BiasSolution:
-    """The operating point of every board; boards that have none are marked, not raised."""
+    """The operating point of every board; boards that have none are marked.
+
+    Raises ProblemError when no board has one.
+    """
     with np.errstate(all="ignore"):
         return solve_bias(bench.circuit, variations, temperature_c)
 
@@ -289,6 +305,7 @@ def _ends(bench: Bench, network: LinearNetwork) -> tuple[FloatArray, FloatArray]
     return drive_vector(network, source), sense_vector(network, bench.output, bench.reference)
 
 
+@np.errstate(all="ignore")
 def _measure(
     bench: Bench, networks: Networks, network: LinearNetwork, leaders: bool
 ) -> tuple[list[FloatArray], NDArray[np.bool_]]:
@@ -318,7 +335,7 @@ def _measure(
         peaks.append(np.maximum(np.exp(peak) / gain, 1.0))
         winners.append(winner)
         holds += held
-    return [gain, *edges, *peaks, *winners, *holds], doubt > 1e-8
+    return [gain, *edges, *peaks, *winners, *holds], ~(doubt <= 1e-8)
 
 
 def _spread_out(values: FloatArray, alive: IntArray, boards: int) -> FloatArray:

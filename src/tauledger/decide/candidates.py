@@ -53,14 +53,13 @@ def search_of(analysis: Analysis, wish: Wish, settings: PathSettings | None) -> 
 
 
 def modelled(circuit: Circuit) -> set[str]:
-    """Names of capacitors in a subcircuit that has controlled sources, as an op-amp's model has.
+    """Names of what stands in a subcircuit with controlled sources, as an op-amp's model has.
 
-    Such a capacitor is part of a model, and nobody can fit another one.
+    Such a capacitor or resistor is part of a model, and nobody can fit another one.
     """
     sources = (ControlledSource, BehaviouralSource)
     models = {_block(e.name) for e in circuit.elements if isinstance(e, sources)} - {""}
-    capacitors = (e.name for e in circuit.elements if isinstance(e, Capacitor))
-    return {name for name in capacitors if _block(name) in models}
+    return {e.name for e in circuit.elements if _block(e.name) in models}
 
 
 def _block(name: str) -> str:

@@ -37,7 +37,8 @@ def notes_of(
 
 def _target(search: Search, meets: bool | None) -> Iterator[str]:
     if meets is None:
-        yield f"there is no {search.end} corner to set: the gain holds beyond every frequency"
+        reach = "down to DC" if search.end == "low" else "at all higher frequencies"
+        yield f"there is no {search.end} corner to set: the gain holds {reach}"
     elif meets:
         sentence = "the netlist meets the target as it stands"
         if not search.parts:

@@ -144,8 +144,7 @@ class Networks:
         matrix = np.zeros((self.boards, self.size, self.size), dtype=complex)
         for (i, j), entry in entries.items():
             matrix[:, i, j] = entry
-        inverse: ComplexArray = np.asarray(np.linalg.inv(matrix), dtype=np.complex128)
-        return _Dense(inverse), entries
+        return _Dense(_inverses(matrix)), entries
 
     def _residual(
         self, entries: Mapping[tuple[int, int], ComplexArray], x: Sequence[Column]
@@ -161,6 +160,16 @@ class Networks:
         for e, total in zip(error, scale, strict=True):
             worst = np.maximum(worst, np.abs(e) / np.maximum(total, 1e-300))
         return worst
+
+
+def _inverses(matrices: ComplexArray) -> ComplexArray:
+    """Of every board; NaN where there is none."""
+    try:
+        return np.asarray(np.linalg.inv(matrices), dtype=np.complex128)
+    except np.linalg.LinAlgError:
+        if len(matrices) == 1:
+            return np.full_like(matrices, np.nan)
+        return np.concatenate([_inverses(one[None]) for one in matrices])
 
 
 def _change(part: ReactivePart, s: Column, x: Sequence[Column], y: Sequence[Column]) -> Column:

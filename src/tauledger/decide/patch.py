@@ -55,11 +55,11 @@ def patch(
 
 def _named(paths: Sequence[str], netlist: str) -> tuple[str, list[tuple[str, str]]]:
     """The folder the paths are relative to, and each with its relative name."""
-    here = os.getcwd()
-    whole = [os.path.abspath(path) for path in paths]
+    # Of the files themselves: what applies a patch refuses links.
+    here = os.path.realpath(os.getcwd())
+    whole = [os.path.realpath(path) for path in paths]
     if not all(_below(path, here) for path in whole):
         here = str(default_roots(Path(netlist))[0])
-        whole = [os.path.realpath(path) for path in paths]
         if not all(_below(path, here) for path in whole):
             here = os.path.commonpath([os.path.dirname(path) for path in whole])
     return here, [(p, os.path.relpath(w, here)) for p, w in zip(paths, whole, strict=True)]

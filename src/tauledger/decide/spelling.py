@@ -3,7 +3,10 @@
 from __future__ import annotations
 
 import re
+from decimal import Decimal
 
+_DIGITS = 10
+"""More than a value at hand has, fewer than rounding spoils."""
 _POWERS = {"t": 12, "g": 9, "k": 3, "m": -3, "u": -6, "µ": -6, "n": -9, "p": -12, "f": -15}
 _SUFFIXES = ((0, ""), (-6, "u"), (-9, "n"), (-12, "p"), (-15, "f"))
 _NUMBER = re.compile(
@@ -43,7 +46,7 @@ def written_like(value_f: float, old: str) -> str:
         return f"{_digits(value_f, power)}{match['e']}{power}{unit}"
     suffix = match["suffix"]
     if not suffix:
-        return f"{value_f:.15f}".rstrip("0").rstrip(".") + unit
+        return f"{Decimal(f'{value_f:.{_DIGITS}g}'):f}" + unit
     power = _POWERS[suffix.lower()]
     shown = value_f / 10.0**power
     if _suits(shown, float(match["digits"])):
@@ -70,5 +73,5 @@ def _engineering(value_f: float) -> int:
 
 
 def _digits(value_f: float, power: int) -> str:
-    number = float(f"{value_f / 10.0**power:.4g}")
+    number = float(f"{value_f / 10.0**power:.{_DIGITS}g}")
     return f"{number:.12f}".rstrip("0").rstrip(".")

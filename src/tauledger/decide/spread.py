@@ -44,7 +44,7 @@ BLOCK = 1000
 """Boards solved together; small enough for the cache, large enough for the array operations."""
 BOARDS = 10_000
 MOST_BOARDS = 1_000_000
-INSIDE = "a board inside the tolerances"
+INSIDE = "values inside their tolerances"
 """In place of the ends, where a board is worse than every combination of them."""
 _UNIT = {"V": 1.0, "A": 1e-3, "%": 1.0}
 """What differences are counted in, so that their squares stay well above rounding."""
@@ -244,8 +244,11 @@ def _figure(
     if plan.distribution != "normal" and len(counts) > 1:
         # A figure may have its extreme between the ends (a bridge in balance has); a normal
         # deviation may lie outside them.
-        low = min(low, (float(there.min()), (INSIDE,)))
-        high = max(high, (float(there.max()), (INSIDE,)))
+        # Asked so that it is true as well where no combination of ends has the figure.
+        if not float(there.min()) >= low[0]:
+            low = float(there.min()), (INSIDE,)
+        if not float(there.max()) <= high[0]:
+            high = float(there.max()), (INSIDE,)
     nominal = plan.nominal(name, alone)
     sigma = np.array([standard_deviation(d.low, d.high, plan.distribution) for d in _draws(plan)])
     deviation = float(np.sqrt(((np.nan_to_num(alone.slope[name]) * sigma) ** 2).sum()))

@@ -44,8 +44,10 @@ def percentiles(values: FloatArray) -> list[tuple[float, float]]:
 def histogram(values: FloatArray, linear: bool = False) -> tuple[list[float], list[int]]:
     """Edges and counts of equal bins in the logarithm, or in the values themselves.
 
-    One bin when all values are the same.
+    One bin when all values are the same. A value of zero, as the resistance of an ideal output
+    has, allows no logarithm.
     """
+    linear = linear or float(values.min()) <= 0.0
     seen = values if linear else np.log(values)
     low, high = float(seen.min()), float(seen.max())
     ends = [low, high] if linear else [math.exp(low), math.exp(high)]

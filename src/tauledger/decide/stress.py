@@ -6,7 +6,7 @@ are merely remembered (leakage rules, surge factors) are no limits here.
 
 from __future__ import annotations
 
-from collections.abc import Iterator, Sequence
+from collections.abc import Collection, Iterator, Sequence
 
 import numpy as np
 
@@ -14,6 +14,7 @@ from tauledger.analysis import Analysis
 from tauledger.circuit.elements import Capacitor, Element, Resistor, SemiconductorDevice
 from tauledger.configuration.settings import PathSettings
 from tauledger.decide.bench import bench_of, measure_values
+from tauledger.decide.candidates import modelled
 from tauledger.decide.dielectric import Effective, code_limits, effective
 from tauledger.decide.discharge import Discharge
 from tauledger.decide.dissipation import device_heat, overloads, resistor_heat
@@ -54,7 +55,8 @@ def stress(
     changed: dict[str, float] = {}
     discharge = Discharge(analysis.circuit, analysis.topology.path.source)
     circuit = analysis.circuit
-    parts = [element for element in circuit.elements if element.name not in circuit.attached]
+    inside = modelled(circuit)
+    parts = [e for e in circuit.elements if e.name not in circuit.attached | inside]
     for element in parts:
         if isinstance(element, Capacitor):
             left = _effective(element, analysis, settings)
@@ -89,7 +91,7 @@ def stress(
         low_effective_hz=low,
         high_hz=corners.high.exact_hz,
         high_effective_hz=high,
-        notes=tuple(_notes(capacitors, devices, settings)),
+        notes=tuple(_notes(capacitors, devices, inside, settings)),
         problems=(*circuit.problems, *problems),
         devices=tuple(devices),
     )
@@ -214,9 +216,13 @@ def _with(analysis: Analysis, changed: dict[str, float]) -> tuple[float | None, 
 def _notes(
     capacitors: Sequence[CapacitorStress],
     devices: Sequence[DeviceStress],
+    inside: Collection[str],
     settings: PathSettings | None,
 ) -> Iterator[str]:
     yield "voltages are direct ones; signal, ripple and the moment of switch-on come on top"
+    if inside:
+        models = ", ".join(sorted({name.rpartition(".")[0] for name in inside}))
+        yield f"what stands inside {models} is a model, not parts, and is left out here"
     if devices:
         yield (
             "heat is that at rest, and a rating that of the device as it is cooled: data sheets "

@@ -21,6 +21,7 @@ CODES: Mapping[str, tuple[Severity, str]] = MappingProxyType(
         "file-unreadable": (_E, "the file cannot be opened or read"),
         "file-empty": (_E, "the file holds no text"),
         "file-binary": (_E, "the file is not text"),
+        "file-foreign": (_E, "the file is text of another kind, not a netlist"),
         "file-too-large": (_E, "the file, or all files together, exceed the size limit"),
         "line-too-long": (_E, "a line with its continuations exceeds the length limit"),
         "too-many-problems": (_E, "more problems were found than are listed"),

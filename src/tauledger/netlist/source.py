@@ -22,6 +22,12 @@ MAXIMUM_LINE = 100_000
 
 Report = Callable[[Problem], None]
 
+_FOREIGN = re.compile(
+    r"\s*(?:<[?!A-Za-z](?=.*>\s*\Z)|\(\w+\s+\((?=.*\)\s*\Z)|\{(?=.*\}\s*\Z)|%PDF-)"
+    r"|Version \d+\s+SHEET ",
+    re.DOTALL,
+)
+"""Drawings, pages, schematics and data as programs keep them: the title of no netlist."""
 _LINE_END = re.compile(r"\r\n|\n|\r")
 _CONTROL = re.compile(r"[\x00-\x08\x0e-\x1a\x1c-\x1f]")
 # "$ comment" starts one; "$N_0001" is a node of schematic exporters that write $N_, $G_, $D_.
@@ -118,7 +124,7 @@ def _unreadable(path: Path, error: Exception) -> ProblemError:
 def decode(content: bytes, path: str) -> SourceFile:
     """Text in UTF-8 or UTF-16 with or without a mark, else Latin-1.
 
-    Raises ProblemError when the file is binary, empty or too long.
+    Raises ProblemError when the file is binary, empty, too long or plainly of another kind.
     """
     text = _decode_text(content.removesuffix(b"\x1a"))  # the end-of-file mark of old systems
     if text is None or _CONTROL.search(text):
@@ -130,6 +136,13 @@ def decode(content: bytes, path: str) -> SourceFile:
         )
     if not text.strip():
         raise fault("file-empty", f"{path}: the file is empty", None, "Export the netlist again.")
+    if _FOREIGN.match(text):
+        raise fault(
+            "file-foreign",
+            f"{path}: expected a netlist, found a drawing, a schematic or another kind of file",
+            None,
+            "Export the schematic as a SPICE netlist and give that file.",
+        )
     return source_file(text, path)
 
 

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Sequence
 
 from tauledger.quantity import format_quantity
@@ -61,7 +62,7 @@ def basis(spread: Spread) -> str:
 def _sentences(page: Page, spread: Spread) -> list[Line]:
     found = []
     if spread.total is not None:
-        found.append(f"{_yield_text(spread.total)} keep all limits")
+        found.append(f"{_yield_text(spread.total)} {kept_words(spread)}")
     if spread.failed:
         found.append(f"{spread.failed} boards have no operating point and count in no figure")
     if spread.fixed:
@@ -71,6 +72,11 @@ def _sentences(page: Page, spread: Spread) -> list[Line]:
     for sentence in found:
         lines += paragraph(page.text(sentence), page.width, "   ", " ", "verdict")
     return lines
+
+
+def kept_words(spread: Spread) -> str:
+    """What the total counts; the notes name the limits it leaves out."""
+    return "keep all limits that can be judged" if spread.notes else "keep all limits"
 
 
 def _yield_text(kept: Yield) -> str:
@@ -154,9 +160,10 @@ def _deviation(figure: FigureSpread) -> str:
         seen, alone = (format_quantity(value, figure.unit) for value in both)
         return f"standard deviation {seen}; by sensitivities alone {alone}"
     relative = figure.deviation / figure.mean if figure.mean else 0.0
+    predicted = figure.linear_deviation / figure.nominal if figure.nominal else 0.0
     return (
         f"standard deviation {100 * relative:.2g} %; by sensitivities alone "
-        f"{100 * figure.linear_deviation / figure.nominal:.2g} % of nominal"
+        f"{100 * predicted:.2g} % of nominal"
     )
 
 
@@ -205,10 +212,15 @@ def _cause(page: Page, c: Contribution, unit: str) -> tuple[str, ...]:
     if unit and c.sensitivity is not None:
         slope = signed_quantity(c.sensitivity / 100.0, unit)
     ends = [
-        page.text(signed_quantity(value, unit)) if unit else page.signed_percent(value)
+        page.text(signed_quantity(value, unit)) if unit else _move(page, value)
         for value in (c.at_low, c.at_high)
     ]
     return page.text(c.label), page.percent(c.share), page.bar(c.share), page.text(slope), *ends
+
+
+def _move(page: Page, value: float) -> str:
+    """A relative change, or a dash where the figure is not there at that end."""
+    return page.signed_percent(value) if math.isfinite(value) else page.text("—")
 
 
 def initial(words: str) -> str:

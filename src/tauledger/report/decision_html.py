@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Iterable, Iterator, Sequence
 
 from tauledger.report.decision import (
@@ -9,6 +10,7 @@ from tauledger.report.decision import (
     basis,
     initial,
     is_missed,
+    kept_words,
     signed_quantity,
     window,
     window_of,
@@ -63,7 +65,7 @@ def _verdict(spread: Spread) -> str:
     """The yield large, then gain and corners with the middle nine tenths of the boards."""
     blocks = []
     if spread.total is not None:
-        blocks.append(_block("keep all limits", _share(spread.total), _confidence(spread.total)))
+        blocks.append(_block(kept_words(spread), _share(spread.total), _confidence(spread.total)))
     for figure in spread.figures:
         if figure.figure in ALWAYS:
             blocks.append(_block(figure.figure, _quantity(figure.nominal, figure), _middle(figure)))
@@ -181,7 +183,11 @@ def _worst_table(figures: Iterable[FigureSpread]) -> str:
         )
         for figure in figures
     ]
-    return table("Every part at the worse end of its tolerance, solved anew", heads, rows)
+    return table(
+        "Every part at the worse end of its tolerance, or the worst board if that is worse",
+        heads,
+        rows,
+    )
 
 
 def _histograms(figures: Sequence[FigureSpread]) -> str:
@@ -239,7 +245,7 @@ def _cause(c: Contribution, figure: FigureSpread) -> tuple[str, ...]:
 
 
 def _change(value: float | None, figure: FigureSpread) -> str:
-    if value is None:
+    if value is None or not math.isfinite(value):
         return "—"
     if not figure.linear:
         digits = 2 if abs(value) < 0.05 else 1

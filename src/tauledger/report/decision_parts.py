@@ -190,7 +190,7 @@ def _resistors(page: Page, stress: Stress) -> list[Line]:
         Row(
             (
                 page.name(row.part),
-                page.quantity(row.power_w, "W"),
+                _heat(page, row.power_w),
                 page.quantity(row.rated_w, "W"),
                 page.percent(row.load),
             )
@@ -214,7 +214,7 @@ def _devices(page: Page, stress: Stress) -> list[Line]:
             (
                 page.name(row.part),
                 page.name(row.model),
-                page.quantity(row.power_w, "W"),
+                _heat(page, row.power_w),
                 page.quantity(row.rated_w, "W"),
                 page.percent(row.load),
             ),
@@ -223,6 +223,11 @@ def _devices(page: Page, stress: Stress) -> list[Line]:
         for row in ranked[:_HOTTEST_SHOWN]
     ]
     return _hottest(page, "Transistors and diodes", columns, rows, len(ranked))
+
+
+def _heat(page: Page, power_w: float) -> str:
+    """Below a picowatt the figure is what rounding has left of the voltages."""
+    return page.text("< 1 pW") if 0.0 < power_w < 1e-12 else page.quantity(power_w, "W")
 
 
 def _coolness(row: ResistorStress | DeviceStress) -> float:
@@ -236,7 +241,9 @@ def _hottest(
     if not rows:
         return []
     more = count - len(rows)
-    title = f"{what}, hottest first" + (f" ({more} cooler ones not shown)" if more else "")
+    title = f"{what}, hottest first" + (
+        f" ({more} cooler {'one' if more == 1 else 'ones'} not shown)" if more else ""
+    )
     return [page.heading(title), *table(columns, rows, page.width), BLANK]
 
 

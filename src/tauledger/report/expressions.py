@@ -82,9 +82,14 @@ def parse(text: str) -> Node | None:
     return node if reader.at_end else None
 
 
+def without_miller(text: str) -> str:
+    """A hand expression without the second form in brackets."""
+    return _MILLER.sub("", text)
+
+
 def parse_hand(text: str) -> HandExpression | None:
     """A whole hand expression with its abbreviations and its feedback factor, or None."""
-    body, *rest = _MILLER.sub("", text).split(", ")
+    body, *rest = without_miller(text).split(", ")
     definitions: dict[str, Node] = {}
     around = ""
     for entry in rest:

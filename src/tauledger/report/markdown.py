@@ -12,6 +12,7 @@ from collections.abc import Iterator, Sequence
 from tauledger.problems import Severity
 from tauledger.quantity import format_quantity
 from tauledger.report.bode import bode_sketch
+from tauledger.report.expressions import without_miller
 from tauledger.report.markdown_changes import changes_section
 from tauledger.report.markup import code, details, html_code, sentence, table
 from tauledger.review.check import Finding, NetlistCheck, distinct_findings, exit_code
@@ -182,9 +183,10 @@ def _corners(check: NetlistCheck, row: PathRow) -> str:
 
 def _constant(row: TimeConstantRow) -> tuple[str, ...]:
     share = f"{100.0 * row.share:.1f} %" if row.share is not None else "—"
-    expression = code(row.expression, 120) if row.expression else "—"
+    expression = code(without_miller(row.expression), 120) if row.expression else "—"
     if row.expression and row.expression_deviation is not None:
-        expression += f" ({100.0 * row.expression_deviation:+.1f} %)"
+        deviation = f"{100.0 * row.expression_deviation:+.1f}"
+        expression += f" ({deviation} %)" if deviation not in ("+0.0", "-0.0") else ""
     return (
         row.end,
         code(row.name),
@@ -200,7 +202,7 @@ def _constant(row: TimeConstantRow) -> tuple[str, ...]:
 
 def _both_figures(row: CornerRow) -> str:
     estimate, exact = _quantity(row.estimate_hz, "Hz"), _quantity(row.exact_hz, "Hz")
-    notes = "".join(f" {sentence(note)}." for note in row.notes[:3])
+    notes = "".join(f" {sentence(note[:1].upper() + note[1:])}." for note in row.notes[:3])
     return f"- {row.end} end: estimate {estimate}, exact {exact}.{notes}\n"
 
 

@@ -17,6 +17,11 @@ _BAR_CELLS = 10
 _EIGHTHS = " ▏▎▍▌▋▊▉"
 
 
+def _unsigned_zero(figure: str) -> str:
+    """What rounds to zero has no direction left to tell."""
+    return "0.0" if figure in ("-0.0", "+0.0") else figure
+
+
 @dataclass(frozen=True, slots=True)
 class Page:
     """The width of the page in columns, and the spelling its stream can carry."""
@@ -57,10 +62,10 @@ class Page:
             return self.spell("—")
         if 0 < value < 0.0005:
             return f"<0.1{BOUND}%"
-        return f"{100 * value:.1f}{BOUND}%"
+        return f"{_unsigned_zero(f'{100 * value:.1f}')}{BOUND}%"
 
     def signed_percent(self, value: float) -> str:
-        return f"{100 * value:+.1f}{BOUND}%"
+        return f"{_unsigned_zero(f'{100 * value:+.1f}')}{BOUND}%"
 
     def bar(self, share: float | None) -> str:
         """A bar of at most ten cells, to an eighth of a cell where the stream carries blocks."""

@@ -122,7 +122,7 @@ def _corner(page: Page, path: PathRow, end: str) -> str:
     corner = path.low if end == "low" else path.high
     if corner is None or (corner.exact_hz is None and corner.estimate_hz is None):
         why = corner.notes[0] if corner is not None and corner.notes else ""
-        return f"none: {page.text(why)}" if why else "none"
+        return f"none: {page.text(why.removeprefix(f'no {end} corner: '))}" if why else "none"
     exact = "no exact −3 dB point"
     if corner.exact_hz is not None:
         exact = page.quantity(corner.exact_hz, "Hz")

@@ -31,9 +31,10 @@ def verdict(comparison: Comparison) -> list[str]:
         if not renamed:
             return [NO_CHANGE]
         return [f"{NO_CHANGE}; {renamed} part{'s' if renamed > 1 else ''} renamed"]
-    sentences = [_moved(attribution) for attribution in moves(comparison)]
-    if sentences:
-        return sentences
+    moved_ones = moves(comparison)
+    if moved_ones:
+        # A move that its own three digits do not show stands in the tables, not in the answer.
+        return [_moved(one) for one in filter(_shows, moved_ones)] or list(map(_moved, moved_ones))
     if comparison.attributions or all(row.difference == 0.0 for row in comparison.figures):
         return ["parts changed; neither the corners nor the gain moved by 0.05 %"]
     return ["neither the corners nor the gain can be laid on the edits; see the figures"]
@@ -51,6 +52,11 @@ def moves(comparison: Comparison) -> list[Attribution]:
 def _least(unit: str, old: float) -> float:
     """The smallest change of a figure that is worth a number."""
     return _SMALL_DB if unit == "dB" else _SMALL * abs(old)
+
+
+def _shows(attribution: Attribution) -> bool:
+    unit = attribution.unit
+    return value(attribution.old, unit) != value(attribution.new, unit)
 
 
 def _moved(attribution: Attribution) -> str:

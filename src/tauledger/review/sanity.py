@@ -187,6 +187,8 @@ def _bias(device: DevicePoint, bipolar: bool) -> tuple[float, float]:
     return current, voltage
 
 
+_NO_ROOM = ("saturated", "triode")
+
 # Headroom -----------------------------------------------------------------------------------------
 
 
@@ -207,8 +209,16 @@ def headroom(
     topology: Topology,
     corners: Corners,
 ) -> HeadroomRow | None:
-    """How far the output can move either way at midband; None without a midband signal."""
+    """How far the output can move either way at midband.
+
+    None without a midband signal, or when a transistor on its way has no room to begin with.
+    """
     if corners.midband is None or not corners.gain:
+        return None
+    if any(
+        role.on_path and name in point.devices and point.devices[name].region in _NO_ROOM
+        for name, role in topology.transistors.items()
+    ):
         return None
     limits = [
         limit

@@ -20,13 +20,17 @@ from tauledger.smallsignal.network import FloatArray
 ComplexArray = NDArray[np.complex128]
 FIRST_SHIFT = 1e5
 """rad/s, between the corners of most amplifiers; the second pass corrects it."""
+LEAST_SIZE = 1e-9
+"""rad/s; a root below is one at zero, blurred by rounding."""
+LONGEST_STRETCH = 7.0
+"""Decades of poles served from one shift in their middle."""
 LEAST_ROOT = 1e-13
 """1/λ below this share of the largest is a pole at infinity, blurred by rounding."""
 
 
 @dataclass(frozen=True, slots=True)
-class Modes:
-    """A response as a sum over its K modes."""
+class Expansion:
+    """The sum over K modes from one shift, at its best for frequencies of that size."""
 
     shift: float
     """s₀ in rad/s, on the positive real axis."""
@@ -34,6 +38,19 @@ class Modes:
     """(K,): λ in s; zero for a mode at infinite frequency."""
     weights: ComplexArray
     """(K,)."""
+
+    def at(self, s: ComplexArray) -> ComplexArray:
+        """H less ``direct`` at complex frequencies (F,) in rad/s."""
+        distance = 1.0 + (s[:, None] - self.shift) * self.eigenvalues
+        return np.asarray((self.weights / distance).sum(axis=1))
+
+
+@dataclass(frozen=True, slots=True)
+class Modes:
+    """A response as sums over its modes."""
+
+    expansions: tuple[Expansion, ...]
+    """By rising shift."""
     natural: ComplexArray
     """Finite poles in rad/s, smallest magnitude first."""
     direct: float
@@ -41,17 +58,28 @@ class Modes:
 
     def at(self, s: ComplexArray) -> ComplexArray:
         """H at complex frequencies (F,) in rad/s."""
-        distance = 1.0 + (s[:, None] - self.shift) * self.eigenvalues
-        return np.asarray((self.weights / distance).sum(axis=1) + self.direct)
+        if len(self.expansions) == 1:
+            return self.expansions[0].at(s) + self.direct
+        nearest = self._nearest(np.abs(s))
+        found = np.empty(s.shape, dtype=np.complex128)
+        for i, expansion in enumerate(self.expansions):
+            found[nearest == i] = expansion.at(s[nearest == i])
+        return found + self.direct
 
     def magnitude(self, omega: float) -> float:
         """|H| at one frequency in rad/s."""
-        distance = complex(-self.shift, omega)
-        pairs = zip(self.weights.tolist(), self.eigenvalues.tolist(), strict=True)
+        expansion = self.expansions[int(self._nearest(np.array([omega]))[0])]
+        distance = complex(-expansion.shift, omega)
+        pairs = zip(expansion.weights.tolist(), expansion.eigenvalues.tolist(), strict=True)
         total = complex(self.direct)
         for weight, value in pairs:
             total += weight / (1.0 + distance * value)
         return abs(total)
+
+    def _nearest(self, size: FloatArray) -> NDArray[np.intp]:
+        """(F,): which expansion serves a frequency of this size."""
+        shifts = np.array([expansion.shift for expansion in self.expansions])
+        return np.searchsorted(np.sqrt(shifts[1:] * shifts[:-1]), size)
 
 
 def decompose(
@@ -63,21 +91,49 @@ def decompose(
 ) -> Modes | None:
     """The modes of lᵀ(G + sC)⁻¹b + direct; None where G + s₀C cannot be inverted or A is defective.
 
-    Whether the vectors are good enough shows only in what they give: the caller holds the result
-    against direct solutions.
+    A mode of frequency p is blurred by s₀/p + p/s₀ times the rounding error, so that poles that
+    lie far apart get more than one shift. Whether the vectors are good enough shows only in what
+    they give: the caller holds the result against direct solutions.
     """
     try:
-        shift = _middle(_roots(conductance, reactance, FIRST_SHIFT), FIRST_SHIFT)
-        matrix = conductance + shift * reactance
-        eigenvalues, vectors = np.linalg.eig(np.linalg.solve(matrix, reactance))
-        drives = np.linalg.solve(vectors, np.linalg.solve(matrix, drive))
+        natural = natural_frequencies(conductance, reactance)
+        expansions = tuple(
+            _expansion(conductance, reactance, drive, sense, shift) for shift in _shifts(natural)
+        )
     except np.linalg.LinAlgError:
         return None
-    weights = np.asarray((sense @ vectors) * drives, dtype=np.complex128)
-    if not np.isfinite(weights).all():
+    if not all(np.isfinite(expansion.weights).all() for expansion in expansions):
         return None
-    natural = _finite(eigenvalues, shift)
-    return Modes(shift, np.asarray(eigenvalues, np.complex128), weights, natural, direct)
+    return Modes(expansions, natural, direct)
+
+
+def _shifts(natural: ComplexArray) -> FloatArray:
+    """In the middle of equal stretches of the poles' logarithms, none longer than allowed."""
+    sizes = np.abs(natural)
+    sizes = sizes[sizes > LEAST_SIZE]
+    if not sizes.size:
+        return np.array([FIRST_SHIFT])
+    first, last = math.log10(sizes.min()), math.log10(sizes.max())
+    count = max(1, math.ceil((last - first) / LONGEST_STRETCH))
+    return np.asarray(10.0 ** (first + (last - first) * (np.arange(count) + 0.5) / count))
+
+
+def _expansion(
+    conductance: FloatArray,
+    reactance: FloatArray,
+    drive: FloatArray,
+    sense: FloatArray,
+    shift: float,
+) -> Expansion:
+    matrix = conductance + shift * reactance
+    solved = np.linalg.solve(matrix, np.column_stack([reactance, drive]))
+    eigenvalues, vectors = np.linalg.eig(solved[:, :-1])
+    weights = (sense @ vectors) * np.linalg.solve(vectors, solved[:, -1])
+    return Expansion(
+        float(shift),
+        np.asarray(eigenvalues, dtype=np.complex128),
+        np.asarray(weights, dtype=np.complex128),
+    )
 
 
 def natural_frequencies(
@@ -114,5 +170,5 @@ def _finite(eigenvalues: ComplexArray, shift: float) -> ComplexArray:
 def _middle(roots: ComplexArray, otherwise: float) -> float:
     """Geometric mean of the magnitudes, the roots at zero left out."""
     sizes = np.abs(roots)
-    sizes = sizes[sizes > 1e-9]
+    sizes = sizes[sizes > LEAST_SIZE]
     return math.exp(float(np.log(sizes).mean())) if sizes.size else otherwise

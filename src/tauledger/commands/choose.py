@@ -68,7 +68,7 @@ def run(arguments: argparse.Namespace) -> int:
         change = _patch_of(arguments, analysis, settings, result)
         deliver(lambda: write_bytes(change))
         return code
-    show_decision(arguments.format, result, choice_page)
+    show_decision(arguments, result, choice_page)
     return code
 
 

@@ -6,7 +6,12 @@ import argparse
 from collections.abc import Callable
 from typing import TYPE_CHECKING, TypeVar
 
-from tauledger.commands.arguments import format_arguments, midband_argument, path_arguments
+from tauledger.commands.arguments import (
+    format_arguments,
+    format_of,
+    midband_argument,
+    path_arguments,
+)
 from tauledger.commands.output import hand_over, show_page
 from tauledger.problems import Problem, ProblemError, Severity
 from tauledger.quantity import parse_si
@@ -56,13 +61,18 @@ def decision_arguments(
 
 
 def show_decision(
-    form: str,
+    arguments: argparse.Namespace,
     decision: Decided,
     page: Callable[[Page, Decided], list[Line]],
-    save: str | None = None,
+    as_html: Callable[[Decided], str] | None = None,
 ) -> None:
-    """Print the rows of a decision as JSON, or as the page that ``page`` lays out; or save them."""
-    if form == "json":
+    """Print or save a decision: its rows as JSON, or what ``page`` or ``as_html`` lay out."""
+    form, save = arguments.format, None
+    if as_html is not None:
+        form, save = format_of(arguments, FORMATS), arguments.save
+    if as_html is not None and form == "html":
+        hand_over(as_html(decision).encode(), save)
+    elif form == "json":
         from tauledger.report.decision_json import decision_json
 
         hand_over(decision_json(decision).encode(), save)

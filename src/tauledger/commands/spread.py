@@ -6,15 +6,14 @@ import argparse
 import sys
 from typing import TYPE_CHECKING
 
-from tauledger.commands.arguments import analysis_of, format_of
+from tauledger.commands.arguments import analysis_of
 from tauledger.commands.deciding import (
-    FORMATS,
     decision_arguments,
     refused,
     show_decision,
     tolerance_argument,
 )
-from tauledger.commands.output import FINE, explain, hand_over
+from tauledger.commands.output import FINE, explain
 from tauledger.commands.workers import progress, workers
 
 if TYPE_CHECKING:
@@ -48,14 +47,14 @@ def run(arguments: argparse.Namespace) -> int:
     analysis, settings = analysis_of(arguments)
     result = _asked_for(arguments, analysis, settings)
     explain(result.problems)
-    form = format_of(arguments, FORMATS)
-    if form == "html":
-        from tauledger.report.decision_html import spread_html
-
-        hand_over(spread_html(result).encode(), arguments.save)
-    else:
-        show_decision(form, result, spread_page, arguments.save)
+    show_decision(arguments, result, spread_page, _as_html)
     return FINE
+
+
+def _as_html(result: Spread) -> str:
+    from tauledger.report.decision_html import spread_html
+
+    return spread_html(result)
 
 
 def _asked_for(

@@ -34,7 +34,7 @@ def run(arguments: argparse.Namespace) -> int:
     analysis, settings = analysis_of(arguments)
     result = _asked_for(arguments, analysis, settings)
     explain(result.problems)
-    show_decision(arguments.format, result, stress_page)
+    show_decision(arguments, result, stress_page)
     return FINDING if any(p.severity is Severity.ERROR for p in result.problems) else FINE
 
 

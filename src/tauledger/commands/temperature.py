@@ -5,9 +5,9 @@ from __future__ import annotations
 import argparse
 from typing import TYPE_CHECKING
 
-from tauledger.commands.arguments import analysis_of, format_of
-from tauledger.commands.deciding import FORMATS, decision_arguments, parsed, refused, show_decision
-from tauledger.commands.output import FINE, explain, hand_over
+from tauledger.commands.arguments import analysis_of
+from tauledger.commands.deciding import decision_arguments, parsed, refused, show_decision
+from tauledger.commands.output import FINE, explain
 from tauledger.problems import Problem, ProblemError, Severity
 
 if TYPE_CHECKING:
@@ -35,14 +35,14 @@ def run(arguments: argparse.Namespace) -> int:
     analysis, settings = analysis_of(arguments)
     result = _asked_for(arguments, analysis, settings)
     explain(result.problems)
-    form = format_of(arguments, FORMATS)
-    if form == "html":
-        from tauledger.report.decision_html_temperature import temperature_html
-
-        hand_over(temperature_html(result).encode(), arguments.save)
-    else:
-        show_decision(form, result, temperature_page, arguments.save)
+    show_decision(arguments, result, temperature_page, _as_html)
     return FINE
+
+
+def _as_html(result: TemperatureSweep) -> str:
+    from tauledger.report.decision_html_temperature import temperature_html
+
+    return temperature_html(result)
 
 
 def _asked_for(

@@ -364,6 +364,14 @@ def test_includes_look_from_the_file_they_stand_in(tmp_path: Path) -> None:
     ]
 
 
+@pytest.mark.parametrize("word", [".include", ".INC", ".incl", ".lib"])
+def test_a_file_name_is_no_expression(tmp_path: Path, word: str) -> None:
+    files = {"amp.cir": f"title\n{word} x={{1.lib\nR1 a 0 1\n", "x={1.lib": "R2 a 0 2\n"}
+    netlist = read(written(tmp_path, files))
+    assert netlist.problems == ()
+    assert names(netlist) == ["R2", "R1"]
+
+
 def test_a_link_out_of_the_project_is_refused_in_any_spelling(tmp_path: Path) -> None:
     top = written(tmp_path, {"in/amp.cir": "title\n.include DIR/secret.lib\nR1 a 0 1\n"})
     (tmp_path / "secret.lib").write_text("R2 a 0 2\n")

@@ -22,8 +22,10 @@ import math
 from collections.abc import Iterable, Mapping, Sequence
 
 from tauledger.corners.symbols import (
+    FACTOR,
     GROUND,
     OPEN,
+    SUM,
     Term,
     boosted,
     bridging,
@@ -197,7 +199,7 @@ class SignalNetwork:
             elif gain < 0.01:
                 seen = loop
             else:
-                text = f"(1 + {device.s('gm')}·{outer_common.within(3)})"
+                text = f"(1 + {device.s('gm')}·{outer_common.within(FACTOR)})"
                 seen = divided(loop, 1.0 + gain, text)
             return parallel(device.r_pi, seen)
         for entry in (control, *self._behind_base(device, control)):
@@ -322,7 +324,7 @@ class SignalNetwork:
         else:
             into = divided(whole, device.beta_plus_one, f"({device.s('β')}+1)")
         ratio = above.value / device.output_resistance_ohm
-        text = f"{above.within(3)}/{device.s('ro')}"
+        text = f"{above.within(FACTOR)}/{device.s('ro')}"
         return increased(into, ratio, text) if ratio < LARGEST_COLLECTOR_RATIO else into
 
 
@@ -335,7 +337,7 @@ def _effective_transconductance(device: ActiveDevice, below: Term) -> Term:
     if gain < 0.01:
         return symbol(text, gm)
     reduced = gm / (1.0 + gain * (1.0 + 1.0 / (device.beta_plus_one - 1.0)))
-    return Term(reduced, f"{text}/(1 + {device.source_symbol}·{below.within(3)})", binding=1)
+    return Term(reduced, f"{text}/(1 + {device.source_symbol}·{below.within(FACTOR)})", binding=SUM)
 
 
 def _inverse_gm(device: ActiveDevice) -> Term:

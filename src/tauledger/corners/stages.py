@@ -8,7 +8,7 @@ from collections.abc import Mapping
 from tauledger.corners.handwork import AGREEMENT, IDEAL, Workbench
 from tauledger.corners.inspection import ActiveDevice, NoExpressionError, SignalNetwork
 from tauledger.corners.model import Corners
-from tauledger.corners.symbols import OPEN, Term
+from tauledger.corners.symbols import FACTOR, OPEN, Term
 from tauledger.quantity import format_quantity
 from tauledger.records import dataclass
 from tauledger.smallsignal import LinearNetwork
@@ -108,7 +108,7 @@ def _transconductance_stage(
     gain = device.source_transconductance * below.value
     if gain < 0.01:
         return _load_gain(device.transconductance, device.s("gm"), load, sign)
-    text = f"(1 + {device.source_symbol}·{below.within(3)})"
+    text = f"(1 + {device.source_symbol}·{below.within(FACTOR)})"
     factor = sign / (1.0 + gain)
     return _load_gain(device.transconductance, device.s("gm"), load, factor, f"/{text}")
 
@@ -121,7 +121,7 @@ def _load_gain(
     numbers = f"{minus}{format_quantity(gm, 'S')}·{format_quantity(load.value, 'Ω')}"
     if divisor:
         numbers += f"/{1.0 / abs(factor):.3g}"
-    return f"{minus}{symbol}·{load.within(3)}{divisor} = {numbers}", value
+    return f"{minus}{symbol}·{load.within(FACTOR)}{divisor} = {numbers}", value
 
 
 def _follower(signal: SignalNetwork, device: ActiveDevice) -> tuple[str, float]:
@@ -133,8 +133,8 @@ def _follower(signal: SignalNetwork, device: ActiveDevice) -> tuple[str, float]:
     if math.isfinite(device.input_resistance_ohm):
         drive *= 1.0 + 1.0 / (device.beta_plus_one - 1.0)
         loop = drive
-    text = f"{device.s('gm')}·{load.within(3)}"
-    below = f"{device.source_symbol}·{load.within(3)}"
+    text = f"{device.s('gm')}·{load.within(FACTOR)}"
+    below = f"{device.source_symbol}·{load.within(FACTOR)}"
     return f"{text}/(1 + {below}) = {drive:.3g}/{1.0 + loop:.3g}", drive / (1.0 + loop)
 
 

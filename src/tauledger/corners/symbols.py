@@ -9,7 +9,7 @@ from typing import NamedTuple
 NEGLIGIBLE = 0.01
 """A term whose removal changes the value by less is left out."""
 
-_SUM, _PARALLEL, _FACTOR = 1, 2, 3
+SUM, _PARALLEL, FACTOR = 1, 2, 3
 """How tightly each form binds, for parentheses."""
 
 
@@ -18,7 +18,7 @@ class Term(NamedTuple):
 
     value: float
     text: str
-    binding: int = _FACTOR
+    binding: int = FACTOR
     where: tuple[str, ...] = ()
     """Abbreviations the text uses, such as ``R_in = RS‖R2``."""
 
@@ -50,8 +50,8 @@ def series(*terms: Term) -> Term:
         return GROUND
     if len(kept) == 1:
         return kept[0]
-    text = " + ".join([term.within(_SUM) for term in kept])
-    return Term(math.fsum([term.value for term in kept]), text, _SUM, _abbreviations(kept))
+    text = " + ".join([term.within(SUM) for term in kept])
+    return Term(math.fsum([term.value for term in kept]), text, SUM, _abbreviations(kept))
 
 
 def parallel(*terms: Term) -> Term:
@@ -77,21 +77,21 @@ def multiplied(factor: float, text: str, term: Term) -> Term:
     """``text·term``, such as (β+1)·RE."""
     if term.value == 0.0 or math.isinf(term.value):
         return term
-    return Term(factor * term.value, f"{text}·{term.within(_FACTOR)}")
+    return Term(factor * term.value, f"{text}·{term.within(FACTOR)}")
 
 
 def increased(term: Term, ratio: float, text: str) -> Term:
     """``term·(1 + text)``, where the ratio counts at all."""
     if abs(ratio) < NEGLIGIBLE or term.value == 0.0 or math.isinf(term.value):
         return term
-    return Term(term.value * (1.0 + ratio), f"{term.within(_FACTOR)}·(1 + {text})")
+    return Term(term.value * (1.0 + ratio), f"{term.within(FACTOR)}·(1 + {text})")
 
 
 def divided(term: Term, divisor: float, text: str) -> Term:
     """``term/text``, such as (rπ + RB)/(β+1)."""
     if term.value == 0.0 or math.isinf(term.value):
         return term
-    return Term(term.value / divisor, f"{term.within(_FACTOR)}/{text}")
+    return Term(term.value / divisor, f"{term.within(FACTOR)}/{text}")
 
 
 def boosted(resistance: Term, conductance: float, text: str, degeneration: Term) -> Term:
@@ -101,7 +101,7 @@ def boosted(resistance: Term, conductance: float, text: str, degeneration: Term)
         return resistance
     if math.isinf(gain):
         return OPEN
-    written = f"{resistance.within(_FACTOR)}·(1 + {text}·{degeneration.within(_FACTOR)})"
+    written = f"{resistance.within(FACTOR)}·(1 + {text}·{degeneration.within(FACTOR)})"
     return Term(resistance.value * (1.0 + gain), written)
 
 
@@ -118,11 +118,11 @@ def bridging(first: Term, second: Term, conductance: Term) -> Term:
         return series(first, second)
     where = [f"R_in = {first.text}", f"R_out = {second.text}"]
     gain = conductance.text
-    if conductance.binding != _FACTOR:
+    if conductance.binding != FACTOR:
         where.append(f"gm' = {conductance.text}")
         gain = "gm'"
     text = f"R_in + R_out + {gain}·R_in·R_out [Miller: R_in·(1 + {gain}·R_out) + R_out]"
-    return Term(total, text, _SUM, tuple(where))
+    return Term(total, text, SUM, tuple(where))
 
 
 def _abbreviations(terms: Iterable[Term]) -> tuple[str, ...]:

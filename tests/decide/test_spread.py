@@ -157,7 +157,7 @@ C1 a b 1p
     analysis = run(text, "a,b")
     bench = bench_of(analysis)
     variety = variety_of(analysis.circuit, "VS", None, asked("R*=10%"))
-    (lowest, _), _ = worst_cases(bench, variety, each_alone(bench, variety), "gain")
+    (lowest, _), _ = worst_cases(bench, variety, each_alone(bench, variety), ["gain"])["gain"]
     assert lowest < bench.gain
     result = spread(analysis, None, asked("R*=10%"), 1000)
     gain = figure(result, "gain")

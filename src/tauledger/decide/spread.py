@@ -23,7 +23,7 @@ from tauledger.decide.judged import demands_of, wanted_of
 from tauledger.decide.sampling import deviations, latin_hypercube, standard_deviation
 from tauledger.decide.statistics import Sums, histogram, percentiles
 from tauledger.decide.varied import Variety, board_values, variety_of
-from tauledger.decide.worst import FIGURES, Alone, each_alone, worst_cases
+from tauledger.decide.worst import FIGURES, Alone, Extreme, each_alone, worst_cases
 from tauledger.decide.yields import demand_rows, kept_by, total_yield, yield_of
 from tauledger.records import dataclass
 from tauledger.review.decisions import (
@@ -134,11 +134,20 @@ def spread(
     unit = "Ω" if analysis.topology.path.source_is_current else "V/V"
     units = {"gain": unit} | {figure.name: figure.unit for figure in demands.figures}
     limits = dict(reversed(demands.limits))
-    rows = tuple(
-        _figure(plan, alone, blocks, name, found[name], limits.get(name), units.get(name, "Hz"))
+    known = [
+        name
         for name in (*FIGURES, *plan.others)
         if np.isfinite(plan.nominal(name, alone)) and np.isfinite(found[name]).any()
-    )
+    ]
+    worst = worst_cases(plain, variety, alone, [name for name in known if name in FIGURES])
+    worst |= worst_cases(apart, variety, alone, [name for name in known if name not in FIGURES])
+    rows = tuple(
+        _figure(
+            plan, alone, blocks, name, found[name], worst[name], limits.get(name),
+            units.get(name, "Hz"),
+        )
+        for name in known
+    )  # fmt: skip
     notes = "; ".join(demands.unjudged)
     return Spread(
         title=analysis.circuit.title,
@@ -233,13 +242,13 @@ def _figure(
     blocks: Sequence[Block],
     name: str,
     values: FloatArray,
+    worst: tuple[Extreme, Extreme],
     limit: Limit | None,
     unit: str,
 ) -> FigureSpread:
     there = values[np.isfinite(values)]
     linear = name in linear_names(plan.bench)
-    bench = replace(plan.bench, responds=name in FIGURES)
-    low, high = worst_cases(bench, plan.variety, alone, name)
+    low, high = worst
     edges, counts = histogram(there, linear)
     if plan.distribution != "normal" and len(counts) > 1:
         # A figure may have its extreme between the ends (a bridge in balance has); a normal

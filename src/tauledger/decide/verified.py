@@ -108,7 +108,7 @@ def _ratio(
         own = replace(bench, circuit=circuit)
         alone = each_alone(own, variety)
         nominal = float(alone.nominal.figure(figure)[0])
-        low, high = worst_cases(own, variety, alone, figure)
+        low, high = worst_cases(own, variety, alone, [figure])[figure]
         worst = high[0] if wish.end == "low" else low[0]
         return worst / nominal if np.isfinite(worst) and nominal > 0.0 else 1.0
 

@@ -17,6 +17,7 @@ from tauledger.decide.varied import Draw, Variety, board_values
 from tauledger.records import dataclass
 
 FloatArray = NDArray[np.float64]
+IntArray = NDArray[np.intp]
 
 LEADING = 6
 """So many of the strongest draws are tried at both ends in every combination."""
@@ -59,38 +60,53 @@ def each_alone(bench: Bench, variety: Variety) -> Alone:
     return Alone(found, low, high, figure_slopes(bench, variety))
 
 
+Extreme = tuple[float, tuple[str, ...]]
+"""A figure, and the ends of the leading draws that give it."""
+
+
 def worst_cases(
-    bench: Bench, variety: Variety, alone: Alone, figure: str
-) -> tuple[tuple[float, tuple[str, ...]], tuple[float, tuple[str, ...]]]:
-    """The lowest and the highest a figure gets, each with the ends of the leading draws.
+    bench: Bench, variety: Variety, alone: Alone, figures: Sequence[str]
+) -> dict[str, tuple[Extreme, Extreme]]:
+    """The lowest and the highest each figure gets.
 
     Every draw stands at the end that is worse for the figure by itself; the leading ones are
     then tried at both ends in every combination, since what one does may depend on another.
-    NaN when the figure does not exist on any of these boards.
+    NaN when the figure does not exist on any of these boards. All boards are solved together.
     """
     ends = np.array([[draw.low, draw.high] for draw in variety.draws])
+    trials = [_trials(alone, figure) for figure in figures]
+    if not trials:
+        return {}
+    chosen = np.concatenate([sides for _, both in trials for sides in both], axis=1)
+    found = measure_deviations(bench, variety, np.take_along_axis(ends, chosen, axis=1))
+    results, start = {}, 0
+    for figure, (leading, both) in zip(figures, trials, strict=True):
+        values = found.figure(figure)
+        extremes: list[Extreme] = []
+        for sides, pick in zip(both, (np.nanargmin, np.nanargmax), strict=True):
+            part = values[start : start + sides.shape[1]]
+            start += sides.shape[1]
+            if np.isnan(part).all():
+                extremes.append((float("nan"), ()))
+                continue
+            best = int(pick(part))
+            names = _named(variety.draws, leading, sides[:, best])
+            extremes.append((float(part[best]), names))
+        results[figure] = extremes[0], extremes[1]
+    return results
+
+
+def _trials(alone: Alone, figure: str) -> tuple[IntArray, tuple[IntArray, IntArray]]:
+    """The leading draws, and (draws, combinations) of ends to try for the lowest and highest."""
     effects = np.nan_to_num(np.stack([alone.low[figure], alone.high[figure]], axis=1))
     strength = np.abs(effects).max(axis=1)
     leading = np.argsort(-strength, kind="stable")[:LEADING]
     leading = leading[strength[leading] > 0.0]
-    sides = [_sides(effects, leading, highest=highest) for highest in (False, True)]
-    chosen = np.concatenate(sides, axis=1)
-    deviations = np.take_along_axis(ends, chosen, axis=1)
-    found = measure_deviations(bench, variety, deviations).figure(figure)
-    count = sides[0].shape[1]
-    results: list[tuple[float, tuple[str, ...]]] = []
-    for part, pick in ((slice(0, count), np.nanargmin), (slice(count, None), np.nanargmax)):
-        values = found[part]
-        if np.isnan(values).all():
-            results.append((float("nan"), ()))
-            continue
-        best = int(pick(values))
-        column = chosen[:, part][:, best]
-        results.append((float(values[best]), _named(variety.draws, leading, column)))
-    return results[0], results[1]
+    lowest, highest = (_sides(effects, leading, highest=highest) for highest in (False, True))
+    return leading, (lowest, highest)
 
 
-def _sides(effects: FloatArray, leading: NDArray[np.intp], *, highest: bool) -> NDArray[np.intp]:
+def _sides(effects: FloatArray, leading: IntArray, *, highest: bool) -> IntArray:
     """(draws, combinations): 0 for the low end, 1 for the high one."""
     pick = effects if highest else -effects
     base = np.argmax(pick, axis=1)
@@ -101,7 +117,5 @@ def _sides(effects: FloatArray, leading: NDArray[np.intp], *, highest: bool) -> 
     return table
 
 
-def _named(
-    draws: Sequence[Draw], leading: NDArray[np.intp], sides: NDArray[np.intp]
-) -> tuple[str, ...]:
+def _named(draws: Sequence[Draw], leading: IntArray, sides: IntArray) -> tuple[str, ...]:
     return tuple(f"{draws[i].label} {'high' if sides[i] else 'low'}" for i in leading)

@@ -3,11 +3,11 @@
 ``dataclasses.dataclass`` writes and compiles eight methods for each class as its module is
 imported; with some two hundred classes that was a fifth of a cold ``tauledger report``, and half of
 what it costs beyond the bare imports (tests/benchmarks/start.py). Here the methods are shared by
-all classes, and ``__init__`` alone is compiled, at the first instance. Everything else is as there: ``dataclasses.fields``, ``replace``
-and ``asdict`` take these classes, they compare, hash, print and pickle alike, and type checkers
-are shown the decorator of the standard library. What is not done here is refused as a class is
-made: methods of its own in place of the shared ones, ``__post_init__``, ``ClassVar`` and its like,
-and any option of ``field`` but ``default_factory``.
+all classes, and ``__init__`` alone is compiled, at the first instance. Everything else is as there:
+``dataclasses.fields``, ``replace`` and ``asdict`` take these classes, they compare, hash, print and
+pickle alike, and type checkers are shown the decorator of the standard library. What is not done
+here is refused as a class is made: methods of its own in place of the shared ones,
+``__post_init__``, ``ClassVar`` and its like, and any option of ``field`` but ``default_factory``.
 """
 
 from __future__ import annotations

@@ -52,6 +52,7 @@ from tauledger.smallsignal.response import (
     Response,
     condensed,
     edge_sensitivity,
+    gain_sensitivity,
 )
 
 TIE_MARGIN = 0.2
@@ -59,6 +60,8 @@ TIE_MARGIN = 0.2
 tolerance (±10 to ±20 %; common practice, no source)."""
 LEAST_MOVE = 0.01
 TRANSISTOR_CAPACITANCES = {"Cπ", "Cμ", "Cμx", "Cgs", "Cgd", "Cds"}
+Movers = tuple[tuple[str, float], ...]
+"""Names with d ln(corner) / d ln(value), strongest first."""
 SHORTEST_SWEEP = 12
 """Points of the sweep that must be left to look for a passband in."""
 
@@ -157,8 +160,8 @@ class _Path:
     passband: Passband
     edges: tuple[float | None, float | None]
     exact_gain: float
-    movers: tuple[tuple[tuple[str, float], ...], tuple[tuple[str, float], ...]]
-    """d ln(corner) / d ln(value) of every part that moves the low and the high corner."""
+    movers: tuple[Movers, Movers]
+    """What moves the low and the high corner."""
     unstable_hz: float | None
     """Magnitude of the fastest growing natural frequency, when one grows."""
 
@@ -172,20 +175,19 @@ def _survey(response: Response, parts: Sequence[ReactivePart], midband_hz: float
         else Passband(midband_hz, True)
     )
     exact_gain = response.magnitude(passband.midband_hz)
-    low, high = (
-        find_edge(response, sweep, passband.midband_hz, upward=up) if exact_gain > 0 else None
-        for up in (False, True)
+    edges = (
+        find_edge(response, sweep, passband.midband_hz, upward=False) if exact_gain > 0 else None,
+        find_edge(response, sweep, passband.midband_hz, upward=True) if exact_gain > 0 else None,
     )
-    movers = tuple(_movers(response, parts, edge, passband.midband_hz) for edge in (low, high))
     return _Path(
         response,
         tuple(parts),
         natural,
         sweep,
         passband,
-        (low, high),
+        edges,
         exact_gain,
-        (movers[0], movers[1]),
+        _movers(response, parts, edges, passband.midband_hz),
         _unstable_hz(response, natural),
     )
 
@@ -193,7 +195,7 @@ def _survey(response: Response, parts: Sequence[ReactivePart], midband_hz: float
 def _natural(response: Response) -> ComplexArray:
     if response.modes is not None:
         return response.modes.natural
-    short = condensed(response)
+    short = response.short or condensed(response)
     if short.drive.size > LARGEST_DECOMPOSED:
         raise ProblemError(_too_large(short.drive.size))
     return natural_frequencies(short.conductance, short.reactance)
@@ -299,14 +301,24 @@ def _corner(
 
 
 def _movers(
-    response: Response, parts: Sequence[ReactivePart], edge_hz: float | None, midband_hz: float
-) -> tuple[tuple[str, float], ...]:
-    """d ln(corner) / d ln(value) of every part that moves the corner, strongest first."""
-    if edge_hz is None:
-        return ()
-    moves = edge_sensitivity(response, parts, edge_hz, midband_hz)
-    order = np.argsort(-np.abs(moves))
-    return tuple((parts[i].name, float(moves[i])) for i in order if abs(moves[i]) >= LEAST_MOVE)
+    response: Response,
+    parts: Sequence[ReactivePart],
+    edges: tuple[float | None, float | None],
+    midband_hz: float,
+) -> tuple[Movers, Movers]:
+    """d ln(corner) / d ln(value) of every part that moves each corner, strongest first."""
+    if edges == (None, None):
+        return (), ()
+    at_midband = gain_sensitivity(response, parts, midband_hz)
+
+    def of(edge_hz: float | None) -> Movers:
+        if edge_hz is None:
+            return ()
+        moves = edge_sensitivity(response, parts, edge_hz, at_midband)
+        order = np.argsort(-np.abs(moves))
+        return tuple((parts[i].name, float(moves[i])) for i in order if abs(moves[i]) >= LEAST_MOVE)
+
+    return of(edges[0]), of(edges[1])
 
 
 def _set_by(movers: Sequence[tuple[str, float]]) -> tuple[str, ...]:

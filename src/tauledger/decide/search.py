@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Mapping, Sequence
+from collections.abc import Callable, Mapping, Sequence
 from dataclasses import replace
 from typing import NamedTuple
 
@@ -133,3 +133,29 @@ class Search:
             stocks=tuple(self.stocks[i] for i in indices),
             ideal_f=None,
         )
+
+
+def stepped(
+    search: Search,
+    values: FloatArray,
+    neighbour: Callable[[int, float], float | None],
+    best: Callable[[FloatArray], np.intp],
+) -> FloatArray:
+    """Take single steps while the target is met; ``best`` picks one by the total capacitance.
+
+    ``neighbour`` gives the next value of a part from its index and value, None at its end.
+    """
+    while True:
+        trials = []
+        for i, value in enumerate(values.tolist()):
+            if (following := neighbour(i, value)) is not None:
+                trial = values.copy()
+                trial[i] = following
+                trials.append(trial)
+        if not trials:
+            return values
+        table = np.stack(trials, axis=1)
+        met = np.flatnonzero(search.met(table))
+        if not met.size:
+            return values
+        values = table[:, met[best(table[:, met].sum(axis=0))]]

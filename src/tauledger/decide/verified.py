@@ -15,7 +15,7 @@ from tauledger.decide.asked import Asked
 from tauledger.decide.bench import Bench, bench_of
 from tauledger.decide.search import FloatArray, Search, Wish
 from tauledger.decide.varied import variety_of
-from tauledger.decide.worst import each_alone, worst_cases
+from tauledger.decide.worst import ends_alone, worst_cases
 from tauledger.records import dataclass
 
 
@@ -106,7 +106,7 @@ def _ratio(
 
     def ratio(circuit: Circuit) -> float:
         own = replace(bench, circuit=circuit)
-        alone = each_alone(own, variety)
+        alone = ends_alone(own, variety)
         nominal = float(alone.nominal.figure(figure)[0])
         low, high = worst_cases(own, variety, alone, [figure])[figure]
         worst = high[0] if wish.end == "low" else low[0]

@@ -11,7 +11,7 @@ from collections.abc import Iterator, Sequence
 import numpy as np
 
 from tauledger.decide.available import common_values
-from tauledger.decide.search import BLOCK, FloatArray, Search, Wish
+from tauledger.decide.search import BLOCK, FloatArray, Search, Wish, stepped
 from tauledger.decide.ways_high import FEWEST_CHANGES, UNCHANGED, high_ways
 
 LEAST_TOTAL = "least total capacitance"
@@ -88,21 +88,12 @@ def _combinations(choices: Sequence[Sequence[float]]) -> FloatArray:
 
 def _descend(search: Search, values: FloatArray) -> FloatArray:
     """Take single steps down, the one that saves most, while the target is met."""
-    while True:
-        trials = []
-        for i, stock in enumerate(search.stocks):
-            below = [v for v in stock.values_f if v < values[i] * (1.0 - 1e-9)]
-            if below:
-                trial = values.copy()
-                trial[i] = below[-1]
-                trials.append(trial)
-        if not trials:
-            return values
-        table = np.stack(trials, axis=1)
-        met = search.met(table)
-        if not met.any():
-            return values
-        values = table[:, int(np.argmin(np.where(met, table.sum(axis=0), np.inf)))]
+
+    def below(i: int, value: float) -> float | None:
+        smaller = [v for v in search.stocks[i].values_f if v < value * (1.0 - 1e-9)]
+        return smaller[-1] if smaller else None
+
+    return stepped(search, values, below, np.argmin)
 
 
 def _fewest_values(search: Search) -> FloatArray | None:

@@ -20,7 +20,7 @@ from collections.abc import Iterator, Sequence
 import numpy as np
 from numpy.typing import NDArray
 
-from tauledger.decide.search import FloatArray, Search
+from tauledger.decide.search import FloatArray, Search, stepped
 from tauledger.records import dataclass
 
 LEAST_ADDED = "least capacitance added"
@@ -179,19 +179,12 @@ def _kept(search: Search, table: FloatArray, changes: FloatArray) -> _Pool:
 
 def _grown(search: Search, values: FloatArray) -> FloatArray:
     """Take single steps back up, the one that gives most, while the target is met."""
-    now = search.now_f
-    while True:
-        trials = []
-        for i, stock in enumerate(search.stocks):
-            above = [v for v in stock.values_f if values[i] * (1.0 + 1e-9) < v <= now[i]]
-            if values[i] < now[i] * (1.0 - 1e-9):
-                trial = values.copy()
-                trial[i] = above[0] if above else now[i]
-                trials.append(trial)
-        if not trials:
-            return values
-        table = np.stack(trials, axis=1)
-        met = search.met(table)
-        if not met.any():
-            return values
-        values = table[:, int(np.argmax(np.where(met, table.sum(axis=0), -np.inf)))]
+
+    def above(i: int, value: float) -> float | None:
+        now = float(search.now_f[i])
+        if value >= now * (1.0 - 1e-9):
+            return None
+        larger = (v for v in search.stocks[i].values_f if value * (1.0 + 1e-9) < v <= now)
+        return next(larger, now)
+
+    return stepped(search, values, above, np.argmax)

@@ -7,6 +7,7 @@ from __future__ import annotations
 
 import itertools
 from collections.abc import Sequence
+from dataclasses import replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -32,7 +33,7 @@ class Alone:
     """Figure to (draws,): ln(figure / nominal) with the draw at its low end."""
     high: dict[str, FloatArray]
     slope: dict[str, FloatArray]
-    """d ln(figure) / d(deviation) at the nominal board."""
+    """d ln(figure) / d(deviation) at the nominal board; empty where nobody asked."""
 
 
 FIGURES = ("gain", "low corner", "high corner")
@@ -45,6 +46,11 @@ def measure_deviations(bench: Bench, variety: Variety, deviations: FloatArray) -
 
 def each_alone(bench: Bench, variety: Variety) -> Alone:
     """Solve the nominal board and each draw at its ends; slopes from the nominal board."""
+    return replace(ends_alone(bench, variety), slope=figure_slopes(bench, variety))
+
+
+def ends_alone(bench: Bench, variety: Variety) -> Alone:
+    """The same without slopes, which a worst case does not need."""
     draws = variety.draws
     size = len(draws)
     deviations = np.zeros((size, 1 + 2 * size))
@@ -57,7 +63,7 @@ def each_alone(bench: Bench, variety: Variety) -> Alone:
         with np.errstate(invalid="ignore"):
             logs = np.log(found.figure(figure))
         low[figure], high[figure] = (logs[1:] - logs[0]).reshape(2, size)
-    return Alone(found, low, high, figure_slopes(bench, variety))
+    return Alone(found, low, high, {})
 
 
 Extreme = tuple[float, tuple[str, ...]]

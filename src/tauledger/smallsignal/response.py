@@ -158,15 +158,18 @@ def gain_sensitivity(
 
 
 def edge_sensitivity(
-    response: Response, parts: Sequence[ReactivePart], edge_hz: float, midband_hz: float
+    response: Response,
+    parts: Sequence[ReactivePart],
+    edge_hz: float,
+    at_midband: FloatArray,
 ) -> FloatArray:
     """(K,): d ln(edge) / d ln(value) of each part, for an edge defined relative to midband.
 
     The edge keeps ln|H(edge)| − ln|H(midband)| constant, so its move is minus the change of
-    that difference over the slope d ln|H|/d ln f at the edge.
+    that difference over the slope d ln|H|/d ln f at the edge. ``at_midband`` is what
+    :func:`gain_sensitivity` gives there.
     """
     at_edge, slope = _sensitivities(response, parts, edge_hz)
-    at_midband, _ = _sensitivities(response, parts, midband_hz)
     return np.asarray(-(at_edge - at_midband) / slope)
 
 
